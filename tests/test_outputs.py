@@ -9,7 +9,6 @@ from pathlib import Path
 
 import pytest
 
-from hmmseg import outputs
 from hmmseg.errors import OutputError
 from hmmseg.outputs import check_target, sha256_of, whole_file, whole_folder, write_json
 
@@ -272,7 +271,7 @@ def test_the_old_result_is_removed_last(tmp_path: Path, monkeypatch: pytest.Monk
         seen.append((target / "regions.bed").read_text())
         remove(path, ignore_errors)
 
-    monkeypatch.setattr(outputs.shutil, "rmtree", record)
+    monkeypatch.setattr(shutil, "rmtree", record)
     with whole_folder(target, force=True) as temporary:
         (temporary / "regions.bed").write_text("new")
     assert seen == ["new"]
