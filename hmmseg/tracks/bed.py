@@ -18,7 +18,14 @@ import pandas as pd
 from hmmseg.errors import LabelError, OutputError
 from hmmseg.tracks.table import check_regions
 
-__all__ = ["BedLine", "invalid_bed_names", "read_bed", "score_of", "write_regions_bed"]
+__all__ = [
+    "BedLine",
+    "bed_lines",
+    "invalid_bed_names",
+    "read_bed",
+    "score_of",
+    "write_regions_bed",
+]
 
 _CHROM = re.compile(r"[A-Za-z0-9_]{1,255}")
 _NAME = re.compile(r"[\x20-\x7e]{1,255}")
@@ -38,7 +45,7 @@ class BedLine(NamedTuple):
 
 
 def invalid_bed_names(record_lengths: Mapping[str, int]) -> list[str]:
-    """Return the record names that BED v1.0, section 1.4, does not allow, in their order.
+    """Return the record names that BED v1.0, section 1.5, does not allow, in their order.
 
     It allows letters, digits and the underscore, so every accession with a version breaks it.
     Programs read such files all the same; it is worth a note to the user, once.
@@ -78,11 +85,17 @@ def write_regions_bed(
                 f"cannot write {path}: BED allows no region name {name!r}; rename the state with "
                 "printable ASCII characters"
             )
-    rank = {name: i for i, name in enumerate(record_lengths)}
-    pieces = sorted(_pieces(table, record_lengths), key=lambda p: (rank[p[0]], *p[1:4]))
     with open(path, "w", encoding="utf-8", newline="\n") as file:
-        for record, start, end, name, score in pieces:
-            file.write(f"{record}\t{start}\t{end}\t{name}\t{score}\t.\n")
+        for row in bed_lines(table, record_lengths):
+            file.write("\t".join(map(str, row[:6])) + "\n")
+
+
+def bed_lines(table: pd.DataFrame, record_lengths: Mapping[str, int]) -> list[BedLine]:
+    """Return the lines that a valid table of regions makes, sorted by record, then start."""
+    rank = {name: i for i, name in enumerate(record_lengths)}
+    pieces = _pieces(table, record_lengths)
+    rows = sorted(pieces, key=lambda row: (rank[row.record], row.start, row.end, row.name))
+    return [row._replace(line=number) for number, row in enumerate(rows, start=1)]
 
 
 def read_bed(path: str | Path, record_lengths: Mapping[str, int] | None = None) -> pd.DataFrame:
@@ -117,16 +130,14 @@ def read_bed(path: str | Path, record_lengths: Mapping[str, int] | None = None) 
     return frame.astype({"start": "int64", "end": "int64", "line": "int64"})
 
 
-def _pieces(
-    table: pd.DataFrame, record_lengths: Mapping[str, int]
-) -> Iterator[tuple[str, int, int, str, int]]:
+def _pieces(table: pd.DataFrame, record_lengths: Mapping[str, int]) -> Iterator[BedLine]:
     columns = ("record", "start", "end", "region_id", "mean_posterior")
     for record, start, end, name, mean in zip(*(table[c].tolist() for c in columns), strict=True):
         length = record_lengths[record]
-        score = score_of(mean)
-        yield record, start, min(end, length), name, score
+        score = str(score_of(mean))
+        yield BedLine(record, start, min(end, length), name, score, ".")
         if end > length:
-            yield record, 0, end - length, name, score
+            yield BedLine(record, 0, end - length, name, score, ".")
 
 
 def _opened(path: str | Path) -> IO[str]:
@@ -146,7 +157,7 @@ def _lines(file: IO[str], path: str | Path) -> Iterator[BedLine]:
             raise LabelError(
                 f"{path}:{number}: {fields[0]} lines do not belong to BED; remove the line"
             )
-        if len(fields) < 3:  # noqa: PLR2004
+        if len(fields) < 3:
             raise LabelError(f"{path}:{number}: expected record, start and end, separated by tabs")
         for field in fields[1:3]:
             if not (field.isascii() and field.isdigit()):
