@@ -38,6 +38,8 @@ _KEYS = {"format", "version", "order", "symmetric", "start", "states", "transiti
 _OPTIONAL = {"training"}
 _STATE_KEYS = {"name", "reported", "joint", "conditional"}
 _NAME_LIMIT = 64
+_CONDITIONAL_MAX_ORDER = 5
+"""Finding the stationary contexts of a larger table would take minutes."""
 
 
 def load_model(path: str | Path) -> Model:
@@ -156,6 +158,10 @@ def _read_state(index: int, state: Any, order: int) -> tuple[str, bool, NDArray[
         raise ModelError(f"{where}: give either joint or conditional")
     if "joint" in state:
         return name, reported, _numbers(f"{where}.joint", state["joint"], (4 ** (order + 1),))
+    if order > _CONDITIONAL_MAX_ORDER:
+        raise ModelError(
+            f"{where}.conditional: possible up to order {_CONDITIONAL_MAX_ORDER}; give joint"
+        )
     rows = _numbers(f"{where}.conditional", state["conditional"], (4**order, 4))
     return name, reported, _joint_of_chain(f"{where}.conditional", rows)
 

@@ -12,7 +12,7 @@ from hmmseg.errors import ModelError
 from hmmseg.model.contexts import backed_off_emissions, joint_levels, reverse_complement_words
 from hmmseg.model.stationary import stationary_distribution
 
-__all__ = ["MAX_ORDER", "MAX_STATES", "FREE", "STATIONARY", "Model"]
+__all__ = ["FREE", "MAX_ORDER", "MAX_STATES", "STATIONARY", "Model"]
 
 MAX_ORDER = 8
 MAX_STATES = 64

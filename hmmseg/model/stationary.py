@@ -12,7 +12,7 @@ def _reachable(transitions: NDArray[np.float64]) -> NDArray[np.bool_]:
     """Return which states can be reached from which, in any number of steps."""
     reach = (transitions > 0) | np.eye(len(transitions), dtype=bool)
     for middle in range(len(transitions)):
-        reach |= reach[:, [middle]] & reach[[middle], :]
+        reach |= np.outer(reach[:, middle], reach[middle])
     return reach
 
 
@@ -28,7 +28,7 @@ def closed_classes(transitions: NDArray[np.float64]) -> list[list[int]]:
     classes: list[list[int]] = []
     for state in range(len(transitions)):
         members = np.flatnonzero(reach[state])
-        closed = bool(reach[np.ix_(members, [state])].all())
+        closed = bool(reach[members, state].all())
         if closed and members[0] == state:
             classes.append(members.tolist())
     return classes
@@ -66,20 +66,14 @@ def stationary_distribution(transitions: NDArray[np.float64]) -> NDArray[np.floa
             "is no single stationary start; give 'start' as a list of probabilities"
         )
     members = classes[0]
-    rates = [[float(transitions[i, j]) for j in members] for i in members]
-    size = len(members)
+    rates = transitions[np.ix_(members, members)].copy()
     # Fold the last state into the others, one at a time.
-    for last in range(size - 1, 0, -1):
-        leaving = sum(rates[last][:last])
-        for i in range(last):
-            rates[i][last] /= leaving
-            for j in range(last):
-                rates[i][j] += rates[i][last] * rates[last][j]
-    weights = [1.0]
-    for state in range(1, size):
-        weights.append(sum(weights[i] * rates[i][state] for i in range(state)))
-    total = sum(weights)
+    for last in range(len(members) - 1, 0, -1):
+        rates[:last, last] /= rates[last, :last].sum()
+        rates[:last, :last] += rates[:last, last, None] * rates[last, None, :last]
+    weights = np.ones(len(members))
+    for state in range(1, len(members)):
+        weights[state] = (weights[:state] * rates[:state, state]).sum()
     result = np.zeros(len(transitions))
-    for member, weight in zip(members, weights, strict=True):
-        result[member] = weight / total
+    result[members] = weights / weights.sum()
     return result

@@ -1,0 +1,1 @@
+"""Likelihood, posteriors and best paths over whole records: blocks, strands, circles."""

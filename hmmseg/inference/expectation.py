@@ -1,0 +1,194 @@
+"""The expectation step: likelihood and expected counts of a corpus."""
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from hmmseg.inference.exact import exact_pass
+from hmmseg.inference.passes import BlockEnds, find_ends
+from hmmseg.inference.streams import Corpus, Stream, in_threads
+from hmmseg.inference.tables import Tables, preferred_word, tables_for
+from hmmseg.kernels.blocks import block_kernels
+from hmmseg.kernels.matrices import unfold_counts
+from hmmseg.model import Model
+
+__all__ = ["Counts", "expect", "log_likelihoods"]
+
+_MOST_GROUPS = 32
+_FEWEST_GROUPS = 4
+_GROUP_BYTES = 1 << 26
+
+
+@dataclass(frozen=True, eq=False)
+class Counts:
+    """Expected counts, in bases of one strand.
+
+    Attributes
+    ----------
+    logs : float64[contig]
+        Log-likelihoods in nats.
+    start : float64[state]
+        Expected first states of open contigs.
+    transitions : float64[state, state]
+        Expected transitions.
+    emissions : float64[state, code]
+        Expected emissions.
+    """
+
+    logs: NDArray[np.float64]
+    start: NDArray[np.float64]
+    transitions: NDArray[np.float64]
+    emissions: NDArray[np.float64]
+
+    @property
+    def log_likelihood(self) -> float:
+        """Log-likelihood of the corpus in nats."""
+        return float(self.logs.sum())
+
+
+def _prepare(model: Model, corpus: Corpus) -> Tables:
+    if corpus.order != model.order or corpus.both_strands != model.both_strands:
+        raise ValueError("the corpus was prepared for a model of another order or symmetry")
+    return tables_for(model, preferred_word(model.order, model.states, corpus.bases))
+
+
+def log_likelihoods(model: Model, corpus: Corpus, threads: int = 1) -> NDArray[np.float64]:
+    """Return each contig's log-likelihood.
+
+    Parameters
+    ----------
+    model
+        The model.
+    corpus
+        The sequence, prepared for the model's order.
+    threads
+        Threads to use; the result does not depend on it.
+
+    Returns
+    -------
+    float64[contig]
+        In nats; the mean of both strands for a symmetric model of order 1 or more.
+
+    Raises
+    ------
+    SequenceError
+        A contig is impossible under the model.
+    """
+    tables = _prepare(model, corpus)
+    results = []
+    for stream, reverse in zip(corpus.streams(tables.word), (False, True), strict=False):
+        ends = find_ends(model, tables, stream, threads)
+        for contig in np.flatnonzero(ends.lost):
+            again = exact_pass(
+                model, corpus.contigs[contig], stream.codes(int(contig)), reverse=reverse
+            )
+            ends.logs[contig] = again.log_likelihood
+        results.append(ends.logs)
+    return results[0] if len(results) == 1 else (results[0] + results[1]) / 2
+
+
+def expect(model: Model, corpus: Corpus, threads: int = 1) -> Counts:
+    """Return likelihood and expected counts of a corpus under a model.
+
+    Parameters
+    ----------
+    model
+        The model.
+    corpus
+        The sequence, prepared for the model's order.
+    threads
+        Threads to use; the result does not depend on it.
+
+    Returns
+    -------
+    Counts
+        Means of both strands for a symmetric model of order 1 or more.
+
+    Raises
+    ------
+    SequenceError
+        A contig is impossible under the model.
+    """
+    tables = _prepare(model, corpus)
+    counts = [
+        _expect_strand(model, tables, corpus, stream, reverse, threads)
+        for stream, reverse in zip(corpus.streams(tables.word), (False, True), strict=False)
+    ]
+    if len(counts) == 1:
+        return counts[0]
+    one, other = counts
+    return Counts(
+        (one.logs + other.logs) / 2,
+        (one.start + other.start) / 2,
+        (one.transitions + other.transitions) / 2,
+        (one.emissions + other.emissions) / 2,
+    )
+
+
+def _expect_strand(
+    model: Model, tables: Tables, corpus: Corpus, stream: Stream, reverse: bool, threads: int
+) -> Counts:
+    ends = find_ends(model, tables, stream, threads)
+    weights = _pair_weights(tables, stream, ends, threads)
+    counts = Counts(
+        ends.logs,
+        np.zeros(model.states),
+        np.zeros_like(model.transitions),
+        np.zeros_like(model.emissions),
+    )
+    unfold_counts(
+        weights, tables.matrices, model.order, tables.word, counts.transitions, counts.emissions
+    )
+    for contig in np.flatnonzero(~ends.lost & ~stream.closed):
+        counts.start[:] += ends.heads[contig]
+        counts.emissions[:, stream.heads[contig]] += ends.heads[contig]
+    for contig in np.flatnonzero(ends.lost):
+        again = exact_pass(
+            model, corpus.contigs[contig], stream.codes(int(contig)), reverse=reverse
+        )
+        counts.logs[contig] = again.log_likelihood
+        counts.start[:] += again.start
+        counts.transitions[:] += again.transitions
+        counts.emissions[:] += again.emissions
+    return counts
+
+
+def _pair_weights(
+    tables: Tables, stream: Stream, ends: BlockEnds, threads: int
+) -> NDArray[np.float64]:
+    """Return float64[token, state, state] pair weights of all contigs that were not lost.
+
+    Jobs are shared out to groups by their number alone, each group adds up its own table in
+    order, and the tables are added in order, so threads never show in the sums.
+    """
+    jobs = ends.jobs
+    states = tables.matrices.shape[1]
+    groups = int(np.clip(_GROUP_BYTES // tables.matrices.nbytes, _FEWEST_GROUPS, _MOST_GROUPS))
+    edges = np.linspace(0, len(jobs.blocks), groups + 1).astype(np.int64)
+    flags = np.zeros(len(stream.bounds) - 1, bool)
+
+    def work(group: int) -> NDArray[np.float64] | None:
+        first, last = edges[group], edges[group + 1]
+        if first == last:
+            return None
+        table = np.zeros_like(tables.matrices)
+        block_kernels(states).expect(
+            stream.tokens, stream.bounds, jobs.blocks, first, last, jobs.starts, jobs.ends,
+            jobs.shares, tables.matrices, tables.mirrored, tables.interval, table, flags,
+        )  # fmt: skip
+        return table
+
+    tables_of_groups = in_threads(work, range(groups), threads)
+    if flags.any():
+        found = np.searchsorted(stream.contig_blocks, np.flatnonzero(flags), side="right") - 1
+        ends.lost[found] = True
+        spared = jobs.without(np.repeat(ends.lost, np.diff(stream.contig_blocks)))
+        return _pair_weights(
+            tables, stream, BlockEnds(spared, ends.heads, ends.logs, ends.lost), threads
+        )
+    total = np.zeros_like(tables.matrices)
+    for table in tables_of_groups:
+        if table is not None:
+            total += table
+    return total

@@ -1,0 +1,184 @@
+"""One pass over a stream: what is known at both ends of every block.
+
+After it, blocks are independent. Contigs for which a scaled number was lost are named, and
+whoever runs the pass does them again with logarithms (:mod:`hmmseg.inference.exact`).
+"""
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from hmmseg.inference.streams import Stream, in_threads
+from hmmseg.inference.tables import Tables
+from hmmseg.kernels.blocks import block_kernels
+from hmmseg.kernels.scan import log_scaled, log_trace_of_power, scan_closed, scan_contigs
+from hmmseg.model import Model
+
+__all__ = ["BlockEnds", "Jobs", "find_ends"]
+
+_BLOCKS_AT_ONCE = 64
+
+
+@dataclass(frozen=True, eq=False)
+class Jobs:
+    """Independent pieces of work: a block between two known vectors.
+
+    An open contig makes one job of a block; a circle makes one for each state in which the
+    block may be entered, with the probability that it is.
+
+    Attributes
+    ----------
+    blocks : int64[job]
+        Sorted.
+    starts, ends : float64[job, state]
+        Forward vector before, backward vector behind the block, each up to a factor.
+    shares : float64[job]
+        Probability with which the job counts.
+    """
+
+    blocks: NDArray[np.int64]
+    starts: NDArray[np.float64]
+    ends: NDArray[np.float64]
+    shares: NDArray[np.float64]
+
+    def of_blocks(self, first: int, last: int) -> range:
+        """Return the jobs of blocks ``first`` to ``last``, half-open."""
+        begin, stop = np.searchsorted(self.blocks, (first, last))
+        return range(int(begin), int(stop))
+
+    def without(self, dropped: NDArray[np.bool_]) -> "Jobs":
+        """Return the jobs but for those of some blocks (bool[block])."""
+        kept = ~dropped[self.blocks]
+        return Jobs(self.blocks[kept], self.starts[kept], self.ends[kept], self.shares[kept])
+
+
+@dataclass(frozen=True, eq=False)
+class BlockEnds:
+    """What one pass over a stream found.
+
+    Attributes
+    ----------
+    jobs : Jobs
+        Of all contigs but the lost ones.
+    heads : float64[contig, state]
+        Posterior at the first base of open contigs.
+    logs : float64[contig]
+        Log-likelihoods in nats.
+    lost : bool[contig]
+        Contigs to be done again with logarithms.
+    """
+
+    jobs: Jobs
+    heads: NDArray[np.float64]
+    logs: NDArray[np.float64]
+    lost: NDArray[np.bool_]
+
+
+def find_ends(model: Model, tables: Tables, stream: Stream, threads: int) -> BlockEnds:
+    """Compute every block's transfer matrix, then the vectors at its ends.
+
+    Parameters
+    ----------
+    model
+        The model.
+    tables
+        Its matrices, of the stream's word length.
+    stream
+        Tokens.
+    threads
+        Threads to use.
+    """
+    states, blocks, contigs = model.states, len(stream.bounds) - 1, len(stream.closed)
+    if tables.interval == 0:
+        return _everything_lost(states, contigs)
+    products = np.empty((blocks, states, states))
+    times = np.empty((blocks, states), np.int64)
+    flags = np.zeros(blocks, bool)
+    transfer = block_kernels(states).transfer
+
+    def work(first: int) -> None:
+        last = min(first + _BLOCKS_AT_ONCE, blocks)
+        transfer(
+            stream.tokens, stream.bounds, first, last, tables.matrices, tables.interval,
+            products, times, flags,
+        )  # fmt: skip
+
+    in_threads(work, range(0, blocks, _BLOCKS_AT_ONCE), threads)
+    lost = _any_of_blocks(flags, stream.contig_blocks)
+    starts, ends = np.empty((blocks, states)), np.empty((blocks, states))
+    heads, logs = np.zeros((contigs, states)), np.zeros(contigs)
+    first_vectors = model.start_probabilities * model.emissions[:, stream.heads].T
+    scan_contigs(
+        products, times, stream.contig_blocks, stream.closed, first_vectors,
+        starts, ends, heads, logs, lost,
+    )  # fmt: skip
+    circles = _scan_circles(model, stream, products, times, logs, lost)
+    jobs = _merge_jobs(stream, starts, ends, circles)
+    jobs = jobs.without(np.repeat(lost, np.diff(stream.contig_blocks)))
+    return BlockEnds(jobs, heads, logs, lost)
+
+
+def _everything_lost(states: int, contigs: int) -> BlockEnds:
+    none = Jobs(np.empty(0, np.int64), np.empty((0, states)), np.empty((0, states)), np.empty(0))
+    return BlockEnds(none, np.zeros((contigs, states)), np.zeros(contigs), np.ones(contigs, bool))
+
+
+def _any_of_blocks(flags: NDArray[np.bool_], contig_blocks: NDArray[np.int64]) -> NDArray[np.bool_]:
+    """Return for each contig whether one of its blocks is flagged."""
+    sums = np.concatenate(([0], np.cumsum(flags)))
+    return sums[contig_blocks[1:]] > sums[contig_blocks[:-1]]
+
+
+def _scan_circles(
+    model: Model,
+    stream: Stream,
+    products: NDArray[np.float64],
+    times: NDArray[np.int64],
+    logs: NDArray[np.float64],
+    lost: NDArray[np.bool_],
+) -> list[Jobs]:
+    """Return the jobs of each circle; fill in its likelihood and whether it was lost."""
+    states = model.states
+    jobs = []
+    for contig in np.flatnonzero(stream.closed):
+        first, last = stream.contig_blocks[contig : contig + 2]
+        ends = np.empty((last - first, states, states))
+        shares = np.empty((last - first, states))
+        value, count, vanished = scan_closed(
+            products[first:last], times[first:last], 0, last - first, ends, shares
+        )
+        length = len(stream.strands[contig])
+        logs[contig] = log_scaled(value, count) - log_trace_of_power(model.transitions, length)
+        lost[contig] |= vanished
+        jobs.append(
+            Jobs(
+                np.repeat(np.arange(first, last), states),
+                np.tile(np.eye(states), (last - first, 1)),
+                ends.reshape(-1, states),
+                shares.reshape(-1),
+            )
+        )
+    return jobs
+
+
+def _merge_jobs(
+    stream: Stream,
+    starts: NDArray[np.float64],
+    ends: NDArray[np.float64],
+    circles: list[Jobs],
+) -> Jobs:
+    """Return the jobs of open contigs and circles together, sorted by block."""
+    in_circle = np.repeat(stream.closed, np.diff(stream.contig_blocks))
+    straight = np.flatnonzero(~in_circle)
+    parts = [Jobs(straight, starts[straight], ends[straight], np.ones(len(straight))), *circles]
+    blocks = np.concatenate([part.blocks for part in parts])
+    shares = np.concatenate([part.shares for part in parts])
+    order = np.argsort(blocks, kind="stable")
+    order = order[shares[order] > 0]
+    return Jobs(
+        blocks[order],
+        np.concatenate([part.starts for part in parts])[order],
+        np.concatenate([part.ends for part in parts])[order],
+        shares[order],
+    )

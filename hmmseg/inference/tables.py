@@ -1,0 +1,69 @@
+"""A model as the tables that the kernels step by."""
+
+from typing import NamedTuple
+
+import numpy as np
+from numpy.typing import NDArray
+
+from hmmseg.inference.streams import word_tokens
+from hmmseg.kernels.blocks import DECAY_BITS
+from hmmseg.kernels.matrices import fill_token_matrices, smallest_entry
+from hmmseg.model import Model
+
+__all__ = ["Tables", "preferred_word", "tables_for"]
+
+_TABLE_BYTES = 1 << 17
+"""A table of matrices that is to stay in a core's own cache."""
+
+_LONGEST_WORD = 4
+
+
+class Tables(NamedTuple):
+    """Token matrices of a model.
+
+    Attributes
+    ----------
+    word : int
+        Bases in a word token.
+    matrices, mirrored : float64[token, state, state]
+        Matrices and their transposes.
+    interval : int
+        Tokens between two looks at the scale; 0 where only logarithms are safe.
+    """
+
+    word: int
+    matrices: NDArray[np.float64]
+    mirrored: NDArray[np.float64]
+    interval: int
+
+
+def preferred_word(order: int, states: int, bases: int) -> int:
+    """Return the longest word whose table stays small beside the cache and the sequence."""
+    word = 1
+    while word < _LONGEST_WORD:
+        tokens = 4 ** (order + word + 1)
+        if tokens * states * states * 8 > _TABLE_BYTES or tokens * 16 > bases:
+            break
+        word += 1
+    return word
+
+
+def tables_for(model: Model, word: int) -> Tables:
+    """Return the tables of a model; words become single bases where a product could vanish.
+
+    Parameters
+    ----------
+    model
+        The model.
+    word
+        Bases in a word that would be best.
+    """
+    while True:
+        matrices = np.empty((word_tokens(model.order, word), model.states, model.states))
+        fill_token_matrices(model.transitions, model.emissions, model.order, word, matrices)
+        bits = -float(np.log2(smallest_entry(matrices)))
+        interval = DECAY_BITS if bits <= 1 else int(DECAY_BITS / bits)
+        if interval > 0 or word == 1:
+            break
+        word = 1
+    return Tables(word, matrices, np.ascontiguousarray(matrices.transpose(0, 2, 1)), interval)

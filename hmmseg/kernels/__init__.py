@@ -1,0 +1,1 @@
+"""Compiled inner loops: arrays in, arrays filled; no files, no text, no objects."""

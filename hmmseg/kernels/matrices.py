@@ -1,0 +1,149 @@
+"""Matrices of tokens: what one step does to a forward vector.
+
+With T the transitions and e(c) the emissions of code c, one base is T diag(e(c)), and a word
+is the product over its bases. ``matrices[token, i, j]`` is then P(the token's bases, state j at
+its last base | state i at the base before it, context).
+"""
+
+import numpy as np
+
+from hmmseg.kernels.compiling import kernel
+from hmmseg.kernels.tokens import code_total, words_of
+
+__all__ = ["fill_token_matrices", "smallest_entry", "unfold_counts"]
+
+
+@kernel
+def fill_token_matrices(transitions, emissions, order, word, matrices):
+    """Fill the matrix of every token.
+
+    Parameters
+    ----------
+    transitions : float64[state, state]
+    emissions : float64[state, code]
+    order, word : int
+        Context length, and bases in a word (1: no word tokens).
+    matrices : float64[token, state, state]
+        Filled.
+    """
+    states = transitions.shape[0]
+    codes = code_total(order)
+    for code in range(codes):
+        for i in range(states):
+            for j in range(states):
+                matrices[code, i, j] = transitions[i, j] * emissions[j, code]
+    if word == 1:
+        return
+    full = codes - 1 - words_of(order + 1)
+    product = np.empty((states, states))
+    for number in range(words_of(order + word)):
+        matrices[codes + number] = matrices[full + _code_in_word(number, order, word, 0)]
+        for at in range(1, word):
+            step = matrices[full + _code_in_word(number, order, word, at)]
+            _multiply(matrices[codes + number], step, product)
+            matrices[codes + number] = product
+
+
+@kernel
+def _code_in_word(number, order, word, at):
+    """Return the (order + 1)-mer that ends at one base of a word with its context."""
+    return (number >> (2 * (word - 1 - at))) & (words_of(order + 1) - 1)
+
+
+@kernel
+def _multiply(a, b, out):
+    for i in range(a.shape[0]):
+        for j in range(b.shape[1]):
+            total = 0.0
+            for k in range(a.shape[1]):
+                total += a[i, k] * b[k, j]
+            out[i, j] = total
+
+
+@kernel
+def smallest_entry(matrices):
+    """Return the smallest entry above zero of float64[token, state, state]."""
+    smallest = np.inf
+    for value in matrices.flat:
+        if 0.0 < value < smallest:
+            smallest = value
+    return smallest
+
+
+@kernel
+def unfold_counts(weights, matrices, order, word, transition_counts, emission_counts):
+    """Turn pair weights of tokens into expected counts of transitions and emissions.
+
+    Parameters
+    ----------
+    weights : float64[token, state, state]
+        Sum over occurrences of forward[i] backward[j] / P(record).
+    matrices : float64[token, state, state]
+        As filled by :func:`fill_token_matrices`.
+    order, word : int
+        Context length, and bases in a word.
+    transition_counts : float64[state, state]
+        Added to.
+    emission_counts : float64[state, code]
+        Added to.
+    """
+    states = matrices.shape[1]
+    codes = code_total(order)
+    full = codes - 1 - words_of(order + 1)
+    for code in range(codes):
+        _add_step(weights[code], matrices[code], code, transition_counts, emission_counts)
+    if word == 1:
+        return
+    before = np.empty((word, states, states))
+    outer = np.empty((states, states))
+    scratch = np.empty((states, states))
+    for number in range(words_of(order + word)):
+        if not weights[codes + number].any():
+            continue
+        # before[at] carries the weights from the state before the word to the one before `at`.
+        before[0] = weights[codes + number]
+        for at in range(1, word):
+            step = matrices[full + _code_in_word(number, order, word, at - 1)]
+            _multiply_transposed_left(step, before[at - 1], before[at])
+        # outer[b, j] carries them back from the state at the word's end.
+        for i in range(states):
+            for j in range(states):
+                outer[i, j] = 1.0 if i == j else 0.0
+        for at in range(word - 1, -1, -1):
+            code = full + _code_in_word(number, order, word, at)
+            _multiply_transposed_right(before[at], outer, scratch)
+            _add_step(scratch, matrices[code], code, transition_counts, emission_counts)
+            _multiply(matrices[code], outer, scratch)
+            outer[:] = scratch
+
+
+@kernel
+def _multiply_transposed_left(a, b, out):
+    """Fill out = a' b."""
+    for i in range(a.shape[1]):
+        for j in range(b.shape[1]):
+            total = 0.0
+            for k in range(a.shape[0]):
+                total += a[k, i] * b[k, j]
+            out[i, j] = total
+
+
+@kernel
+def _multiply_transposed_right(a, b, out):
+    """Fill out = a b'."""
+    for i in range(a.shape[0]):
+        for j in range(b.shape[0]):
+            total = 0.0
+            for k in range(a.shape[1]):
+                total += a[i, k] * b[j, k]
+            out[i, j] = total
+
+
+@kernel
+def _add_step(weights, matrix, code, transition_counts, emission_counts):
+    """Add one base's share: weights[i, j] times its matrix."""
+    for i in range(matrix.shape[0]):
+        for j in range(matrix.shape[1]):
+            expected = weights[i, j] * matrix[i, j]
+            transition_counts[i, j] += expected
+            emission_counts[j, code] += expected

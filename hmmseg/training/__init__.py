@@ -1,0 +1,1 @@
+"""Fitting models to sequence."""
