@@ -27,14 +27,13 @@ from hmmseg.sequence.alphabet import (
     letter_kinds,
     text_chunks,
 )
-from hmmseg.sequence.intervals import flag_runs, merge
+from hmmseg.sequence.intervals import empty_intervals, flag_runs, merge
 from hmmseg.sequence.source import READ_ERRORS, STDIN, TextSource, check_readable, open_text
 
 __all__ = ["Record", "read_records", "record_from_text"]
 
 _CIRCULAR = re.compile(r"\[\s*topology\s*=\s*circular\s*\]", re.IGNORECASE)
 _GENBANK = re.compile(r"\.(gb|gbk|gbff|genbank)(\.b?gz)?$", re.IGNORECASE)
-_BLOCK = 1 << 20
 
 
 @dataclass(frozen=True, eq=False)
@@ -95,9 +94,11 @@ def record_from_text(
         bases = encode(text)
     except SequenceError as error:
         raise SequenceError(f"record {name}, {error}") from None
-    soft, runs, ambiguous = [], [], 0
+    soft, runs, ambiguous = [empty_intervals()], [empty_intervals()], 0
     for offset, piece in text_chunks(text):
         kinds = letter_kinds(piece)
+        if not kinds.any():
+            continue
         soft.append(flag_runs((kinds & LOWER) != 0, offset))
         runs.append(flag_runs((kinds & LETTER_N) != 0, offset))
         ambiguous += int(np.count_nonzero(kinds & AMBIGUOUS))
@@ -178,25 +179,25 @@ def _check_fasta_head(source: TextSource) -> None:
 
 
 def _joined_lines(source: TextSource, headers: deque[int]) -> Iterator[str]:
-    """Join sequence lines into blocks of about a megabyte, and note each header's line number.
+    """Yield header lines, and sequence in pieces of about a megabyte without white space.
 
-    The parser keeps every line of a record as an object; short lines would double its memory.
+    The parser keeps every line of a record as an object: lines as they stand would double its
+    memory, and cost a turn of the loop each. ``headers`` gets each header's line number.
     """
-    block: list[str] = []
-    size = 0
-    for number, line in enumerate(source.lines(), 1):
-        header = line.startswith(">")
-        if block and (header or size > _BLOCK):
-            yield "".join(block)
-            block, size = [], 0
-        if header:
-            headers.append(number)
-            yield line
+    number = 1
+    for block in source.blocks():
+        if block[0] != ">" and "\n>" not in block:
+            parts = [block]
         else:
-            block.append(line.rstrip())
-            size += len(line)
-    if block:
-        yield "".join(block) + "\n"
+            # Cut before and behind each header line; parts with a header begin with '>'.
+            parts = re.split(r"^(>[^\n]*\n?)", block, flags=re.MULTILINE)
+        for part in parts:
+            if part.startswith(">"):
+                headers.append(number)
+                yield part
+            elif letters := "".join(part.split()):
+                yield letters
+            number += part.count("\n")
 
 
 def _read_fasta(source: TextSource) -> Iterator[Record]:

@@ -25,6 +25,7 @@ READ_ERRORS = (EOFError, zlib.error, OSError)
 """What reading a damaged, possibly compressed, file may raise."""
 
 _HEAD = 1 << 16
+_BLOCK = 1 << 20
 _GZIP = b"\x1f\x8b"
 _BGZIP_END = bytes.fromhex("1f8b08040000000000ff0600424302001b0003000000000000000000")
 """The empty block that ends a whole bgzip file (SAM/BAM format specification, section 4.1.2)."""
@@ -67,6 +68,14 @@ class TextSource:
         """
         try:
             yield from self.stream
+        except READ_ERRORS as failure:
+            raise self.explained(failure) from failure
+
+    def blocks(self) -> Iterator[str]:
+        r"""Iterate over blocks of whole lines, about a megabyte each; raises as `lines` does."""
+        try:
+            while block := self.stream.read(_BLOCK) + self.stream.readline():
+                yield block
         except READ_ERRORS as failure:
             raise self.explained(failure) from failure
 
