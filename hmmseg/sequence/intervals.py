@@ -3,6 +3,7 @@
 An interval array is ``int64[interval, 2]``: start and end, 0-based and half-open.
 """
 
+import re
 from collections.abc import Iterator
 from pathlib import Path
 from typing import NamedTuple
@@ -18,6 +19,8 @@ __all__ = ["BedLine", "complement", "empty_intervals", "flag_runs", "merge", "re
 Intervals = npt.NDArray[np.int64]
 
 _MIN_COLUMNS = 3
+_WHOLE_NUMBER = re.compile(r"[0-9]{1,18}")
+"""Eighteen digits fit int64."""
 
 
 class BedLine(NamedTuple):
@@ -77,14 +80,15 @@ def complement(merged: Intervals, length: int) -> Intervals:
 def read_bed(path: str | Path) -> Iterator[BedLine]:
     """Read the first four columns of a BED file, plain or compressed, or ``-``.
 
-    Blank lines, comments and browser lines (``track``, ``browser``) are passed over.
+    Blank lines, comments and genome browser lines (``track``, ``browser``) are passed over; a file
+    without any line is in order.
 
     Raises
     ------
     LabelError
         The file cannot be read, or a line is not BED; the message names file and line.
     """
-    with open_text(path, LabelError) as text:
+    with open_text(path, LabelError, may_be_empty=True) as text:
         for number, line in enumerate(text.lines(), 1):
             content = line.strip()
             if content and not content.startswith(("#", "track ", "browser ")):
@@ -99,7 +103,7 @@ def _parse_bed(line: str, where: str) -> BedLine:
     record, first, last = (field.strip() for field in fields[:_MIN_COLUMNS])
     if not record:
         raise LabelError(f"{where}: the first column, the record's name, is empty")
-    if not (first.isascii() and first.isdigit() and last.isascii() and last.isdigit()):
+    if not (_WHOLE_NUMBER.fullmatch(first) and _WHOLE_NUMBER.fullmatch(last)):
         raise LabelError(
             f"{where}: start and end must be whole numbers from 0 up, not {first!r} and {last!r}"
         )

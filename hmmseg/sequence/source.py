@@ -124,7 +124,9 @@ def check_readable(path: str | Path, error: type[HmmsegError] = SequenceError) -
 
 
 @contextmanager
-def open_text(path: str | Path, error: type[HmmsegError] = SequenceError) -> Iterator[TextSource]:
+def open_text(
+    path: str | Path, error: type[HmmsegError] = SequenceError, *, may_be_empty: bool = False
+) -> Iterator[TextSource]:
     """Open a text file, unpacking gzip and bgzip; ``-`` is standard input.
 
     Parameters
@@ -132,6 +134,8 @@ def open_text(path: str | Path, error: type[HmmsegError] = SequenceError) -> Ite
     path : str or Path
     error : type
         Class of what is raised.
+    may_be_empty : bool
+        Whether a file without content is in order.
 
     Raises
     ------
@@ -148,7 +152,7 @@ def open_text(path: str | Path, error: type[HmmsegError] = SequenceError) -> Ite
             raise error(_failure(name, failure)) from failure
         plain = _unpacked(raw, name, error)
         head = _read_head(plain, name, error)
-        if not head.strip():
+        if not head.strip() and not may_be_empty:
             raise error(f"{name}: the file is empty")
         if b"\0" in head:
             raise error(f"{name}: a binary file; give text, plain or gzip")
@@ -161,8 +165,6 @@ def open_text(path: str | Path, error: type[HmmsegError] = SequenceError) -> Ite
 def _unpacked(raw: IO[bytes], name: str, error: type[HmmsegError]) -> IO[bytes]:
     """Return the stream of unpacked bytes, after checks on the packed ones."""
     head = _read_head(raw, name, error)
-    if not head:
-        raise error(f"{name}: the file is empty")
     rest = io.BufferedReader(_Joined(head, raw), buffer_size=_HEAD)
     if head.startswith(_GZIP):
         _check_bgzip_end(raw, head, name, error)
@@ -170,7 +172,7 @@ def _unpacked(raw: IO[bytes], name: str, error: type[HmmsegError]) -> IO[bytes]:
     for magic, packing in _OTHER_PACKING.items():
         if head.startswith(magic):
             raise error(f"{name}: packed with {packing}; unpack it, or pack it with gzip")
-    if name.lower().endswith((".gz", ".bgz")):
+    if head and name.lower().endswith((".gz", ".bgz")):
         raise error(f"{name}: named as a gzip file but is not one; rename it or download it again")
     return rest
 
