@@ -1,0 +1,22 @@
+from snakemake.utils import min_version
+
+min_version("9.0")
+
+
+configfile: "config/config.yaml"
+
+
+include: "workflow/rules/common.smk"
+
+
+rule all:
+    input:
+        summary=f"{RESULTS}/summary.tsv",
+        models=expand(f"{RESULTS}/{{assembly}}/model.json", assembly=ASSEMBLIES),
+        surveys=expand(f"{RESULTS}/{{assembly}}/survey", assembly=ASSEMBLIES),
+
+
+include: "workflow/rules/survey.smk"
+include: "workflow/rules/train.smk"
+include: "workflow/rules/decode.smk"
+include: "workflow/rules/summary.smk"

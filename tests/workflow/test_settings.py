@@ -1,0 +1,64 @@
+"""Schemas, explanations and style of the workflow agree with one another."""
+
+import re
+import subprocess
+import sys
+from pathlib import Path
+from typing import Any
+
+import pytest
+import yaml
+
+from tests.workflow.running import ROOT, Project
+
+
+def schema(name: str) -> dict[str, Any]:
+    text = (ROOT / "workflow" / "schemas" / f"{name}.schema.yaml").read_text()
+    return dict(yaml.safe_load(text))
+
+
+CONFIG: dict[str, Any] = schema("config")["properties"]
+DEFAULTS: dict[str, Any] = CONFIG["defaults"]["properties"]
+SHEET: dict[str, Any] = schema("assemblies")["properties"]["rows"]["items"]["properties"]
+
+
+def test_a_column_obeys_the_same_rules_as_its_default() -> None:
+    for key, rules in DEFAULTS.items():
+        assert SHEET[key] == {name: rules[name] for name in rules if name != "default"}
+
+
+def test_the_configuration_that_ships_states_every_default() -> None:
+    shipped = yaml.safe_load((ROOT / "config" / "config.yaml").read_text())
+    assert shipped.keys() == CONFIG.keys()
+    assert shipped.pop("defaults") == {key: rules["default"] for key, rules in DEFAULTS.items()}
+    assert shipped == {key: CONFIG[key]["default"] for key in shipped}
+
+
+@pytest.mark.parametrize("key", sorted({*CONFIG, *DEFAULTS, *SHEET}))
+def test_every_key_is_explained(key: str) -> None:
+    text = (ROOT / "config" / "README.md").read_text()
+    [row] = re.findall(rf"^\| `{key}` \|(.*)\|$", text, flags=re.MULTILINE)
+    assert len(row) > 20
+
+
+def test_nothing_is_explained_that_does_not_exist() -> None:
+    text = (ROOT / "config" / "README.md").read_text()
+    explained = set(re.findall(r"^\| `(\w+)` \|", text, flags=re.MULTILINE))
+    assert explained == {*CONFIG, *DEFAULTS, *SHEET}
+
+
+def test_snakefmt_has_nothing_to_change() -> None:
+    call = [str(Path(sys.executable).with_name("snakefmt")), "--check", "Snakefile", "workflow"]
+    done = subprocess.run(call, cwd=ROOT, capture_output=True, text=True, check=False)
+    assert done.returncode == 0, done.stderr
+
+
+def test_the_linter_misses_only_conda_environments(tmp_path: Path) -> None:
+    # The rules call the package that brought Snakemake along, see DEVELOPERS.md.
+    project = Project(tmp_path)
+    (tmp_path / "a.fa").write_text("")
+    project.configure([{"assembly": "a", "fasta": "a.fa"}])
+    call = [sys.executable, "-m", "snakemake", *project.arguments(), "--lint"]
+    done = subprocess.run(call, cwd=tmp_path, capture_output=True, text=True, check=False)
+    found = set(re.findall(r"^    \* (.*):$", done.stdout + done.stderr, flags=re.MULTILINE))
+    assert found == {"Specify a conda environment or container for each rule."}

@@ -1,0 +1,252 @@
+# What the rules share: settings, checked and merged, and functions that answer for a wildcard.
+import csv
+import math
+import shlex
+import sys
+from pathlib import Path
+
+from snakemake.exceptions import WorkflowError
+from snakemake.utils import validate
+
+# Rules call the hmmseg that was installed beside this Snakemake, environment activated or not.
+shell.prefix(f"PATH={shlex.quote(str(Path(sys.executable).parent))}:$PATH; ")
+
+# Columns of the sample sheet that name a file.
+FILES = ("fasta", "records", "exclude", "labels", "init")
+# Settings that a start model brings along, so that a row cannot give them beside `init`.
+FIXED_BY_INIT = ("states", "order", "strands", "start")
+
+
+def culprit(problem):
+    """Dotted key at fault in a jsonschema ValidationError: 'defaults.states'."""
+    keys = [str(key) for key in problem.absolute_path]
+    given = problem.instance
+    if problem.validator == "required":
+        keys.append(next(key for key in problem.validator_value if key not in given))
+    if problem.validator == "additionalProperties":
+        keys.append(
+            next(key for key in given if key not in problem.schema["properties"])
+        )
+    return ".".join(keys)
+
+
+def explain(problem):
+    """What is wrong, in the words of one who edits the file."""
+    if problem.validator == "required":
+        return "has no value"
+    if problem.validator == "additionalProperties":
+        return "is not known; config/README.md lists all there are"
+    return f"{problem.message} ({problem.schema['description']})"
+
+
+def check_config():
+    """Check the configuration and fill in the defaults that the schema states."""
+    try:
+        validate(config, "../schemas/config.schema.yaml")
+    except WorkflowError as error:
+        problem = error.__context__
+        raise config_error(culprit(problem), explain(problem)) from None
+    init = config["defaults"]["init"]
+    if init is not None and not Path(init).is_file():
+        raise config_error("defaults.init", f"there is no file {init}")
+
+
+def config_error(key, message):
+    """Error about one key of the configuration."""
+    return WorkflowError(f"configuration, key {key}: {message}")
+
+
+def sheet_error(row, column, message):
+    """Error about one cell; rows count as in a spreadsheet, the header being row 1."""
+    return WorkflowError(
+        f"{config['assemblies']}, row {row}, column {column}: {message}"
+    )
+
+
+def cell_value(column, text):
+    """Number for the columns whose default is one, and the text itself for all others."""
+    if not isinstance(config["defaults"].get(column), (int, float)):
+        return text
+    try:
+        number = float(text)
+    except ValueError:
+        return text
+    if not math.isfinite(number):
+        return text
+    return int(number) if number.is_integer() else number
+
+
+def sheet_rows():
+    """Row number and filled cells of each row; blank rows and those behind # aside."""
+    path = Path(config["assemblies"])
+    if not path.is_file():
+        raise config_error("assemblies", f"there is no file {path}")
+    header = None
+    with path.open(newline="", encoding="utf-8-sig") as handle:
+        lines = csv.reader(handle, delimiter="\t", quoting=csv.QUOTE_NONE)
+        for row, cells in enumerate(lines, start=1):
+            cells = [cell.strip() for cell in cells]
+            if not any(cells) or cells[0].startswith("#"):
+                continue
+            if header is None:
+                header = check_header(cells, row)
+                continue
+            if len(cells) > len(header):
+                raise sheet_error(
+                    row, len(header) + 1, "lies beyond the last named column"
+                )
+            named = zip(header, cells)
+            yield row, {name: cell_value(name, cell) for name, cell in named if cell}
+
+
+def check_header(cells, row):
+    """Names of the columns: all known, each there once, none missing that is required."""
+    for position, column in enumerate(cells, start=1):
+        if not column:
+            raise sheet_error(row, position, "has no name")
+        if column in cells[: position - 1]:
+            raise sheet_error(row, column, "stands there twice")
+        if column not in COLUMNS:
+            raise sheet_error(row, column, "is not known; config/README.md lists all")
+    for column in ("assembly", "fasta"):
+        if column not in cells:
+            raise sheet_error(row, column, "is missing")
+    return cells
+
+
+def check_cells(rows):
+    """Check the cells of all rows against the schema."""
+    try:
+        validate({"rows": list(rows.values())}, "../schemas/assemblies.schema.yaml")
+    except WorkflowError as error:
+        problem = error.__context__
+        _, position, column = culprit(problem).split(".")
+        raise sheet_error(list(rows)[int(position)], column, explain(problem)) from None
+
+
+def check_row(row, cells):
+    """Check that the files of a row are there and its settings do not contradict each other."""
+    for column in FILES:
+        if column in cells and not Path(cells[column]).is_file():
+            raise sheet_error(row, column, f"there is no file {cells[column]}")
+    for column in FIXED_BY_INIT:
+        if column in cells and cells.get("init", config["defaults"]["init"]):
+            raise sheet_error(row, column, "comes with the start model; leave it blank")
+    settings = {**config["defaults"], **cells}
+    if settings["start"] == "free" and settings["strands"] == "symmetric":
+        raise sheet_error(row, "start", "free needs strands: stranded")
+
+
+def read_sheet():
+    """Settings of each assembly: the defaults, with its row's cells over them."""
+    rows = dict(sheet_rows())
+    check_cells(rows)
+    settings = {}
+    for row, cells in rows.items():
+        check_row(row, cells)
+        if cells["assembly"] in settings:
+            raise sheet_error(row, "assembly", "stands in a row above already")
+        settings[cells["assembly"]] = {**config["defaults"], **cells}
+    if not settings:
+        raise WorkflowError(
+            f"{config['assemblies']} lists no assembly; add a row for each"
+        )
+    return settings
+
+
+check_config()
+COLUMNS = ("assembly", *FILES, "circular", *config["defaults"])
+SETTINGS = read_sheet()
+ASSEMBLIES = list(SETTINGS)
+RESULTS = config["output"].rstrip("/")
+
+
+wildcard_constraints:
+    assembly=r"[A-Za-z0-9][A-Za-z0-9._-]*",
+    batch=r"batch-\d+",
+
+
+def files(wildcards, column):
+    """File in one column of an assembly's row; none if the cell is blank."""
+    path = SETTINGS[wildcards.assembly].get(column)
+    return [] if path is None else path
+
+
+def fasta_of(wildcards):
+    """The assembly itself."""
+    return files(wildcards, "fasta")
+
+
+def records_of(wildcards):
+    """List of the records to use."""
+    return files(wildcards, "records")
+
+
+def exclude_of(wildcards):
+    """Intervals to leave out."""
+    return files(wildcards, "exclude")
+
+
+def labels_of(wildcards):
+    """Intervals whose state is known."""
+    return files(wildcards, "labels")
+
+
+def init_of(wildcards):
+    """Model to start from."""
+    return files(wildcards, "init")
+
+
+def options(wildcards, *keys):
+    """Options of the command line for those of the settings that have a value."""
+    settings = SETTINGS[wildcards.assembly]
+    words = []
+    for key in keys:
+        if settings.get(key) is not None:
+            words += [f"--{key.replace('_', '-')}", str(settings[key])]
+    return shlex.join(words)
+
+
+def survey_options(wildcards):
+    """Which records a survey counts."""
+    return options(wildcards, "records", "min_record", "exclude")
+
+
+def train_options(wildcards):
+    """Which records to train on, from where, and how long."""
+    model = ["init"]
+    ties = []
+    if SETTINGS[wildcards.assembly].get("init") is None:
+        model = ["states", "order", "start"]
+        ties = [f"--{SETTINGS[wildcards.assembly]['strands']}"]
+    search = ["restarts", "seed", "max_iterations", "tolerance", "pseudocount"]
+    keys = ["records", "min_record", "exclude", "labels", *model, *search]
+    return " ".join([options(wildcards, *keys), *ties])
+
+
+def batches_options(wildcards):
+    """Which records to decode, and how many bases in one job."""
+    chosen = options(wildcards, "records", "min_record", "exclude")
+    return f"{chosen} --batch-bases {config['batch_bases']}"
+
+
+def decode_options(wildcards):
+    """How to call regions; the records come from the batch."""
+    chosen = options(
+        wildcards, "exclude", "decoder", "threshold", "min_length", "merge_gap"
+    )
+    names = SETTINGS[wildcards.assembly].get("circular", "").split(",")
+    circles = [word for name in names if name for word in ("--circular", name.strip())]
+    return f"{chosen} {shlex.join(circles)}".rstrip()
+
+
+def parts_of(wildcards):
+    """Decoded batches of an assembly, in the order of its records, known once they are cut."""
+    folder = checkpoints.batches.get(assembly=wildcards.assembly).output.folder
+    names = sorted(path.stem for path in Path(folder).glob("batch-*.txt"))
+    return [f"{RESULTS}/{wildcards.assembly}/parts/{name}" for name in names]
+
+
+def labelled_calls(wildcards):
+    """NAME=FOLDER for each assembly."""
+    return shlex.join(f"{name}={RESULTS}/{name}/calls" for name in ASSEMBLIES)

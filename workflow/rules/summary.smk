@@ -1,0 +1,16 @@
+# One row for each assembly and reported state.
+
+
+rule summary:
+    input:
+        calls=expand(f"{RESULTS}/{{assembly}}/calls", assembly=ASSEMBLIES),
+    output:
+        table=f"{RESULTS}/summary.tsv",
+    log:
+        f"{RESULTS}/logs/summary.log",
+    benchmark:
+        f"{RESULTS}/benchmarks/summary.tsv"
+    params:
+        labelled=labelled_calls,
+    shell:
+        "hmmseg summary {params.labelled} --output {output.table:q} 2> {log:q}"
