@@ -14,6 +14,7 @@ from hmmseg.kernels.paths import (
     follow_back,
     path_kernels,
 )
+from hmmseg.kernels.scan import log_trace_of_power
 from hmmseg.kernels.tokens import base_codes
 from hmmseg.model import Model
 from hmmseg.model.contexts import code_dtype
@@ -113,6 +114,11 @@ def path_log_probability(model: Model, contig: Contig, path: NDArray[np.integer]
         The sequence; for a circle the last state leads to the first.
     path
         int8[position]: states.
+
+    Notes
+    -----
+    A circle has no start; its paths' probabilities are divided by trace(T**n), so that they sum
+    to 1 over all sequences and paths.
     """
     codes = np.empty(len(contig), code_dtype(model.order))
     base_codes(contig.bases, model.order, contig.closed, 0, len(contig), codes)
@@ -120,7 +126,10 @@ def path_log_probability(model: Model, contig: Contig, path: NDArray[np.integer]
     previous = np.roll(path, 1) if contig.closed else path[:-1]
     following = path if contig.closed else path[1:]
     steps = log_array(np.ascontiguousarray(model.transitions[previous, following]))
-    first = 0.0 if contig.closed else float(log_array(model.start_probabilities[path[:1]])[0])
+    if contig.closed:
+        first = -float(log_trace_of_power(model.transitions, len(contig)))
+    else:
+        first = float(log_array(model.start_probabilities[path[:1]])[0])
     return first + float(steps.sum()) + float(emitted.sum())
 
 
