@@ -9,7 +9,7 @@ from hmmseg.sequence.alphabet import CHUNK, MISSING
 from hmmseg.sequence.intervals import complement, merge
 from hmmseg.sequence.reading import Record
 
-__all__ = ["GAP_MIN", "Contig", "gaps", "split"]
+__all__ = ["GAP_MIN", "Contig", "gaps", "spans_origin", "split"]
 
 GAP_MIN = 25
 """A run of N at least this long is a gap."""
@@ -66,16 +66,16 @@ def gaps(record: Record, gap_min: int = GAP_MIN) -> npt.NDArray[np.int64]:
         raise ValueError(f"gap_min must be at least 1, not {gap_min}")
     runs = record.n_runs
     lengths = runs[:, 1] - runs[:, 0]
-    if _across_origin(record, runs):
+    if spans_origin(record, runs):
         lengths[[0, -1]] = lengths[0] + lengths[-1]
     return runs[lengths >= gap_min]
 
 
-def _across_origin(record: Record, runs: npt.NDArray[np.int64]) -> bool:
-    """Whether the last of the intervals goes on in the first, over a circular record's origin."""
-    return (
-        record.circular and len(runs) > 1 and runs[0, 0] == 0 and bool(runs[-1, 1] == len(record))
-    )
+def spans_origin(record: Record, intervals: npt.NDArray[np.int64]) -> bool:
+    """Whether the last interval goes on in the first, over the origin of a circular record."""
+    if not record.circular or len(intervals) < 2:
+        return False
+    return int(intervals[0, 0]) == 0 and int(intervals[-1, 1]) == len(record)
 
 
 def split(
@@ -114,7 +114,7 @@ def split(
         whole = Contig(record.name, 0, record.bases, True, len(record))
         return [whole] if _any_known(whole.bases) else []
     spans = [(int(start), record.bases[start:end]) for start, end in pieces]
-    if _across_origin(record, pieces):
+    if spans_origin(record, pieces):
         first, last = spans.pop(0), spans.pop()
         spans.append((last[0], np.concatenate((last[1], first[1]))))
     return [

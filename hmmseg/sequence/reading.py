@@ -88,8 +88,10 @@ def record_from_text(
     Raises
     ------
     SequenceError
-        A letter is not an IUPAC nucleotide letter.
+        There is no letter, or one that is not an IUPAC nucleotide letter.
     """
+    if not text:
+        raise SequenceError(f"record {name} is empty; remove it or add its sequence")
     try:
         bases = encode(text)
     except SequenceError as error:
@@ -213,13 +215,11 @@ def _read_fasta(source: TextSource) -> Iterator[Record]:
         name = title.split(maxsplit=1)[0]
         if not name.isprintable() or "\ufffd" in name:
             raise SequenceError(f"{where}: the record's name is not readable text; rename it")
-        if not text:
-            raise SequenceError(f"{where}: record {name} is empty; remove it or add its sequence")
         circular = _CIRCULAR.search(title) is not None
         try:
             record = record_from_text(name, text, description=title, circular=circular)
         except SequenceError as error:
-            raise SequenceError(f"{source.name}: {error}") from None
+            raise SequenceError(f"{where}: {error}") from None
         # While the caller works on the record, its letters need no memory here.
         del text
         yield record
@@ -261,8 +261,6 @@ def _read_genbank(source: TextSource) -> Iterator[Record]:
                 f"{source.name}: record {name} has no sequence (no ORIGIN block); download the "
                 "full record"
             ) from None
-        if not text:
-            raise SequenceError(f"{source.name}: record {name} is empty; remove it")
         circular = parsed.annotations.get("topology") == "circular"
         header = f"{name} {parsed.description}".strip()
         try:
