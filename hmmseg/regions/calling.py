@@ -1,0 +1,171 @@
+"""Calling the regions of one contig."""
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from functools import cached_property
+
+import numpy as np
+from numpy.typing import NDArray
+
+from hmmseg.inference.path import best_runs
+from hmmseg.inference.posterior import posterior_windows
+from hmmseg.model import Model
+from hmmseg.regions.intervals import NO_FILTERS, Filters, StateIntervals, filtered, over_threshold
+from hmmseg.regions.odds import LogOdds
+from hmmseg.sequence.contigs import Contig
+
+__all__ = ["PATH", "POSTERIOR", "Caller", "Calls"]
+
+PATH = "path"
+POSTERIOR = "posterior"
+
+_Watch = Callable[[int, NDArray[np.float64]], None]
+
+
+@dataclass(frozen=True, eq=False)
+class Calls:
+    """The regions of one contig.
+
+    Attributes
+    ----------
+    intervals : StateIntervals
+        Contig positions.
+    mean_posterior : float64[interval]
+        Mean posterior of the region's state.
+    log_odds_bits : float64[interval]
+        Sum over the region of the state's log-odds against the background.
+    """
+
+    intervals: StateIntervals
+    mean_posterior: NDArray[np.float64]
+    log_odds_bits: NDArray[np.float64]
+
+
+@dataclass(frozen=True, eq=False)
+class Caller:
+    """How regions are called.
+
+    Parameters
+    ----------
+    model
+        Its reported states become regions.
+    decoder
+        ``"path"``: runs of the most probable path; ``"posterior"``: runs in which a state's
+        posterior exceeds the threshold.
+    threshold
+        For the posterior decoder.
+    filters
+        Merging and shortest length.
+    threads
+        Threads to use; the result does not depend on it.
+    """
+
+    model: Model
+    decoder: str = PATH
+    threshold: float = 0.5
+    filters: Filters = NO_FILTERS
+    threads: int = 1
+
+    @property
+    def states(self) -> list[int]:
+        """Indices of the reported states."""
+        return [i for i, reported in enumerate(self.model.reported) if reported]
+
+    @cached_property
+    def _odds(self) -> LogOdds:
+        return LogOdds(self.model)
+
+    def call(self, contig: Contig, watch: _Watch) -> Calls:
+        """Call regions; hand every window of posteriors to ``watch`` as it comes.
+
+        Parameters
+        ----------
+        contig
+            The sequence.
+        watch
+            Called with a window's first position and float64[position, state] posteriors.
+
+        Raises
+        ------
+        SequenceError
+            The contig is impossible under the model.
+        """
+        found = self._path_intervals(contig) if self.decoder == PATH else None
+        sums = {state: _Sums(found, state) for state in self.states}
+        for begin, posterior in posterior_windows(self.model, contig, self.threads):
+            bits = self._odds.window(contig, begin, begin + len(posterior))
+            for state, running in sums.items():
+                if found is None:
+                    running.grow(*over_threshold(posterior[:, state], self.threshold, begin))
+                running.add(begin, posterior[:, state], bits[:, state])
+            watch(begin, posterior)
+        return self._score(contig, sums)
+
+    def _path_intervals(self, contig: Contig) -> StateIntervals:
+        runs = best_runs(self.model, contig, self.threads)
+        everything = StateIntervals(runs.edges[:-1], runs.edges[1:], runs.states.astype(np.int64))
+        return everything.taken(np.isin(everything.states, self.states))
+
+    def _score(self, contig: Contig, sums: dict[int, "_Sums"]) -> Calls:
+        parts = [running.intervals() for running in sums.values()]
+        found = StateIntervals(*(np.concatenate(column) for column in zip(*parts, strict=True)))
+        found = found.taken(np.lexsort((found.states, found.starts)))
+        found = filtered(found, self.filters, len(contig), contig.closed)
+        totals = np.array(
+            [
+                sums[int(state)].between(int(start), int(end), len(contig))
+                for start, end, state in zip(*found, strict=True)
+            ]
+        ).reshape(-1, 2)
+        return Calls(found, totals[:, 0] / (found.ends - found.starts), totals[:, 1])
+
+
+class _Sums:
+    """Running sums of one state's posterior and log-odds, kept at the edges of its intervals."""
+
+    def __init__(self, found: StateIntervals | None, state: int) -> None:
+        self._state = state
+        own = None if found is None else found.taken(found.states == state)
+        self._starts: list[int] = [] if own is None else own.starts.tolist()
+        self._ends: list[int] = [] if own is None else own.ends.tolist()
+        self._at: dict[int, tuple[float, float]] = {0: (0.0, 0.0)}
+        self._edges = np.array(sorted({*self._starts, *self._ends}), dtype=np.int64)
+        self._known = found is not None
+        self._total = (0.0, 0.0)
+
+    def grow(self, starts: NDArray[np.int64], ends: NDArray[np.int64]) -> None:
+        """Take in the intervals of the next window; one may go on where the last one ended."""
+        begin, stop = starts.tolist(), ends.tolist()
+        if self._ends and begin and begin[0] == self._ends[-1]:
+            begin.pop(0)
+            self._ends.pop()
+        self._starts += begin
+        self._ends += stop
+        self._edges = np.concatenate((starts, ends))
+
+    def add(self, begin: int, posterior: NDArray[np.float64], bits: NDArray[np.float64]) -> None:
+        """Add a window's values, and note the sums at the edges within it."""
+        stop = begin + len(posterior)
+        edges = self._edges
+        if self._known:
+            edges = edges[np.searchsorted(edges, begin) : np.searchsorted(edges, stop, "right")]
+        sums = [
+            np.concatenate(([total], total + np.cumsum(values)))
+            for total, values in zip(self._total, (posterior, bits), strict=True)
+        ]
+        for edge in edges.tolist():
+            self._at[edge] = (float(sums[0][edge - begin]), float(sums[1][edge - begin]))
+        self._total = (float(sums[0][-1]), float(sums[1][-1]))
+        self._at[stop] = self._total
+
+    def intervals(self) -> StateIntervals:
+        """Return the state's intervals."""
+        starts, ends = np.array(self._starts, np.int64), np.array(self._ends, np.int64)
+        return StateIntervals(starts, ends, np.full(len(starts), self._state, np.int64))
+
+    def between(self, start: int, end: int, length: int) -> tuple[float, float]:
+        """Return the sums over an interval, which may go round the end of a circle."""
+        if end > length:
+            one, other = self.between(start, length, length), self.between(0, end - length, length)
+            return one[0] + other[0], one[1] + other[1]
+        return self._at[end][0] - self._at[start][0], self._at[end][1] - self._at[start][1]

@@ -1,0 +1,79 @@
+"""Log-odds of every base between a state and the background."""
+
+import numpy as np
+from numpy.typing import NDArray
+
+from hmmseg.errors import ModelError
+from hmmseg.kernels.elementary import log_array
+from hmmseg.kernels.tokens import base_codes
+from hmmseg.model import Model
+from hmmseg.model.contexts import code_dtype
+from hmmseg.model.stationary import stationary_distribution
+from hmmseg.sequence.alphabet import reverse_complement
+from hmmseg.sequence.contigs import Contig
+
+__all__ = ["LogOdds"]
+
+_LN2 = float(np.log(2.0))
+_MOST_BITS = 1000.0
+"""Stands for infinity, so that sums stay numbers."""
+
+
+class LogOdds:
+    """log2 P(base | context, state) / P(base | context, background).
+
+    The background is the mixture of the states that are not reported, or of all other states
+    where every state is reported, weighted by their stationary shares.
+
+    Parameters
+    ----------
+    model
+        The model.
+    """
+
+    def __init__(self, model: Model) -> None:
+        self._model = model
+        self.bits = np.array([self._against_background(state) for state in range(model.states)])
+        """float64[state, code]"""
+
+    def _against_background(self, state: int) -> NDArray[np.float64]:
+        model = self._model
+        others = [i for i in model.background if i != state]
+        others = others or [i for i in range(model.states) if i != state]
+        if not others:
+            return np.zeros(model.emissions.shape[1])
+        try:
+            shares = stationary_distribution(model.transitions)[others]
+        except ModelError:
+            shares = np.ones(len(others))
+        shares = (
+            shares / shares.sum() if shares.sum() > 0 else np.full(len(others), 1 / len(others))
+        )
+        background = (shares[:, None] * model.emissions[others]).sum(axis=0)
+        with np.errstate(invalid="ignore"):
+            bits = (log_array(model.emissions[state]) - log_array(background)) / _LN2
+        return np.clip(np.where(np.isnan(bits), 0.0, bits), -_MOST_BITS, _MOST_BITS)
+
+    def window(self, contig: Contig, begin: int, stop: int) -> NDArray[np.float64]:
+        """Return float64[position, state] bits of a stretch of a contig.
+
+        For a symmetric model of order 1 or more they are the mean of both strands.
+        """
+        forward = self.bits[:, self._codes(contig.bases, contig.closed, begin, stop)].T
+        if not self._model.both_strands:
+            return forward
+        length, order = len(contig), self._model.order
+        # The reverse strand reads this stretch after the bases that follow it.
+        reach = np.arange(begin, stop + order)
+        reach = reach % length if contig.closed else reach[reach < length]
+        bases = reverse_complement(contig.bases[reach])
+        skipped = len(bases) - (stop - begin)
+        codes = self._codes(bases, False, skipped, len(bases))
+        return (forward + self.bits[:, codes].T[::-1]) / 2
+
+    def _codes(
+        self, bases: NDArray[np.uint8], closed: bool, begin: int, stop: int
+    ) -> NDArray[np.unsignedinteger]:
+        codes = np.empty(stop - begin, code_dtype(self._model.order))
+        base_codes(bases, self._model.order, closed, begin, stop, codes)
+        return codes

@@ -1,0 +1,65 @@
+"""Sequences with a known path, drawn from a model."""
+
+from collections.abc import Iterator, Sequence
+from typing import NamedTuple
+
+import numpy as np
+from numpy.typing import NDArray
+
+from hmmseg.kernels.sampling import draw
+from hmmseg.model import Model
+
+__all__ = ["Drawn", "simulate"]
+
+_CHUNK = 1 << 18
+
+
+class Drawn(NamedTuple):
+    """A sequence and the path that made it.
+
+    Attributes
+    ----------
+    bases : uint8[position]
+        0 to 3.
+    path : uint8[position]
+        States.
+    """
+
+    bases: NDArray[np.uint8]
+    path: NDArray[np.uint8]
+
+
+def simulate(model: Model, lengths: Sequence[int], seed: int) -> Iterator[Drawn]:
+    """Draw sequences of the given lengths.
+
+    Every sequence has random numbers of its own, so one does not change with the others'
+    lengths. The draws use uniform numbers of PCG64 only, which are the same everywhere.
+
+    Parameters
+    ----------
+    model
+        Where sequences come from. Each begins from its start, without context.
+    lengths
+        In bases.
+    seed
+        Any whole number from 0 up.
+
+    Yields
+    ------
+    Drawn
+        One for each length.
+    """
+    following = np.cumsum(np.vstack([model.transitions, model.start_probabilities]), axis=1)
+    emissions = np.cumsum(model.emissions[:, :-1].reshape(model.states, -1, 4), axis=2)
+    for number, length in enumerate(lengths):
+        random = np.random.Generator(np.random.PCG64(np.random.SeedSequence([seed, number])))
+        drawn = Drawn(np.empty(length, np.uint8), np.empty(length, np.uint8))
+        memory = np.array([model.states, 0, 0], dtype=np.int64)
+        for begin in range(0, length, _CHUNK):
+            piece = slice(begin, min(begin + _CHUNK, length))
+            uniforms = random.random((piece.stop - piece.start, 2))
+            draw(
+                following, emissions, model.order, memory, uniforms,
+                drawn.path[piece], drawn.bases[piece],
+            )  # fmt: skip
+        yield drawn

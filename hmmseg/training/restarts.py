@@ -1,0 +1,132 @@
+"""Several fits from different starts, the best of which is kept."""
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from hmmseg.errors import TrainingError
+from hmmseg.inference.streams import Corpus
+from hmmseg.model import Model
+from hmmseg.training.baum_welch import Fit, fit
+from hmmseg.training.maximisation import Prior
+from hmmseg.training.starts import named_by_gc, perturbed, placed_start
+
+__all__ = ["Plan", "Restarts", "fit_restarts"]
+
+
+@dataclass(frozen=True)
+class Plan:
+    """What to fit and how.
+
+    Parameters
+    ----------
+    init
+        Where the first fit starts; the others start from perturbations of it. None: every fit
+        starts at random from ``states``, ``order``, ``symmetric`` and ``start_kind``.
+    states, order, symmetric, start_kind
+        Of a model without ``init``.
+    restarts
+        How many fits.
+    seed
+        Of all random draws.
+    max_iterations, tolerance
+        As for :func:`~hmmseg.training.baum_welch.fit`.
+    pseudocount
+        As for :class:`~hmmseg.training.maximisation.Prior`.
+    """
+
+    init: Model | None = None
+    states: int = 2
+    order: int = 0
+    symmetric: bool = True
+    start_kind: str = "stationary"
+    restarts: int = 1
+    seed: int = 1
+    max_iterations: int = 500
+    tolerance: float = 1e-8
+    pseudocount: float = 0.0
+
+    def start(self, number: int, corpus: Corpus) -> Model:
+        """Return the model from which one fit starts."""
+        seeds = np.random.SeedSequence([self.seed, number])
+        random = np.random.Generator(np.random.PCG64(seeds))
+        if self.init is not None:
+            return self.init if number == 0 else perturbed(self.init, random)
+        return placed_start(
+            corpus.contigs, self.states, self.order, self.symmetric, self.start_kind, random
+        )  # fmt: skip
+
+    def finish(self, model: Model) -> Model:
+        """Return the model with its states named."""
+        return model if self.init is not None else named_by_gc(model)
+
+
+@dataclass(frozen=True, eq=False)
+class Restarts:
+    """All fits, and which of them is best.
+
+    Attributes
+    ----------
+    fits : tuple of Fit
+        In the order of their starts.
+    best : int
+        The one with the highest objective; the first of equals.
+    model : Model
+        The best one's, its states named.
+    """
+
+    fits: tuple[Fit, ...]
+    best: int
+    model: Model
+
+
+def fit_restarts(
+    plan: Plan,
+    corpus: Corpus,
+    threads: int = 1,
+    watch: Callable[[int, int, float], None] | None = None,
+) -> Restarts:
+    """Fit from every start of a plan and keep the best.
+
+    Parameters
+    ----------
+    plan
+        What to fit.
+    corpus
+        The sequence, prepared for the plan's order.
+    threads
+        Threads to use; the result does not depend on it.
+    watch
+        Called with the fit's number, the iteration and bits per base.
+
+    Raises
+    ------
+    TrainingError
+        There is nothing to train on.
+    """
+    if not corpus.contigs:
+        raise TrainingError("there is no sequence to train on; check the selection of records")
+    fits: Sequence[Fit] = [
+        fit(
+            plan.start(number, corpus),
+            corpus,
+            max_iterations=plan.max_iterations,
+            tolerance=plan.tolerance,
+            prior=Prior(plan.pseudocount),
+            threads=threads,
+            watch=None if watch is None else _numbered(watch, number),
+        )
+        for number in range(plan.restarts)
+    ]
+    best = int(np.argmax([found.objective for found in fits]))
+    return Restarts(tuple(fits), best, plan.finish(fits[best].model))
+
+
+def _numbered(
+    watch: Callable[[int, int, float], None], number: int
+) -> Callable[[int, float], None]:
+    def told(iteration: int, bits: float) -> None:
+        watch(number, iteration, bits)
+
+    return told

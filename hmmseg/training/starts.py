@@ -1,0 +1,230 @@
+"""Where Baum-Welch begins: parameters placed by the sequence itself, and perturbed ones."""
+
+from collections.abc import Sequence
+
+import numpy as np
+from numpy.typing import NDArray
+
+from hmmseg.kernels.elementary import exp
+from hmmseg.kernels.tokens import base_codes
+from hmmseg.model import Model
+from hmmseg.model.contexts import (
+    code_dtype,
+    code_offset,
+    missing_code,
+    reverse_complement_words,
+)
+from hmmseg.model.parameters import FREE, STATIONARY
+from hmmseg.sequence.alphabet import MISSING
+from hmmseg.sequence.contigs import Contig
+
+__all__ = ["named_by_gc", "perturbed", "placed_start", "word_counts"]
+
+_WINDOW = 500
+"""Bases in a window whose GC is looked at."""
+
+_SHORTEST, _SPREAD = 100.0, 30.0
+"""Expected lengths of a random start lie between 100 and 3,000 bases."""
+
+_JITTER = 0.5
+"""A perturbed word probability is multiplied by up to exp(0.5) either way."""
+
+
+def word_counts(contigs: Sequence[Contig], order: int) -> NDArray[np.float64]:
+    """Return float64[4**(order + 1)] counts of words of ``order + 1`` known bases."""
+    counts = np.zeros(missing_code(order) + 1, np.int64)
+    for contig in contigs:
+        for begin in range(0, len(contig), 1 << 22):
+            stop = min(begin + (1 << 22), len(contig))
+            codes = np.empty(stop - begin, code_dtype(order))
+            base_codes(contig.bases, order, contig.closed, begin, stop, codes)
+            counts += np.bincount(codes, minlength=len(counts))
+    return counts[code_offset(order) : missing_code(order)].astype(float)
+
+
+def _window_gc(contigs: Sequence[Contig]) -> NDArray[np.float64]:
+    """Return the GC of windows of known bases, of all contigs, sorted."""
+    shares = []
+    for contig in contigs:
+        cut = max(len(contig) // _WINDOW, 1)
+        for piece in np.array_split(contig.bases, cut) if cut < 1 << 16 else _even(contig.bases):
+            known = np.count_nonzero(piece != MISSING)
+            if known >= min(_WINDOW // 2, len(piece)):
+                strong = np.count_nonzero((piece == 1) | (piece == 2))
+                shares.append(strong / max(known, 1))
+    return np.sort(np.array(shares))
+
+
+def _even(bases: NDArray[np.uint8]) -> list[NDArray[np.uint8]]:
+    """Return every n-th window of a long contig: 65,536 of them tell enough."""
+    step = len(bases) // (1 << 16)
+    return [bases[at : at + _WINDOW] for at in range(0, len(bases) - _WINDOW, step)]
+
+
+def _tilted(words: NDArray[np.float64], gc: float, order: int) -> NDArray[np.float64]:
+    """Return a word table whose bases have the given GC, in other respects like the counts."""
+    table = (words + 1) / (words.sum() + words.size)
+    bases = table.reshape(-1, 4).sum(axis=0)
+    own = bases[1] + bases[2]
+    factor = np.array([(1 - gc) / (1 - own), gc / own, gc / own, (1 - gc) / (1 - own)])
+    for place in range(order + 1):
+        table = (table.reshape(4**place, 4, -1) * factor[None, :, None]).reshape(-1)
+    return table / table.sum()
+
+
+def placed_start(
+    contigs: Sequence[Contig],
+    states: int,
+    order: int,
+    symmetric: bool,
+    start_kind: str,
+    random: np.random.Generator,
+) -> Model:
+    """Return a random starting model whose GC levels span those of the sequence.
+
+    Parameters
+    ----------
+    contigs
+        The sequence.
+    states, order, symmetric, start_kind
+        As of :class:`~hmmseg.model.parameters.Model`.
+    random
+        Where GC levels, expected lengths and words get their spread from.
+
+    Returns
+    -------
+    Model
+        States ordered by GC, at random quantiles of the GC of windows of 500 bases.
+    """
+    words = word_counts(contigs, order)
+    if symmetric:
+        words = (words + words[reverse_complement_words(order + 1)]) / 2
+    windows = _window_gc(contigs)
+    quantiles = (np.arange(states) + random.random(states)) / states
+    at = np.minimum((quantiles * len(windows)).astype(int), max(len(windows) - 1, 0))
+    levels = np.clip(windows[at] if len(windows) else np.full(states, 0.5), 0.02, 0.98)
+    joint = np.array([_tilted(words, float(level), order) for level in levels])
+    lengths = np.array([_SHORTEST * exp(u * _log(_SPREAD)) for u in random.random(states)])
+    names = tuple(f"state-{i + 1}" for i in range(states))
+    model = Model(
+        names=names,
+        reported=(True,) * states,
+        order=order,
+        symmetric=False,
+        start_kind=STATIONARY,
+        transitions=_switching(lengths),
+        joint=joint,
+    )
+    return _with(perturbed(model, random, words_only=True), symmetric, start_kind)
+
+
+def _log(value: float) -> float:
+    return float(np.log(value))
+
+
+def _switching(lengths: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Return transitions with these expected lengths that leave for every state alike.
+
+    All flows between states are then equal, so the chain is reversible.
+    """
+    states = len(lengths)
+    transitions = np.diag(1 - 1 / lengths)
+    if states == 1:
+        return np.ones((1, 1))
+    for i in range(states):
+        for j in range(states):
+            if i != j:
+                transitions[i, j] = 1 / (lengths[i] * (states - 1))
+    return transitions
+
+
+def perturbed(model: Model, random: np.random.Generator, words_only: bool = False) -> Model:
+    """Return a model with parameters moved at random, its ties kept.
+
+    Parameters
+    ----------
+    model
+        Where to start from.
+    random
+        Source of uniform numbers.
+    words_only
+        Leave the transitions as they are.
+    """
+
+    def factors(shape: tuple[int, ...]) -> NDArray[np.float64]:
+        uniforms = random.random(shape).ravel()
+        return np.array([exp(_JITTER * (2 * u - 1)) for u in uniforms]).reshape(shape)
+
+    joint = model.joint * factors(model.joint.shape)
+    transitions, start = model.transitions, model.start_probabilities
+    if model.symmetric:
+        joint = (joint + joint[:, reverse_complement_words(model.order + 1)]) / 2
+    if not words_only and model.states > 1:
+        flow = start[:, None] * transitions if model.symmetric else transitions
+        leaving = factors(flow.shape)
+        leaving = (leaving + leaving.T) / 2 if model.symmetric else leaving
+        np.fill_diagonal(leaving, 1.0)
+        flow = flow * leaving
+        transitions = flow / flow.sum(axis=1, keepdims=True)
+    return Model(
+        names=model.names,
+        reported=model.reported,
+        order=model.order,
+        symmetric=model.symmetric,
+        start_kind=model.start_kind,
+        transitions=transitions,
+        joint=joint / joint.sum(axis=1, keepdims=True),
+        start=start,
+    )
+
+
+def _with(model: Model, symmetric: bool, start_kind: str) -> Model:
+    """Return the model with ties, a free start beginning even."""
+    joint = model.joint
+    if symmetric:
+        joint = (joint + joint[:, reverse_complement_words(model.order + 1)]) / 2
+    return Model(
+        names=model.names,
+        reported=model.reported,
+        order=model.order,
+        symmetric=symmetric,
+        start_kind=start_kind,
+        transitions=model.transitions,
+        joint=joint,
+        start=np.full(model.states, 1 / model.states) if start_kind == FREE else None,
+    )
+
+
+def named_by_gc(model: Model) -> Model:
+    """Return a model whose states are ordered and named by GC.
+
+    The most frequent state is background, all others are reported; a single state is a chain
+    and is not reported.
+    """
+    order = np.argsort(model.gc, kind="stable")
+    count = model.states
+    known = {1: ("chain",), 2: ("low-gc", "high-gc"), 3: ("low-gc", "mid-gc", "high-gc")}
+    names = known.get(count, tuple(f"gc-{i + 1}" for i in range(count)))
+    share = model.start_probabilities
+    if model.start_kind == FREE:
+        share = _long_run_share(model)
+    background = int(np.argmax(share[order]))
+    return Model(
+        names=names,
+        reported=tuple(i != background for i in range(count)),
+        order=model.order,
+        symmetric=model.symmetric,
+        start_kind=model.start_kind,
+        transitions=model.transitions[np.ix_(order, order)],
+        joint=model.joint[order],
+        start=model.start_probabilities[order],
+    )
+
+
+def _long_run_share(model: Model) -> NDArray[np.float64]:
+    """Return the share of each state after many steps from the start."""
+    power = model.transitions
+    for _ in range(40):
+        product = (power[:, :, None] * power[None, :, :]).sum(axis=1)
+        power = product / product.sum(axis=1, keepdims=True)
+    return (model.start_probabilities[:, None] * power).sum(axis=0)
