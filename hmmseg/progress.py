@@ -6,7 +6,7 @@ from collections.abc import Callable
 from types import TracebackType
 from typing import Any, Self
 
-__all__ = ["Progress"]
+__all__ = ["Progress", "warn"]
 
 LINE_INTERVAL = 30.0
 BAR_DELAY = 1.0
@@ -100,3 +100,8 @@ class Progress:
         print(f"{line}, {note}" if note else line, file=sys.stderr, flush=True)
         self._last_line = now
         self._lines += 1
+
+
+def warn(message: str) -> None:
+    """Tell the user something that is no error, in one line on standard error."""
+    print(f"hmmseg: warning: {message}", file=sys.stderr, flush=True)

@@ -10,7 +10,9 @@ import numpy as np
 
 from hmmseg.kernels.compiling import kernel
 
-__all__ = ["exp", "log", "log_array", "power_of_two"]
+__all__ = ["LN2", "exp", "log", "log_array", "power_of_two"]
+
+LN2 = 0.6931471805599453
 
 _LN2_HIGH = 0.693147180369123816490e00
 """The leading bits of ln 2: a multiple of it by an exponent is exact."""
@@ -63,7 +65,7 @@ def exp(x):
         return 0.0
     if x > _EXP_OVERFLOW:
         return np.inf
-    n = math.floor(x / math.log(2.0) + 0.5)
+    n = math.floor(x / LN2 + 0.5)
     r = (x - n * _LN2_HIGH) - n * _LN2_LOW
     # |r| <= 0.347: fourteen terms of the Taylor series reach the last place.
     total = 1.0

@@ -4,7 +4,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hmmseg.errors import ModelError
-from hmmseg.kernels.elementary import log_array
+from hmmseg.kernels.elementary import LN2, log_array
 from hmmseg.kernels.tokens import base_codes
 from hmmseg.model import Model
 from hmmseg.model.contexts import code_dtype
@@ -14,7 +14,6 @@ from hmmseg.sequence.contigs import Contig
 
 __all__ = ["LogOdds"]
 
-_LN2 = float(np.log(2.0))
 _MOST_BITS = 1000.0
 """Stands for infinity, so that sums stay numbers."""
 
@@ -51,7 +50,7 @@ class LogOdds:
         )
         background = (shares[:, None] * model.emissions[others]).sum(axis=0)
         with np.errstate(invalid="ignore"):
-            bits = (log_array(model.emissions[state]) - log_array(background)) / _LN2
+            bits = (log_array(model.emissions[state]) - log_array(background)) / LN2
         return np.clip(np.where(np.isnan(bits), 0.0, bits), -_MOST_BITS, _MOST_BITS)
 
     def window(self, contig: Contig, begin: int, stop: int) -> NDArray[np.float64]:

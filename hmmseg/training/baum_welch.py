@@ -6,7 +6,7 @@ from dataclasses import dataclass
 from hmmseg.errors import TrainingError
 from hmmseg.inference.expectation import Counts, expect
 from hmmseg.inference.streams import Corpus
-from hmmseg.kernels.elementary import log
+from hmmseg.kernels.elementary import LN2
 from hmmseg.model import Model
 from hmmseg.model.parameters import FREE
 from hmmseg.sequence.contigs import Contig
@@ -16,8 +16,6 @@ __all__ = ["Fit", "fit", "step"]
 
 _ROUNDING = 1e-11
 """Nats per base by which rounding alone may make the objective fall."""
-
-_LN2 = float(log(2.0))
 
 _START_GROWTH = 1.01
 """A free start that still grows by this factor an iteration has not arrived."""
@@ -55,7 +53,7 @@ class Fit:
     @property
     def bits_per_base(self) -> float:
         """Of the final model."""
-        return -self.log_likelihood / _LN2 / self.bases
+        return -self.log_likelihood / LN2 / self.bases
 
 
 def step(
@@ -133,7 +131,7 @@ def fit(
         reached = counts.log_likelihood + log_prior(model, prior)
         trace.append(counts.log_likelihood)
         if watch is not None:
-            watch(len(trace) - 1, -counts.log_likelihood / _LN2 / bases)
+            watch(len(trace) - 1, -counts.log_likelihood / LN2 / bases)
         gain = reached - objective
         if gain < -_ROUNDING * bases:
             raise TrainingError(
@@ -141,7 +139,7 @@ def fit(
                 "not happen; please report it with the model and the sequence"
             )
         objective = reached
-        converged = gain < tolerance * _LN2 * bases and not _start_still_moves(model, counts)
+        converged = gain < tolerance * LN2 * bases and not _start_still_moves(model, counts)
         if converged or len(trace) > max_iterations:
             return Fit(model, tuple(trace), objective, converged, bases)
         model = maximise(model, counts, corpus.closed_lengths, prior)

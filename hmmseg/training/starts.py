@@ -18,13 +18,15 @@ from hmmseg.model.parameters import FREE, STATIONARY
 from hmmseg.sequence.alphabet import MISSING
 from hmmseg.sequence.contigs import Contig
 
-__all__ = ["named_by_gc", "perturbed", "placed_start", "word_counts"]
+__all__ = ["long_run_share", "named_by_gc", "perturbed", "placed_start", "word_counts"]
 
 _WINDOW = 500
 """Bases in a window whose GC is looked at."""
 
-_SHORTEST, _SPREAD = 100.0, 30.0
-"""Expected lengths of a random start lie between 100 and 3,000 bases."""
+_MOST_WINDOWS = 1 << 16
+
+_SHORTEST, _LOG_SPREAD = 100.0, 3.4
+"""Expected lengths of a random start lie between 100 and 100 exp(3.4), about 3,000 bases."""
 
 _JITTER = 0.5
 """A perturbed word probability is multiplied by up to exp(0.5) either way."""
@@ -43,22 +45,16 @@ def word_counts(contigs: Sequence[Contig], order: int) -> NDArray[np.float64]:
 
 
 def _window_gc(contigs: Sequence[Contig]) -> NDArray[np.float64]:
-    """Return the GC of windows of known bases, of all contigs, sorted."""
+    """Return the GC of up to about 65,536 windows, evenly spread over all contigs, sorted."""
+    step = max(_WINDOW, sum(len(contig) for contig in contigs) // _MOST_WINDOWS)
     shares = []
     for contig in contigs:
-        cut = max(len(contig) // _WINDOW, 1)
-        for piece in np.array_split(contig.bases, cut) if cut < 1 << 16 else _even(contig.bases):
-            known = np.count_nonzero(piece != MISSING)
-            if known >= min(_WINDOW // 2, len(piece)):
-                strong = np.count_nonzero((piece == 1) | (piece == 2))
-                shares.append(strong / max(known, 1))
+        for at in range(0, len(contig), step):
+            piece = contig.bases[at : at + _WINDOW]
+            known = int(np.count_nonzero(piece != MISSING))
+            if 2 * known >= min(_WINDOW, len(contig)):
+                shares.append(int(np.count_nonzero((piece == 1) | (piece == 2))) / known)
     return np.sort(np.array(shares))
-
-
-def _even(bases: NDArray[np.uint8]) -> list[NDArray[np.uint8]]:
-    """Return every n-th window of a long contig: 65,536 of them tell enough."""
-    step = len(bases) // (1 << 16)
-    return [bases[at : at + _WINDOW] for at in range(0, len(bases) - _WINDOW, step)]
 
 
 def _tilted(words: NDArray[np.float64], gc: float, order: int) -> NDArray[np.float64]:
@@ -104,7 +100,7 @@ def placed_start(
     at = np.minimum((quantiles * len(windows)).astype(int), max(len(windows) - 1, 0))
     levels = np.clip(windows[at] if len(windows) else np.full(states, 0.5), 0.02, 0.98)
     joint = np.array([_tilted(words, float(level), order) for level in levels])
-    lengths = np.array([_SHORTEST * exp(u * _log(_SPREAD)) for u in random.random(states)])
+    lengths = np.array([_SHORTEST * exp(u * _LOG_SPREAD) for u in random.random(states)])
     names = tuple(f"state-{i + 1}" for i in range(states))
     model = Model(
         names=names,
@@ -116,10 +112,6 @@ def placed_start(
         joint=joint,
     )
     return _with(perturbed(model, random, words_only=True), symmetric, start_kind)
-
-
-def _log(value: float) -> float:
-    return float(np.log(value))
 
 
 def _switching(lengths: NDArray[np.float64]) -> NDArray[np.float64]:
@@ -207,7 +199,7 @@ def named_by_gc(model: Model) -> Model:
     names = known.get(count, tuple(f"gc-{i + 1}" for i in range(count)))
     share = model.start_probabilities
     if model.start_kind == FREE:
-        share = _long_run_share(model)
+        share = long_run_share(model)
     background = int(np.argmax(share[order]))
     return Model(
         names=names,
@@ -221,7 +213,7 @@ def named_by_gc(model: Model) -> Model:
     )
 
 
-def _long_run_share(model: Model) -> NDArray[np.float64]:
+def long_run_share(model: Model) -> NDArray[np.float64]:
     """Return the share of each state after many steps from the start."""
     power = model.transitions
     for _ in range(40):

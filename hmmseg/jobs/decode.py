@@ -1,0 +1,221 @@
+"""The command ``decode``: call regions and write posteriors."""
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from hmmseg.errors import ModelError
+from hmmseg.jobs.sources import Sources
+from hmmseg.model import Model, load_model
+from hmmseg.outputs import PROVENANCE, check_target, whole_folder, write_json
+from hmmseg.progress import Progress, warn
+from hmmseg.provenance import write_provenance
+from hmmseg.regions.calling import Caller, Calls
+from hmmseg.regions.intervals import Filters
+from hmmseg.regions.table import number_regions, regions_of_record
+from hmmseg.sequence.contigs import Contig
+from hmmseg.sequence.reading import Record
+from hmmseg.tracks.bed import invalid_bed_names, write_regions_bed
+from hmmseg.tracks.gff3 import write_regions_gff3
+from hmmseg.tracks.sizes import write_chrom_sizes
+from hmmseg.tracks.spool import SpooledTrack
+from hmmseg.tracks.table import write_regions_table
+
+__all__ = ["Summary", "decode", "track_name", "write_result"]
+
+
+@dataclass(frozen=True)
+class Summary:
+    """What a folder of calls holds, in numbers.
+
+    Attributes
+    ----------
+    record_lengths : mapping
+        Of every record, in order.
+    circular : tuple of str
+        Circular records.
+    skipped : tuple of str
+        Records without a known base outside gaps.
+    contigs, decoded_bases : int
+        What was decoded.
+    states : tuple of str
+        Reported states.
+    """
+
+    record_lengths: Mapping[str, int]
+    circular: tuple[str, ...]
+    skipped: tuple[str, ...]
+    contigs: int
+    decoded_bases: int
+    states: tuple[str, ...]
+
+    def to_dict(self, table: pd.DataFrame) -> dict[str, Any]:
+        """Return the document ``summary.json``."""
+        regions = {}
+        for state in self.states:
+            lengths = table.loc[table["state"] == state, "length"]
+            bases = int(lengths.sum())
+            regions[state] = {
+                "count": len(lengths),
+                "bases": bases,
+                "share": bases / self.decoded_bases if self.decoded_bases else 0.0,
+            }
+        return {
+            "format": "hmmseg-calls",
+            "version": 1,
+            "records": len(self.record_lengths),
+            "bases": sum(self.record_lengths.values()),
+            "circular_records": list(self.circular),
+            "skipped_records": list(self.skipped),
+            "contigs": self.contigs,
+            "decoded_bases": self.decoded_bases,
+            "regions": regions,
+        }
+
+
+def track_name(state: str) -> str:
+    """Return the file name of a state's posterior track."""
+    return f"{state}.posterior.bw"
+
+
+def decode(
+    sources: Sources,
+    model_path: str,
+    output: str,
+    *,
+    decoder: str,
+    threshold: float,
+    filters: Filters,
+    threads: int,
+    force: bool,
+) -> dict[str, Any]:
+    """Call regions of every record and write the folder of results.
+
+    Parameters
+    ----------
+    sources
+        The sequence.
+    model_path
+        A model document.
+    output
+        The folder to write.
+    decoder, threshold, filters
+        As of :class:`~hmmseg.regions.calling.Caller`.
+    threads
+        Threads to use; the result does not depend on it.
+    force
+        Replace an earlier result.
+
+    Returns
+    -------
+    dict
+        The document ``summary.json``.
+    """
+    check_target(output, force)
+    model = load_model(model_path)
+    caller = Caller(model, decoder, threshold, filters, threads)
+    if not caller.states:
+        raise ModelError(f"{model_path}: no state is reported; set 'reported' of one to true")
+    parameters = {
+        **sources.parameters(),
+        "model": Path(model_path),
+        "decoder": decoder,
+        "threshold": threshold if decoder == "posterior" else None,
+        **filters._asdict(),
+    }
+    with whole_folder(output, force=force) as folder:
+        result, table = _Run(caller, folder).over(sources)
+        summary = write_result(folder, result, table)
+        written = sorted(path for path in folder.iterdir() if path.name != PROVENANCE)
+        inputs = [*sources.files(), model_path]
+        write_provenance(folder, "decode", parameters, None, inputs, written)
+    return summary
+
+
+def write_result(folder: Path, result: Summary, table: pd.DataFrame) -> dict[str, Any]:
+    """Write everything but the tracks and the provenance; return the summary."""
+    lengths = result.record_lengths
+    if names := invalid_bed_names(lengths):
+        warn(
+            f"{len(names)} record names, {names[0]} first, hold other characters than the BED "
+            "specification's A-Z a-z 0-9 _; most programs read them all the same"
+        )
+    write_chrom_sizes(folder / "chrom.sizes", lengths)
+    write_regions_bed(folder / "regions.bed", table, lengths)
+    write_regions_table(folder / "regions.tsv", table)
+    write_regions_gff3(folder / "regions.gff3", table, lengths, set(result.circular))
+    summary = result.to_dict(table)
+    write_json(folder / "summary.json", summary)
+    return summary
+
+
+class _Run:
+    """One run over all records, which collects what the result needs."""
+
+    def __init__(self, caller: Caller, folder: Path) -> None:
+        self._caller = caller
+        self._model: Model = caller.model
+        self._tracks = {
+            state: SpooledTrack(folder / track_name(self._model.names[state]))
+            for state in caller.states
+        }
+        self._lengths: dict[str, int] = {}
+        self._circular: list[str] = []
+        self._skipped: list[str] = []
+        self._contigs = 0
+        self._decoded = 0
+        self._tables: list[pd.DataFrame] = []
+
+    def over(self, sources: Sources) -> tuple[Summary, pd.DataFrame]:
+        """Call all records; write the tracks; return what was found."""
+        with Progress(0, "decoding", "bases") as progress:
+            for record, contigs in sources.read_contigs():
+                self._record(record, contigs)
+                progress.advance(len(record), record.name)
+        for track in self._tracks.values():
+            track.finish(self._lengths)
+        result = Summary(
+            record_lengths=self._lengths,
+            circular=tuple(self._circular),
+            skipped=tuple(self._skipped),
+            contigs=self._contigs,
+            decoded_bases=self._decoded,
+            states=tuple(self._model.names[state] for state in self._caller.states),
+        )
+        return result, number_regions(self._tables)
+
+    def _record(self, record: Record, contigs: list[Contig]) -> None:
+        self._lengths[record.name] = len(record)
+        if record.circular:
+            self._circular.append(record.name)
+        if not contigs:
+            self._skipped.append(record.name)
+            return
+        calls: list[tuple[Contig, Calls]] = []
+        for contig in contigs:
+            calls.append((contig, self._caller.call(contig, self._follower(contig))))
+            self._contigs += 1
+            self._decoded += len(contig)
+        self._tables.append(regions_of_record(calls, self._model.names))
+
+    def _follower(self, contig: Contig) -> Callable[[int, NDArray[np.float64]], None]:
+        """Return what takes the posteriors of a contig to the tracks."""
+
+        def follow(begin: int, posterior: NDArray[np.float64]) -> None:
+            start = contig.start + begin
+            # A contig across the origin goes on at the record's first position.
+            cut = min(max(contig.record_length - start, 0), len(posterior))
+            for state, track in self._tracks.items():
+                values = np.ascontiguousarray(posterior[:, state])
+                if cut > 0:
+                    track.add(contig.record, start, values[:cut])
+                if cut < len(values):
+                    beyond = start + cut - contig.record_length
+                    track.add(contig.record, beyond, values[cut:])
+
+        return follow

@@ -1,0 +1,92 @@
+"""Posterior tracks of records whose number and lengths are not known before they have been read.
+
+A bigWig begins with the lengths of all records, but records may come from standard input, one
+at a time. Runs therefore wait in a plain temporary file until the last record has been seen.
+"""
+
+from collections.abc import Iterator, Mapping
+from pathlib import Path
+from typing import NamedTuple
+
+import numpy as np
+from numpy.typing import NDArray
+
+from hmmseg.tracks.bigwig import LEVELS, PosteriorTrack, rounded_runs
+
+__all__ = ["SpooledTrack"]
+
+_RUN = np.dtype([("start", "<i8"), ("end", "<i8"), ("level", "<u2")])
+_AT_ONCE = 1 << 20
+
+
+class _Segment(NamedTuple):
+    record: str
+    start: int
+    first: int
+    runs: int
+
+
+class SpooledTrack:
+    """Collects posteriors in any order, and writes them as a bigWig in the order of records.
+
+    Parameters
+    ----------
+    path
+        The bigWig to be; the temporary file stands beside it until :meth:`finish`.
+    """
+
+    def __init__(self, path: Path) -> None:
+        self._path = path
+        self._spool = path.with_name(f".{path.name}.runs")
+        self._file = self._spool.open("wb")
+        self._segments: list[_Segment] = []
+        self._written = 0
+
+    def add(self, record: str, start: int, posterior: NDArray[np.float64]) -> None:
+        """Add the posterior of consecutive positions of a record, from ``start`` on.
+
+        Parameters
+        ----------
+        record
+            Its name.
+        start
+            Position of the first value.
+        posterior
+            float64[position].
+        """
+        starts, ends, values = rounded_runs(posterior)
+        runs = np.empty(len(starts), _RUN)
+        runs["start"], runs["end"] = starts + start, ends + start
+        runs["level"] = np.rint(values * LEVELS)
+        runs.tofile(self._file)
+        self._segments.append(_Segment(record, start, self._written, len(runs)))
+        self._written += len(runs)
+
+    def finish(self, record_lengths: Mapping[str, int]) -> None:
+        """Write the bigWig.
+
+        Parameters
+        ----------
+        record_lengths
+            Length of every record in bases, in order.
+
+        Raises
+        ------
+        OutputError
+            The track cannot be written, or does not read back.
+        """
+        self._file.close()
+        rank = {name: number for number, name in enumerate(record_lengths)}
+        ordered = sorted(self._segments, key=lambda segment: (rank[segment.record], segment.start))
+        with PosteriorTrack(self._path, record_lengths) as track:
+            for record, runs in self._pieces(ordered):
+                track.add(record, runs["start"], runs["end"], runs["level"] / LEVELS)
+        self._spool.unlink()
+
+    def _pieces(self, segments: list[_Segment]) -> Iterator[tuple[str, NDArray[np.void]]]:
+        with self._spool.open("rb") as file:
+            for segment in segments:
+                for skipped in range(0, segment.runs, _AT_ONCE):
+                    file.seek((segment.first + skipped) * _RUN.itemsize)
+                    count = min(_AT_ONCE, segment.runs - skipped)
+                    yield segment.record, np.fromfile(file, _RUN, count)
