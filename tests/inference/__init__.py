@@ -1,0 +1,1 @@
+"""Tests of inference against independent computations."""

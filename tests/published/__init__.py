@@ -1,0 +1,1 @@
+"""Worked examples from the literature."""

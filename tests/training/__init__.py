@@ -1,0 +1,1 @@
+"""Tests of training against independent computations."""
