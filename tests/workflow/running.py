@@ -103,14 +103,14 @@ def dry_runs(calls: Sequence[Sequence[str]]) -> list[tuple[int, str]]:
     return list(zip(map(int, codes), messages, strict=True))
 
 
-def bed_bases(path: Path, name: str) -> set[tuple[str, int]]:
-    """Record and position of every base in the intervals of a BED file with this name.
+def bed_bases(path: Path, name: str = "") -> set[tuple[str, int]]:
+    """Record and position of every base in a BED file, or in its intervals of one name.
 
     The name of a called region is that of its state, an underscore and a number.
     """
     found: set[tuple[str, int]] = set()
     for line in path.read_text().splitlines():
-        record, start, end, label = line.split("\t")[:4]
-        if label.rsplit("_", 1)[0] == name or label == name:
+        record, start, end, *rest = line.split("\t")
+        if not name or name in (rest[0], rest[0].rsplit("_", 1)[0]):
             found.update((record, position) for position in range(int(start), int(end)))
     return found

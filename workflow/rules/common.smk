@@ -133,6 +133,8 @@ def check_row(row, cells):
         if column in cells and cells.get("init", config["defaults"]["init"]):
             raise sheet_error(row, column, "comes with the start model; leave it blank")
     settings = {**config["defaults"], **cells}
+    if settings["init"] is not None:
+        return
     if settings["start"] == "free" and settings["strands"] == "symmetric":
         raise sheet_error(row, "start", "free needs strands: stranded")
 

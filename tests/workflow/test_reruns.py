@@ -1,0 +1,58 @@
+"""What a second run does, and what it does after a change."""
+
+import os
+from collections.abc import Iterator
+from contextlib import contextmanager
+from pathlib import Path
+
+import pytest
+
+from tests.workflow.running import Project
+
+pytestmark = pytest.mark.xdist_group("workflow")
+
+
+@contextmanager
+def touched(path: Path) -> Iterator[None]:
+    """Give a file the present time, and its old time back afterwards."""
+    before = path.stat()
+    os.utime(path)
+    yield
+    os.utime(path, ns=(before.st_atime_ns, before.st_mtime_ns))
+
+
+def test_a_second_run_does_nothing(finished: Project) -> None:
+    assert "Nothing to be done" in finished.snakemake("--dry-run")
+    before = {path: path.stat().st_mtime_ns for path in finished.folder.glob("results/**/*")}
+    assert "Nothing to be done" in finished.snakemake()
+    after = {path: path.stat().st_mtime_ns for path in finished.folder.glob("results/**/*")}
+    assert after == before
+
+
+def test_a_touched_assembly_reruns_only_its_part(finished: Project) -> None:
+    with touched(finished.folder / "NC_001416.fa.gz"):
+        planned = finished.planned()
+    assert {assembly for rule, assembly in planned if rule != "summary"} == {"lambda"}
+    assert {rule for rule, _ in planned} >= {"survey", "train", "batches", "gather", "summary"}
+
+
+def test_a_touched_start_model_trains_and_calls_again_but_surveys_nothing(
+    finished: Project,
+) -> None:
+    with touched(finished.folder / "start.json"):
+        planned = finished.planned()
+    assert {assembly for rule, assembly in planned if rule != "summary"} == {"demo"}
+    assert {rule for rule, _ in planned} == {"train", "decode", "gather", "summary"}
+
+
+def test_a_changed_setting_of_the_calls_does_not_train_again(finished: Project) -> None:
+    config = finished.folder / "config.yaml"
+    before = config.read_text()
+    config.write_text(before + "defaults: {min_length: 50}\n")
+    planned = finished.planned()
+    config.write_text(before)
+    assert {rule for rule, _ in planned} == {"decode", "gather", "summary"}
+
+
+def test_batches_leave_nothing_behind(finished: Project) -> None:
+    assert not list(finished.folder.glob("results/*/parts"))
