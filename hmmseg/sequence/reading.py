@@ -207,7 +207,7 @@ def _read_fasta(source: TextSource) -> Iterator[Record]:
     _check_fasta_head(source)
     headers: deque[int] = deque()
     lines = _joined_lines(source, headers)
-    parsed: Iterator[tuple[str, str]] = SimpleFastaParser(lines)  # type: ignore[no-untyped-call]
+    parsed: Iterator[tuple[str, str]] = SimpleFastaParser(lines)  # type: ignore[no-untyped-call, unused-ignore]
     for title, text in parsed:
         where = f"{source.name}:{headers.popleft()}"
         if not title.strip():
@@ -227,20 +227,22 @@ def _read_fasta(source: TextSource) -> Iterator[Record]:
 
 def _parsed_genbank(source: TextSource) -> Iterator[SeqRecord]:
     """Iterate over Biopython's records, its faults explained."""
-    parsed: Iterator[SeqRecord] = SeqIO.parse(source.stream, "genbank")  # type: ignore[no-untyped-call]
+    parsed: Iterator[SeqRecord] = SeqIO.parse(source.stream, "genbank")  # type: ignore[no-untyped-call, unused-ignore]
     while True:
         with warnings.catch_warnings():
             warnings.simplefilter("ignore", BiopythonWarning)
-            # Less sequence than the LOCUS line promises is no small matter.
-            warnings.filterwarnings("error", message="Expected sequence length")
+            # Less sequence than the LOCUS line promises, or no end mark, is no small matter.
+            warnings.filterwarnings("error", message="Expected sequence length|Premature end")
             try:
                 record = next(parsed, None)
             except READ_ERRORS as error:
                 raise source.explained(error) from error
-            except (ValueError, BiopythonWarning) as error:
+            # On damaged text the parser fails in many ways, failed assertions among them.
+            except Exception as error:
+                detail = " ".join(str(error).split()) or type(error).__name__
                 raise SequenceError(
-                    f"{source.name}: not a whole GenBank file ({' '.join(str(error).split())}); "
-                    "download it again or give FASTA"
+                    f"{source.name}: not a whole GenBank file ({detail}); download it again or "
+                    "give FASTA"
                 ) from error
         if record is None:
             return
@@ -252,7 +254,7 @@ def _read_genbank(source: TextSource) -> Iterator[Record]:
     count = 0
     for count, parsed in enumerate(_parsed_genbank(source), 1):
         name = parsed.id or ""
-        if name in ("", ".", "<unknown id>") or not name.isprintable():
+        if name in (".", "<unknown id>") or len(name.split()) != 1 or not name.isprintable():
             raise SequenceError(f"{source.name}: record {count} has no name; add its VERSION line")
         try:
             text = bytes(parsed.seq or b"")
