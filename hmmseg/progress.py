@@ -22,7 +22,7 @@ class Progress:
     Parameters
     ----------
     total : int
-        Steps in the whole job, in `unit`.
+        Steps in the whole job, in `unit`; 0 where it is not known beforehand.
     label : str
         What is being done, such as ``decoding``.
     unit : str
@@ -93,10 +93,8 @@ class Progress:
     def _write_line(self, note: str) -> None:
         now = self._clock()
         share = f" ({100 * self.done // self.total} %)" if self.total else ""
-        line = (
-            f"{self.label}: {self.done:,} of {self.total:,} {self.unit}{share}, "
-            f"{now - self._begun:.0f} s"
-        )
+        whole = f" of {self.total:,}" if self.total else ""
+        line = f"{self.label}: {self.done:,}{whole} {self.unit}{share}, {now - self._begun:.0f} s"
         print(f"{line}, {note}" if note else line, file=sys.stderr, flush=True)
         self._last_line = now
         self._lines += 1

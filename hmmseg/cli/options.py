@@ -1,0 +1,77 @@
+"""Options that several commands share."""
+
+import os
+from collections.abc import Callable
+from functools import wraps
+from typing import Any
+
+import click
+
+__all__ = ["fasta", "force", "model", "output", "sequence_options", "threads"]
+
+Decorated = Callable[..., Any]
+
+
+def sequence_options(circular: bool = True) -> Callable[[Decorated], Decorated]:
+    """Add the options that choose records, and hand them on as one ``sources``."""
+
+    def decorate(function: Decorated) -> Decorated:
+        @wraps(function)
+        def with_sources(
+            records: str | None,
+            min_record: int,
+            exclude: str | None,
+            gap_min: int,
+            circular: tuple[str, ...] = (),
+            **others: Any,
+        ) -> Any:
+            from hmmseg.jobs.sources import Sources
+
+            fasta = others.pop("fasta")
+            names = (fasta,) if isinstance(fasta, str) else fasta
+            sources = Sources(names, records, min_record, exclude, circular, gap_min)
+            return function(sources, **others)
+
+        options = [
+            click.option("--records", metavar="FILE", help="Use only the records listed here."),
+            click.option(
+                "--min-record", type=click.IntRange(0), default=0, metavar="LENGTH",
+                help="Leave out records shorter than this many bases.",
+            ),
+            click.option("--exclude", metavar="BED", help="Leave out these intervals."),
+            click.option(
+                "--gap-min", type=click.IntRange(1), default=25, show_default=True,
+                metavar="LENGTH", help="A run of N this long is a gap.",
+            ),
+        ]  # fmt: skip
+        if circular:
+            options.append(
+                click.option(
+                    "--circular",
+                    multiple=True,
+                    metavar="NAME",
+                    help="This record is a circle; may be given again.",
+                )
+            )
+        wrapped: Decorated = with_sources
+        for option in reversed(options):
+            wrapped = option(wrapped)
+        return wrapped
+
+    return decorate
+
+
+fasta = click.argument("fasta", nargs=-1, required=True, metavar="FASTA...")
+force = click.option("--force", is_flag=True, help="Replace an earlier result.")
+output = click.option("--output", required=True, metavar="DIR", help="Folder to write.")
+model = click.option("--model", required=True, metavar="MODEL.json", help="Model to use.")
+
+
+def _default_threads() -> int:
+    return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else 1
+
+
+threads = click.option(
+    "--threads", type=click.IntRange(1), default=_default_threads, metavar="T",
+    help="Threads to use.  [default: the processors this process may use]",
+)  # fmt: skip
