@@ -25,7 +25,7 @@ SHEETS = {
     "assembly\tfasta\tstates\na\ta.fa\ttwo\n": (2, "states", "integer"),
     "assembly\tfasta\tstates\na\ta.fa\t2.5\n": (2, "states", "integer"),
     "assembly\tfasta\tstates\na\ta.fa\t0\n": (2, "states", "minimum"),
-    "assembly\tfasta\torder\na\ta.fa\t1\nb\tb.fa\t7\n": (3, "order", "maximum"),
+    "assembly\tfasta\torder\na\ta.fa\t1\nb\tb.fa\t9\n": (3, "order", "maximum"),
     "assembly\tfasta\tthreshold\na\ta.fa\tnan\n": (2, "threshold", "number"),
     "assembly\tfasta\tdecoder\na\ta.fa\tboth\n": (2, "decoder", "one of"),
     "assembly\tfasta\tinit\torder\na\ta.fa\tm.json\t1\n": (2, "order", "start model"),

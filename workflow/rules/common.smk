@@ -12,7 +12,9 @@ from snakemake.utils import validate
 shell.prefix(f"PATH={shlex.quote(str(Path(sys.executable).parent))}:$PATH; ")
 
 # Columns of the sample sheet that name a file.
-FILES = ("fasta", "records", "exclude", "labels", "init")
+FILES = ("fasta", "records", "exclude", "init")
+# Columns whose cells are words even if they look like numbers.
+WORDS = ("assembly", "circular", *FILES)
 # Settings that a start model brings along, so that a row cannot give them beside `init`.
 FIXED_BY_INIT = ("states", "order", "strands", "start")
 
@@ -64,14 +66,12 @@ def sheet_error(row, column, message):
 
 
 def cell_value(column, text):
-    """Number for the columns whose default is one, and the text itself for all others."""
-    if not isinstance(config["defaults"].get(column), (int, float)):
-        return text
+    """Number if the cell holds one and the column may, else the text itself."""
     try:
         number = float(text)
     except ValueError:
         return text
-    if not math.isfinite(number):
+    if column in WORDS or not math.isfinite(number):
         return text
     return int(number) if number.is_integer() else number
 
@@ -189,11 +189,6 @@ def exclude_of(wildcards):
     return files(wildcards, "exclude")
 
 
-def labels_of(wildcards):
-    """Intervals whose state is known."""
-    return files(wildcards, "labels")
-
-
 def init_of(wildcards):
     """Model to start from."""
     return files(wildcards, "init")
@@ -209,43 +204,47 @@ def options(wildcards, *keys):
     return shlex.join(words)
 
 
+def circles(wildcards):
+    """Options that name the circular records of an assembly."""
+    names = SETTINGS[wildcards.assembly].get("circular", "").split(",")
+    return shlex.join(f"--circular={name.strip()}" for name in names if name.strip())
+
+
 def survey_options(wildcards):
     """Which records a survey counts."""
-    return options(wildcards, "records", "min_record", "exclude")
+    chosen = options(wildcards, "records", "min_record", "exclude", "gap_min")
+    return f"{chosen} {circles(wildcards)}".rstrip()
 
 
 def train_options(wildcards):
     """Which records to train on, from where, and how long."""
-    model = ["init"]
-    ties = []
-    if SETTINGS[wildcards.assembly].get("init") is None:
-        model = ["states", "order", "start"]
-        ties = [f"--{SETTINGS[wildcards.assembly]['strands']}"]
-    search = ["restarts", "seed", "max_iterations", "tolerance", "pseudocount"]
-    keys = ["records", "min_record", "exclude", "labels", *model, *search]
-    return " ".join([options(wildcards, *keys), *ties])
+    settings = SETTINGS[wildcards.assembly]
+    if settings.get("init") is None:
+        keys = ("states", "order", "start")
+        model = f"{options(wildcards, *keys)} --{settings['strands']}"
+    else:
+        model = options(wildcards, "init")
+    keys = ("restarts", "seed", "max_iterations", "tolerance", "pseudocount")
+    return f"{model} {options(wildcards, *keys)} {survey_options(wildcards)}"
 
 
 def batches_options(wildcards):
     """Which records to decode, and how many bases in one job."""
-    chosen = options(wildcards, "records", "min_record", "exclude")
+    chosen = options(wildcards, "records", "min_record", "exclude", "gap_min")
     return f"{chosen} --batch-bases {config['batch_bases']}"
 
 
 def decode_options(wildcards):
     """How to call regions; the records come from the batch."""
-    chosen = options(
-        wildcards, "exclude", "decoder", "threshold", "min_length", "merge_gap"
-    )
-    names = SETTINGS[wildcards.assembly].get("circular", "").split(",")
-    circles = [word for name in names if name for word in ("--circular", name.strip())]
-    return f"{chosen} {shlex.join(circles)}".rstrip()
+    keys = ("exclude", "gap_min", "decoder", "threshold", "min_length", "merge_gap")
+    return f"{options(wildcards, *keys)} {circles(wildcards)}".rstrip()
 
 
 def parts_of(wildcards):
     """Decoded batches of an assembly, in the order of its records, known once they are cut."""
     folder = checkpoints.batches.get(assembly=wildcards.assembly).output.folder
-    names = sorted(path.stem for path in Path(folder).glob("batch-*.txt"))
+    with (Path(folder) / "batches.tsv").open(newline="") as handle:
+        names = [row["batch"] for row in csv.DictReader(handle, delimiter="\t")]
     return [f"{RESULTS}/{wildcards.assembly}/parts/{name}" for name in names]
 
 

@@ -15,7 +15,7 @@ checkpoint batches:
     params:
         options=batches_options,
     shell:
-        "hmmseg batches {input.fasta:q} --output {output.folder:q} {params.options} 2> {log:q}"
+        "hmmseg batches {input.fasta:q} --output {output.folder:q} {params.options} > {log:q} 2>&1"
 
 
 rule decode:
@@ -36,7 +36,7 @@ rule decode:
     shell:
         "hmmseg decode {input.fasta:q} --model {input.model:q} --output {output.folder:q}"
         " --records {input.batches:q}/{wildcards.batch}.txt {params.options}"
-        " --threads {threads} 2> {log:q}"
+        " --threads {threads} > {log:q} 2>&1"
 
 
 rule gather:
@@ -49,4 +49,4 @@ rule gather:
     benchmark:
         f"{RESULTS}/benchmarks/gather/{{assembly}}.tsv"
     shell:
-        "hmmseg gather {input.parts:q} --output {output.folder:q} 2> {log:q}"
+        "hmmseg gather {input.parts:q} --output {output.folder:q} > {log:q} 2>&1"

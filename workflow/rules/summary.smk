@@ -13,4 +13,4 @@ rule summary:
     params:
         labelled=labelled_calls,
     shell:
-        "hmmseg summary {params.labelled} --output {output.table:q} 2> {log:q}"
+        "hmmseg summary {params.labelled} --output {output.table:q} > {log:q} 2>&1"

@@ -15,4 +15,4 @@ rule survey:
     params:
         options=survey_options,
     shell:
-        "hmmseg survey {input.fasta:q} --output {output.folder:q} {params.options} 2> {log:q}"
+        "hmmseg survey {input.fasta:q} --output {output.folder:q} {params.options} > {log:q} 2>&1"

@@ -7,7 +7,6 @@ rule train:
         records=records_of,
         exclude=exclude_of,
         init=init_of,
-        labels=labels_of,
     output:
         model=f"{RESULTS}/{{assembly}}/model.json",
         provenance=f"{RESULTS}/{{assembly}}/model.provenance.json",
@@ -20,4 +19,4 @@ rule train:
         options=train_options,
     shell:
         "hmmseg train {input.fasta:q} --output {output.model:q} {params.options}"
-        " --threads {threads} 2> {log:q}"
+        " --threads {threads} > {log:q} 2>&1"
