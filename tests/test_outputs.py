@@ -5,6 +5,7 @@ import hashlib
 import json
 import os
 import shutil
+from contextlib import AbstractContextManager
 from pathlib import Path
 
 import pytest
@@ -25,6 +26,15 @@ def make_result(folder: Path, content: str = "old") -> Path:
     return folder
 
 
+def half_write(
+    result: AbstractContextManager[Path], name: str, failure: type[BaseException]
+) -> None:
+    """Write a part of a result, then fail."""
+    with result as temporary:
+        (temporary / name if name else temporary).write_text("half")
+        raise failure
+
+
 class TestWholeFile:
     def test_appears_under_its_name_with_nothing_beside_it(self, tmp_path: Path) -> None:
         with whole_file(tmp_path / "model.json") as temporary:
@@ -41,9 +51,8 @@ class TestWholeFile:
     ) -> None:
         target = tmp_path / "model.json"
         target.write_text("old")
-        with pytest.raises(failure), whole_file(target, force=True) as temporary:
-            temporary.write_text("half")
-            raise failure
+        with pytest.raises(failure):
+            half_write(whole_file(target, force=True), "", failure)
         assert names(tmp_path) == ["model.json"]
         assert target.read_text() == "old"
 
@@ -58,8 +67,7 @@ class TestWholeFile:
 
     def test_a_file_that_appears_meanwhile_is_kept(self, tmp_path: Path) -> None:
         target = tmp_path / "model.json"
-        with pytest.raises(OutputError, match="exists"), whole_file(target) as temporary:
-            temporary.write_text("new")
+        with pytest.raises(OutputError, match="exists"), whole_file(target):
             target.write_text("somebody else's")
         assert target.read_text() == "somebody else's"
         assert names(tmp_path) == ["model.json"]
@@ -123,9 +131,8 @@ class TestWholeFolder:
     ) -> None:
         target = make_result(tmp_path / "result")
         before = names(tmp_path)
-        with pytest.raises(failure), whole_folder(target, force=True) as temporary:
-            (temporary / "regions.bed").write_text("half")
-            raise failure
+        with pytest.raises(failure):
+            half_write(whole_folder(target, force=True), "regions.bed", failure)
         assert names(tmp_path) == before
         assert (target / "regions.bed").read_text() == "old"
 

@@ -62,11 +62,15 @@ def test_a_note_is_told(capsys: pytest.CaptureFixture[str]) -> None:
 
 
 def test_a_failed_job_does_not_claim_an_end(capsys: pytest.CaptureFixture[str]) -> None:
-    clock = Clock()
-    with pytest.raises(ValueError, match="stop"), Progress(2, "a", "b", clock=clock) as job:
-        clock.now += 40
-        job.advance(1)
-        raise ValueError("stop")
+    def fail() -> None:
+        clock = Clock()
+        with Progress(2, "a", "b", clock=clock) as job:
+            clock.now += 40
+            job.advance(1)
+            raise ValueError("stop")
+
+    with pytest.raises(ValueError, match="stop"):
+        fail()
     assert capsys.readouterr().err == "a: 1 of 2 b (50 %), 40 s\n"
 
 

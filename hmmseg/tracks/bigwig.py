@@ -103,9 +103,10 @@ class PosteriorTrack:
         self._bases = 0
         self._total = 0.0
         try:
-            self._file: Any = pyBigWig.open(str(path), "w")
-        except RuntimeError as error:
-            raise OutputError(f"cannot write {path}; choose another place") from error
+            self.path.touch()  # the library crashes where it cannot make the file
+        except OSError as error:
+            raise OutputError(f"cannot write {path}: {error.strerror}") from error
+        self._file: Any = pyBigWig.open(str(path), "w")
         self._file.addHeader(list(self.record_lengths.items()))
 
     def add(
