@@ -167,15 +167,18 @@ def _pair_weights(
     groups = int(np.clip(_GROUP_BYTES // tables.matrices.nbytes, _FEWEST_GROUPS, _MOST_GROUPS))
     edges = np.linspace(0, len(jobs.blocks), groups + 1).astype(np.int64)
     flags = np.zeros(len(stream.bounds) - 1, bool)
+    lengths = np.diff(stream.bounds)[jobs.blocks]
 
     def work(group: int) -> NDArray[np.float64] | None:
         first, last = edges[group], edges[group + 1]
         if first == last:
             return None
         table = np.zeros_like(tables.matrices)
+        # Blocks go in pairs, best of equal length.
+        mine = first + np.argsort(lengths[first:last], kind="stable")
         block_kernels(states).expect(
-            stream.tokens, stream.bounds, jobs.blocks, first, last, jobs.starts, jobs.ends,
-            jobs.shares, tables.matrices, tables.mirrored, tables.interval, table, flags,
+            stream.tokens, stream.bounds, jobs.blocks[mine], jobs.starts[mine], jobs.ends[mine],
+            jobs.shares[mine], tables.matrices, tables.mirrored, tables.interval, table, flags,
         )  # fmt: skip
         return table
 

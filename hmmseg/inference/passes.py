@@ -17,7 +17,7 @@ from hmmseg.model import Model
 
 __all__ = ["BlockEnds", "Jobs", "find_ends"]
 
-_BLOCKS_AT_ONCE = 64
+_BLOCKS_AT_ONCE = 256
 
 
 @dataclass(frozen=True, eq=False)
@@ -93,18 +93,20 @@ def find_ends(model: Model, tables: Tables, stream: Stream, threads: int) -> Blo
     if tables.interval == 0:
         return _everything_lost(states, contigs)
     products = np.empty((blocks, states, states))
-    times = np.empty((blocks, states), np.int64)
+    scales = np.empty((blocks, states))
     flags = np.zeros(blocks, bool)
     transfer = block_kernels(states).transfer
 
+    by_length = np.argsort(np.diff(stream.bounds), kind="stable")
+
     def work(first: int) -> None:
-        last = min(first + _BLOCKS_AT_ONCE, blocks)
         transfer(
-            stream.tokens, stream.bounds, first, last, tables.matrices, tables.interval,
-            products, times, flags,
+            stream.tokens, stream.bounds, by_length[first : first + _BLOCKS_AT_ONCE],
+            tables.matrices, tables.interval, products, scales, flags,
         )  # fmt: skip
 
     in_threads(work, range(0, blocks, _BLOCKS_AT_ONCE), threads)
+    times = scales.astype(np.int64)
     lost = _any_of_blocks(flags, stream.contig_blocks)
     starts, ends = np.empty((blocks, states)), np.empty((blocks, states))
     heads, logs = np.zeros((contigs, states)), np.zeros(contigs)

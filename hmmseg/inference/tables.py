@@ -6,7 +6,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hmmseg.inference.streams import word_tokens
-from hmmseg.kernels.blocks import DECAY_BITS
+from hmmseg.kernels.limits import DECAY_BITS
 from hmmseg.kernels.matrices import fill_token_matrices, smallest_entry
 from hmmseg.model import Model
 

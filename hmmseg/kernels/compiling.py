@@ -11,7 +11,7 @@ from typing import Any
 
 import numba
 
-__all__ = ["inlined", "kernel"]
+__all__ = ["helper", "kernel"]
 
 
 def kernel(function: Callable[..., Any]) -> Callable[..., Any]:
@@ -22,9 +22,9 @@ def kernel(function: Callable[..., Any]) -> Callable[..., Any]:
     return compiled
 
 
-def inlined(function: Callable[..., Any]) -> Callable[..., Any]:
-    """Compile a helper that kernels call in their inner loops."""
+def helper(function: Callable[..., Any]) -> Callable[..., Any]:
+    """Compile a function that only kernels call; it becomes part of them, and of their cache."""
     compiled: Callable[..., Any] = numba.njit(
-        nogil=True, fastmath=False, error_model="numpy", inline="never"
+        nogil=True, fastmath=False, error_model="numpy"
     )(function)
     return compiled

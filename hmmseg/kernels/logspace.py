@@ -36,19 +36,37 @@ def _tables(transitions, emissions):
 
 
 @kernel
+def _rebase(vector):
+    """Count a vector from its largest entry, which is returned; 0 if all are impossible.
+
+    Entries then stay near 0, where differences of logarithms are exact to the last digits.
+    """
+    largest = vector.max()
+    if largest == -np.inf:
+        return 0.0
+    for j in range(vector.size):
+        vector[j] -= largest
+    return largest
+
+
+@kernel
 def _forward(log_t, log_e, code, vector, out, terms):
+    """Fill the next forward vector, rebased; return what was counted off."""
     for j in range(vector.size):
         for i in range(vector.size):
             terms[i] = vector[i] + log_t[i, j]
         out[j] = _log_sum(terms) + log_e[j, code]
+    return _rebase(out)
 
 
 @kernel
 def _backward(log_t, log_e, code, vector, out, terms):
+    """Fill the next backward vector, rebased."""
     for i in range(vector.size):
         for j in range(vector.size):
             terms[j] = log_t[i, j] + log_e[j, code] + vector[j]
         out[i] = _log_sum(terms)
+    _rebase(out)
 
 
 @kernel
@@ -67,10 +85,11 @@ def log_likelihood(transitions, emissions, codes, start, end):
     vector = start.copy()
     following = np.empty_like(vector)
     terms = np.empty_like(vector)
+    taken = 0.0
     for code in codes:
-        _forward(log_t, log_e, code, vector, following, terms)
+        taken += _forward(log_t, log_e, code, vector, following, terms)
         vector[:] = following
-    return _log_sum(vector + end)
+    return taken + _log_sum(vector + end)
 
 
 @kernel
@@ -118,6 +137,7 @@ def log_pass(
     marks = np.empty((blocks + 1, states))
     terms = np.empty(states)
     forward = np.empty((_BLOCK + 1, states))
+    taken = np.empty(_BLOCK)
     vector = start.copy()
     following = np.empty(states)
     for position in range(codes.size):
@@ -125,16 +145,18 @@ def log_pass(
             marks[position // _BLOCK] = vector
         _forward(log_t, log_e, codes[position], vector, following, terms)
         vector[:] = following
-    total = _log_sum(vector + end)
     backward = end.copy()
     for block in range(blocks - 1, -1, -1):
         offset = block * _BLOCK
         length = min(_BLOCK, codes.size - offset)
         forward[0] = marks[block]
         for at in range(length):
-            _forward(log_t, log_e, codes[offset + at], forward[at], forward[at + 1], terms)
+            taken[at] = _forward(
+                log_t, log_e, codes[offset + at], forward[at], forward[at + 1], terms
+            )
         for at in range(length - 1, -1, -1):
             code = codes[offset + at]
+            total = _log_sum(forward[at + 1] + backward)
             for j in range(states):
                 expected = share * exp(forward[at + 1, j] + backward[j] - total)
                 emission_counts[j, code] += expected
@@ -142,8 +164,9 @@ def log_pass(
                     posterior[offset + at - begin, j] += expected
                 for i in range(states):
                     pair = forward[at, i] + log_t[i, j] + log_e[j, code] + backward[j]
-                    transition_counts[i, j] += share * exp(pair - total)
+                    transition_counts[i, j] += share * exp(pair - taken[at] - total)
             _backward(log_t, log_e, code, backward, following, terms)
             backward[:] = following
+    total = _log_sum(start + backward)
     for j in range(states):
         head[j] += share * exp(start[j] + backward[j] - total)

@@ -6,8 +6,9 @@ from typing import Any
 
 import numpy as np
 
-from hmmseg.kernels.blocks import LOST, rescale
 from hmmseg.kernels.compiling import kernel
+from hmmseg.kernels.limits import LOST
+from hmmseg.kernels.plain import rescale
 from hmmseg.kernels.tokens import base_codes
 
 __all__ = ["posterior_kernel"]

@@ -7,9 +7,10 @@ function tells whether a value was lost; its contig is then done again with loga
 
 import numpy as np
 
-from hmmseg.kernels.blocks import LOST, SCALE_BITS, rescale
 from hmmseg.kernels.compiling import kernel
 from hmmseg.kernels.elementary import log, power_of_two
+from hmmseg.kernels.limits import LOST, SCALE_BITS
+from hmmseg.kernels.plain import rescale
 
 __all__ = ["log_scaled", "log_trace_of_power", "scan_closed", "scan_contigs", "scan_linear"]
 

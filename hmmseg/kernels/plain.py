@@ -1,0 +1,141 @@
+"""The kernels of blocks for any number of states, as loops."""
+
+import numpy as np
+
+from hmmseg.kernels.compiling import kernel
+from hmmseg.kernels.limits import LOST, SCALE_BITS, VANISHING
+
+__all__ = ["expect", "rescale", "transfer"]
+
+_SCALE = 2.0**SCALE_BITS
+_LOW = 2.0**-SCALE_BITS
+
+
+@kernel
+def rescale(vector):
+    """Scale a vector; return how many times, and whether an entry nearly vanished."""
+    largest = 0.0
+    for value in vector:
+        largest = max(largest, value)
+    times = 0
+    while 0.0 < largest < _LOW:
+        for j in range(vector.size):
+            vector[j] *= _SCALE
+        largest *= _SCALE
+        times += 1
+    vanishing = False
+    for value in vector:
+        vanishing |= 0.0 < value < VANISHING
+    return times, vanishing
+
+
+@kernel
+def _vector_times_matrix(vector, matrix, out):
+    for j in range(out.size):
+        total = vector[0] * matrix[0, j]
+        for k in range(1, vector.size):
+            total += vector[k] * matrix[k, j]
+        out[j] = total
+
+
+@kernel
+def transfer(tokens, bounds, blocks, matrices, interval, products, exponents, flags):
+    """Fill the transfer matrices of blocks.
+
+    Parameters
+    ----------
+    tokens : uint16[token] or uint32[token]
+    bounds : int64[block + 1]
+        Token offsets of all blocks.
+    blocks : int64[block]
+        The blocks to do.
+    matrices : float64[token, state, state]
+        As filled by :func:`hmmseg.kernels.matrices.fill_token_matrices`.
+    interval : int
+        Tokens between two looks at the scale.
+    products : float64[block, state, state]
+        Filled for these blocks.
+    exponents : float64[block, state]
+        Filled: row i is to be multiplied by 2**(-64 exponents[i]).
+    flags : bool[block]
+        Set where a value nearly vanished.
+    """
+    row = np.empty(matrices.shape[1])
+    for block in blocks:
+        rows = products[block]
+        rows[:] = 0.0
+        exponents[block] = 0.0
+        for i in range(row.size):
+            rows[i, i] = 1.0
+            for at in range(bounds[block], bounds[block + 1]):
+                _vector_times_matrix(rows[i], matrices[tokens[at]], row)
+                rows[i] = row
+                if (at - bounds[block]) % interval == interval - 1 or at == bounds[block + 1] - 1:
+                    count, vanishing = rescale(rows[i])
+                    exponents[block, i] += count
+                    flags[block] |= vanishing
+
+
+@kernel
+def expect(
+    tokens, bounds, blocks, starts, ends, shares, matrices, mirrored, interval, weights, flags
+):
+    """Add the pair weights of blocks between known vectors.
+
+    Parameters
+    ----------
+    tokens, bounds
+        As for :func:`transfer`.
+    blocks : int64[job]
+        The block of each job.
+    starts, ends : float64[job, state]
+        Forward vector before, backward vector behind the block, each up to a factor.
+    shares : float64[job]
+        Probability with which the job counts.
+    matrices, mirrored : float64[token, state, state]
+        Matrices and their transposes.
+    interval : int
+        Tokens between two looks at the scale.
+    weights : float64[token, state, state]
+        Added to: share * forward[i] backward[j] / P(block), which times the matrix is the
+        expected number of passages through the token from state i to state j.
+    flags : bool[block]
+        Set where a value was lost.
+    """
+    states = matrices.shape[1]
+    longest = 0
+    for block in blocks:
+        longest = max(longest, bounds[block + 1] - bounds[block])
+    forward = np.empty((longest + 1, states))
+    stepped = np.empty(states)
+    for job in range(blocks.size):
+        block = blocks[job]
+        stop = bounds[block + 1]
+        length = stop - bounds[block]
+        # Row ``left`` is the vector before the token behind which ``left - 1`` follow.
+        forward[length] = starts[job]
+        for left in range(length, 0, -1):
+            if left % interval == 0:
+                rescale(forward[left])
+            _vector_times_matrix(forward[left], matrices[tokens[stop - left]], forward[left - 1])
+        backward = ends[job].copy()
+        factor = 0.0
+        for left in range(1, length + 1):
+            token = tokens[stop - left]
+            fresh = (left - 1) % interval == 0
+            if fresh:
+                rescale(backward)
+            _vector_times_matrix(backward, mirrored[token], stepped)
+            if fresh:
+                total = 0.0
+                for i in range(states):
+                    total += forward[left, i] * stepped[i]
+                if total < LOST:
+                    flags[block] = True
+                    break
+                factor = shares[job] / total
+            for i in range(states):
+                share = forward[left, i] * factor
+                for j in range(states):
+                    weights[token, i, j] += share * backward[j]
+            backward[:] = stepped

@@ -1,0 +1,152 @@
+"""Small vectors that stay in registers: the one place where loops over states are unrolled.
+
+Left to itself, the compiler neither keeps a loop over two or eight states in registers nor
+packs it, because it cannot know that the arrays that are read and written never overlap. Each
+function therefore exists twice: here in NumPy, which says what it means and runs where the JIT
+is switched off, and in :mod:`hmmseg.kernels.instructions` on a vector of as many doubles as
+there are states. Both take the same sums and products of every element in the same order. The
+compiler cuts a vector into registers as wide as the processor has, which leaves the values
+as they are.
+
+A *vector* holds one value a state. *Columns* are the columns of a square matrix, a vector each.
+"""
+
+import numpy as np
+from numba import config
+
+from hmmseg.kernels.limits import SCALE_BITS, VANISHING
+
+__all__ = [
+    "MOST_STATES",
+    "add_outer",
+    "identity",
+    "inner",
+    "load",
+    "multiplied",
+    "plus",
+    "product",
+    "rescaled",
+    "rescaled_columns",
+    "scaled",
+    "step_columns",
+    "store",
+    "store_columns",
+]
+
+MOST_STATES = 8
+"""The most values for which unrolling pays: beyond, code grows faster than it gains."""
+
+
+def load(rows, at, size):
+    """Return row ``at`` of float64[row, state] as a vector; ``size`` is a constant."""
+    return rows[at, :size].copy()
+
+
+def store(rows, at, vector):
+    """Fill row ``at`` of float64[row, state]."""
+    rows[at] = vector
+
+
+def scaled(vector, factor):
+    """Return a vector times a number."""
+    return vector * factor
+
+
+def multiplied(vector, other):
+    """Return the products of two vectors' elements."""
+    return vector * other
+
+
+def plus(vector, other):
+    """Return the sum of two vectors."""
+    return vector + other
+
+
+def inner(rows, at, vector):
+    """Return the sum over states of row ``at`` times a vector, from the first state on."""
+    total = 0.0
+    for term in rows[at] * vector:
+        total += term
+    return total
+
+
+def product(vector, matrices, token):
+    """Return the vector times the token's matrix."""
+    matrix = matrices[token]
+    out = vector[0] * matrix[0]
+    for k in range(1, vector.size):
+        out = out + vector[k] * matrix[k]
+    return out
+
+
+def add_outer(weights, token, rows, at, vector):
+    """Add to the token's matrix of weights: row ``at``, a column, times a vector, a row."""
+    weights[token] += rows[at][:, None] * vector
+
+
+def identity(size):
+    """Return the columns of the identity; ``size`` is a constant."""
+    return tuple(np.eye(size))
+
+
+def step_columns(columns, matrices, token):
+    """Return the columns of a matrix times the token's matrix."""
+    matrix = matrices[token]
+    out = []
+    for j in range(len(columns)):
+        column = columns[0] * matrix[0, j]
+        for k in range(1, len(columns)):
+            column = column + columns[k] * matrix[k, j]
+        out.append(column)
+    return tuple(out)
+
+
+def store_columns(matrices, at, columns):
+    """Fill matrix ``at`` of float64[matrix, state, state]."""
+    matrices[at] = np.stack(columns, axis=1)
+
+
+def _scaling(largest):
+    """Return the powers of 2**64 that bring values near 1, and their exponents."""
+    _, exponents = np.frexp(largest)
+    counts = np.where(largest > 0, (1 - exponents) // SCALE_BITS, 0)
+    return np.ldexp(1.0, SCALE_BITS * counts), counts.astype(np.float64)
+
+
+def rescaled(vector):
+    """Return a vector times the power of 2**64 that brings its largest value near 1."""
+    factor, _ = _scaling(vector.max())
+    return vector * factor
+
+
+def rescaled_columns(columns):
+    """Bring every row of a matrix near 1 by a power of 2**64 of its own.
+
+    Returns
+    -------
+    tuple of columns, vector, bool
+        The scaled columns; the exponents of the rows' powers; whether a value nearly vanished.
+    """
+    matrix = np.stack(columns)
+    factors, counts = _scaling(matrix.max(axis=0))
+    matrix = matrix * factors
+    vanishing = bool(((matrix > 0) & (matrix < VANISHING)).any())
+    return tuple(matrix), counts, vanishing
+
+
+if not config.DISABLE_JIT:
+    from hmmseg.kernels.instructions import (
+        add_outer,
+        identity,
+        inner,
+        load,
+        multiplied,
+        plus,
+        product,
+        rescaled,
+        rescaled_columns,
+        scaled,
+        step_columns,
+        store,
+        store_columns,
+    )
