@@ -79,7 +79,7 @@ def joint_levels(joint: NDArray[np.float64]) -> list[NDArray[np.float64]]:
         One table for each context length from 0 to the order, the leading bases summed out.
     """
     levels = [joint]
-    while levels[0].shape[-1] > 4:  # noqa: PLR2004 - four bases: the shortest table
+    while levels[0].shape[-1] > 4:
         longest = levels[0]
         by_first = longest.reshape(*longest.shape[:-1], 4, longest.shape[-1] // 4)
         marginal = (by_first[..., 0, :] + by_first[..., 1, :]) + (

@@ -195,7 +195,7 @@ def _joint_of_chain(where: str, rows: NDArray[np.float64]) -> NDArray[np.float64
     """Return the word probabilities of the stationary chain with these conditionals."""
     contexts = len(rows)
     for index, row in enumerate(rows):
-        if not np.isfinite(row).all() or row.min() < 0 or abs(row.sum() - 1) > 1e-6:  # noqa: PLR2004
+        if not np.isfinite(row).all() or row.min() < 0 or abs(row.sum() - 1) > 1e-6:
             raise ModelError(f"{where}[{index}]: not a distribution that sums to 1")
     if contexts == 1:
         return rows[0]
