@@ -12,7 +12,7 @@ from hmmseg.kernels.scan import log_trace_of_power
 from hmmseg.model import Model
 from hmmseg.sequence.contigs import Contig
 
-__all__ = ["ExactPass", "exact_pass"]
+__all__ = ["ExactPass", "exact_pass", "impossible"]
 
 
 class ExactPass(NamedTuple):
@@ -93,7 +93,7 @@ def exact_pass(
             if window[0] == 0 < window[1]:
                 result.posterior[0] = head
     if not np.isfinite(total):
-        raise SequenceError(_impossible(model, contig, codes, reverse))
+        raise impossible(model, contig, codes, reverse)
     return result._replace(log_likelihood=float(total))
 
 
@@ -124,10 +124,13 @@ def _circle(
     return best + float(log_array(np.array([total]))[0]) - float(norm)
 
 
-def _impossible(
-    model: Model, contig: Contig, codes: NDArray[np.unsignedinteger], reverse: bool
-) -> str:
-    """Return the message for a sequence that the model cannot have made."""
+def impossible(
+    model: Model,
+    contig: Contig,
+    codes: NDArray[np.unsignedinteger],
+    reverse: bool = False,
+) -> SequenceError:
+    """Return the error for a sequence that the model cannot have made; see :func:`exact_pass`."""
     if contig.closed:
         starts = [np.where(np.arange(model.states) == i, 0.0, -np.inf) for i in range(model.states)]
         found = [first_impossible(model.transitions, model.emissions, codes, s) for s in starts]
@@ -142,7 +145,7 @@ def _impossible(
         )
     at = len(codes) - 1 - position if reverse else position
     at = (contig.start + at) % contig.record_length
-    return (
+    return SequenceError(
         f"record {contig.record}, base {at + 1}: impossible under the model, which gives it "
         "probability 0; train with a pseudo-count, or use a model without zeros"
     )

@@ -5,7 +5,7 @@ from typing import NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
-from hmmseg.errors import SequenceError
+from hmmseg.inference.exact import impossible
 from hmmseg.inference.streams import BLOCK, in_threads
 from hmmseg.kernels.elementary import log_array
 from hmmseg.kernels.paths import (
@@ -96,10 +96,9 @@ def best_runs(model: Model, contig: Contig, threads: int = 1, block: int = BLOCK
         if other is not None and (score is None or other > score):
             score, runs = other, Runs(len(contig) - backward.edges[::-1], backward.states[::-1])
     if score is None:
-        raise SequenceError(
-            f"record {contig.record}: no path is possible under the model; train with a "
-            "pseudo-count, or use a model without zeros"
-        )
+        codes = np.empty(len(contig), code_dtype(model.order))
+        base_codes(contig.bases, model.order, contig.closed, 0, len(contig), codes)
+        raise impossible(model, contig, codes)
     return runs
 
 

@@ -38,7 +38,7 @@ class SpooledTrack:
     def __init__(self, path: Path) -> None:
         self._path = path
         self._spool = path.with_name(f".{path.name}.runs")
-        self._file = self._spool.open("wb")
+        self._spool.write_bytes(b"")
         self._segments: list[_Segment] = []
         self._written = 0
 
@@ -58,7 +58,8 @@ class SpooledTrack:
         runs = np.empty(len(starts), _RUN)
         runs["start"], runs["end"] = starts + start, ends + start
         runs["level"] = np.rint(values * LEVELS)
-        runs.tofile(self._file)
+        with self._spool.open("ab") as file:
+            runs.tofile(file)
         self._segments.append(_Segment(record, start, self._written, len(runs)))
         self._written += len(runs)
 
@@ -75,7 +76,6 @@ class SpooledTrack:
         OutputError
             The track cannot be written, or does not read back.
         """
-        self._file.close()
         rank = {name: number for number, name in enumerate(record_lengths)}
         ordered = sorted(self._segments, key=lambda segment: (rank[segment.record], segment.start))
         with PosteriorTrack(self._path, record_lengths) as track:
