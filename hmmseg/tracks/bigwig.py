@@ -88,7 +88,7 @@ class PosteriorTrack:
     """
 
     def __init__(self, path: str | Path, record_lengths: Mapping[str, int]) -> None:
-        import pyBigWig  # type: ignore[import-not-found]  # noqa: PLC0415  (start-up time)
+        import pyBigWig  # noqa: PLC0415  (start-up time)
 
         for name, length in record_lengths.items():
             if not 1 <= length <= MAX_LENGTH:

@@ -178,7 +178,7 @@ def _steps_back(
 def _as_text(column: "pd.Series[Any]", decimals: int | None) -> list[str]:
     values = column.tolist()
     if decimals is None and not pd.api.types.is_float_dtype(column.dtype):
-        return [_NOT_KNOWN if value is None else str(value) for value in values]
+        return [_NOT_KNOWN if pd.isna(value) else str(value) for value in values]
     numbers = [float(value) for value in values]
     return [
         _NOT_KNOWN if np.isnan(x) else f"{x:.6g}" if decimals is None else fixed(x, decimals)
