@@ -18,6 +18,7 @@ __all__ = ["Counts", "expect", "log_likelihoods"]
 _MOST_GROUPS = 32
 _FEWEST_GROUPS = 4
 _GROUP_BYTES = 1 << 26
+_GROUP_JOBS = 64
 
 
 @dataclass(frozen=True, eq=False)
@@ -164,7 +165,8 @@ def _pair_weights(
     """
     jobs = ends.jobs
     states = tables.matrices.shape[1]
-    groups = int(np.clip(_GROUP_BYTES // tables.matrices.nbytes, _FEWEST_GROUPS, _MOST_GROUPS))
+    most = int(np.clip(_GROUP_BYTES // tables.matrices.nbytes, _FEWEST_GROUPS, _MOST_GROUPS))
+    groups = int(np.clip(len(jobs.blocks) // _GROUP_JOBS, _FEWEST_GROUPS, most))
     edges = np.linspace(0, len(jobs.blocks), groups + 1).astype(np.int64)
     flags = np.zeros(len(stream.bounds) - 1, bool)
     lengths = np.diff(stream.bounds)[jobs.blocks]

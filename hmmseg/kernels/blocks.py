@@ -27,6 +27,7 @@ from hmmseg.kernels.vectors import (
     add_outer,
     identity,
     inner,
+    item,
     load,
     plus,
     product,
@@ -62,7 +63,7 @@ def _step_on(tokens, at, stop, columns, times, matrices, interval):
     while at < stop:
         pause = min(at + interval, stop)
         for here in range(at, pause):
-            columns = step_columns(columns, matrices, tokens[here])
+            columns = step_columns(columns, matrices, item(tokens, here))
         columns, more, vanishing = rescaled_columns(columns)
         times = plus(times, more)
         lost |= vanishing
@@ -79,8 +80,8 @@ def _step_pair_on(tokens, p_at, q_at, steps, p, q, times, matrices, interval):
     while done < steps:
         pause = min(done + interval, steps)
         for here in range(done, pause):
-            p = step_columns(p, matrices, tokens[p_at + here])
-            q = step_columns(q, matrices, tokens[q_at + here])
+            p = step_columns(p, matrices, item(tokens, p_at + here))
+            q = step_columns(q, matrices, item(tokens, q_at + here))
         p, more, vanishing = rescaled_columns(p)
         p_times = plus(p_times, more)
         p_lost |= vanishing
@@ -139,7 +140,7 @@ def _forward(tokens, stop, left, end, vector, rows, matrices, interval):
         pause = max((left - 1) // interval * interval, end)
         for here in range(left, pause, -1):
             store(rows, here, vector)
-            vector = product(vector, matrices, tokens[stop - here])
+            vector = product(vector, matrices, item(tokens, stop - here))
         left = pause
     return vector
 
@@ -154,8 +155,8 @@ def _forward_pair(tokens, p_stop, q_stop, left, p, q, p_rows, q_rows, matrices, 
         for here in range(left, pause, -1):
             store(p_rows, here, p)
             store(q_rows, here, q)
-            p = product(p, matrices, tokens[p_stop - here])
-            q = product(q, matrices, tokens[q_stop - here])
+            p = product(p, matrices, item(tokens, p_stop - here))
+            q = product(q, matrices, item(tokens, q_stop - here))
         left = pause
 
 
@@ -164,12 +165,12 @@ def _backward(tokens, stop, left, length, vector, share, rows, mirrored, interva
     """Add the weights of the tokens of which ``left``, up to ``length``, are left."""
     while left <= length:
         if (left - 1) % interval == 0:
-            vector, lost = _weigh(vector, rows, left, mirrored, tokens[stop - left], share)
+            vector, lost = _weigh(vector, rows, left, mirrored, item(tokens, stop - left), share)
             if lost:
                 return True
         pause = min((left - 1) // interval * interval + interval, length)
         for here in range(left, pause + 1):
-            token = tokens[stop - here]
+            token = item(tokens, stop - here)
             add_outer(weights, token, rows, here, vector)
             vector = product(vector, mirrored, token)
         left = pause + 1
@@ -185,13 +186,13 @@ def _backward_pair(
     p_lost = q_lost = False
     left = 1
     while left <= length:
-        p, p_lost = _weigh(p, p_rows, left, mirrored, tokens[p_stop - left], p_share)
-        q, q_lost = _weigh(q, q_rows, left, mirrored, tokens[q_stop - left], q_share)
+        p, p_lost = _weigh(p, p_rows, left, mirrored, item(tokens, p_stop - left), p_share)
+        q, q_lost = _weigh(q, q_rows, left, mirrored, item(tokens, q_stop - left), q_share)
         if p_lost or q_lost:
             break
         pause = min(left + interval, length + 1)
         for here in range(left, pause):
-            p_token, q_token = tokens[p_stop - here], tokens[q_stop - here]
+            p_token, q_token = item(tokens, p_stop - here), item(tokens, q_stop - here)
             add_outer(weights, p_token, p_rows, here, p)
             add_outer(weights, q_token, q_rows, here, q)
             p = product(p, mirrored, p_token)

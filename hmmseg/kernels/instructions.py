@@ -19,6 +19,7 @@ __all__ = [
     "add_outer",
     "identity",
     "inner",
+    "item",
     "load",
     "multiplied",
     "plus",
@@ -80,20 +81,21 @@ def _index(number: int) -> ir.Constant:
 
 
 class _Row:
-    """Row ``at`` of float64[row, state], or the matrix ``at`` of float64[matrix, state, state]."""
+    """Row ``at`` of float64[row, state], or the matrix ``at`` of float64[matrix, state, state].
+
+    Arrays are contiguous, so that how far apart rows lie is a constant. Indices are not checked,
+    and none counts from the end.
+    """
 
     def __init__(
-        self, context: Any, builder: ir.IRBuilder, signature: Any, arguments: Any, at: int
+        self, context: Any, builder: ir.IRBuilder, signature: Any, arguments: Any, at: int, size: int
     ) -> None:
-        """Take the array from argument ``at - 1`` and the row from argument ``at``."""
-        array_type = signature.args[at - 1]
-        array = context.make_array(array_type)(context, builder, arguments[at - 1])
+        """Take the array from argument ``at - 1``, and from argument ``at`` which row it is."""
+        kind = signature.args[at - 1]
+        array = context.make_array(kind)(context, builder, arguments[at - 1])
         row = context.cast(builder, arguments[at], signature.args[at], types.intp)
-        zero = context.get_constant(types.intp, 0)
-        indices = [row] + [zero] * (array_type.ndim - 1)
-        self._first = cgutils.get_item_pointer(
-            context, builder, array_type, array, indices, wraparound=False
-        )
+        length = ir.Constant(_INT64, size ** (kind.ndim - 1))
+        self._first = builder.gep(array.data, [builder.mul(row, length)])
         self._builder = builder
 
     def _pointer(self, offset: int, kind: ir.Type) -> ir.Value:
@@ -123,14 +125,26 @@ def _sum_of_products(builder: ir.IRBuilder, pairs: list[tuple[ir.Value, ir.Value
     return total
 
 
+@intrinsic
+def item(typing, values, at):
+    """Return one value of a flat array, by an index that never counts from the end."""
+
+    def code(context, builder, signature, arguments):
+        array = context.make_array(values)(context, builder, arguments[0])
+        return builder.load(builder.gep(array.data, [arguments[1]]))
+
+    return values.dtype(values, types.intp), code
+
+
 @intrinsic(prefer_literal=True)
 def load(typing, rows, at, size):
     """Return a row as a vector."""
+    count = size.literal_value
 
     def code(context, builder, signature, arguments):
-        return _Row(context, builder, signature, arguments, 1).vector(0, size.literal_value)
+        return _Row(context, builder, signature, arguments, 1, count).vector(0, count)
 
-    return Vector(size.literal_value)(rows, at, size), code
+    return Vector(count)(rows, at, size), code
 
 
 @intrinsic
@@ -138,7 +152,7 @@ def store(typing, rows, at, vector):
     """Fill a row."""
 
     def code(context, builder, signature, arguments):
-        _Row(context, builder, signature, arguments, 1).fill(0, arguments[2])
+        _Row(context, builder, signature, arguments, 1, vector.size).fill(0, arguments[2])
         return context.get_dummy_value()
 
     return types.void(rows, at, vector), code
@@ -177,12 +191,13 @@ def plus(typing, vector, other):
 @intrinsic
 def inner(typing, rows, at, vector):
     """Return the sum of a row's elements times those of a vector."""
+    size = vector.size
 
     def code(context, builder, signature, arguments):
-        row = _Row(context, builder, signature, arguments, 1).vector(0, vector.size)
+        row = _Row(context, builder, signature, arguments, 1, size).vector(0, size)
         products = builder.fmul(row, arguments[2])
         total = builder.extract_element(products, _index(0))
-        for k in range(1, vector.size):
+        for k in range(1, size):
             total = builder.fadd(total, builder.extract_element(products, _index(k)))
         return total
 
@@ -195,7 +210,7 @@ def product(typing, vector, matrices, token):
     size = vector.size
 
     def code(context, builder, signature, arguments):
-        matrix = _Row(context, builder, signature, arguments, 2)
+        matrix = _Row(context, builder, signature, arguments, 2, size)
         return _sum_of_products(
             builder,
             [
@@ -216,8 +231,8 @@ def add_outer(typing, weights, token, rows, at, vector):
     size = vector.size
 
     def code(context, builder, signature, arguments):
-        matrix = _Row(context, builder, signature, arguments, 1)
-        column = _Row(context, builder, signature, arguments, 3)
+        matrix = _Row(context, builder, signature, arguments, 1, size)
+        column = _Row(context, builder, signature, arguments, 3, size)
         for i in range(size):
             more = builder.fmul(column.spread(i, size), arguments[4])
             matrix.fill(i * size, builder.fadd(matrix.vector(i * size, size), more))
@@ -247,7 +262,7 @@ def step_columns(typing, columns, matrices, token):
     size = columns.count
 
     def code(context, builder, signature, arguments):
-        matrix = _Row(context, builder, signature, arguments, 2)
+        matrix = _Row(context, builder, signature, arguments, 2, size)
         old = cgutils.unpack_tuple(builder, arguments[0], size)
         new = [
             _sum_of_products(
@@ -266,7 +281,7 @@ def store_columns(typing, matrices, at, columns):
     size = columns.count
 
     def code(context, builder, signature, arguments):
-        matrix = _Row(context, builder, signature, arguments, 1)
+        matrix = _Row(context, builder, signature, arguments, 1, size)
         for j, column in enumerate(cgutils.unpack_tuple(builder, arguments[2], size)):
             for i in range(size):
                 matrix.fill(i * size + j, builder.extract_element(column, _index(i)))

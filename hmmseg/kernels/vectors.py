@@ -21,6 +21,7 @@ __all__ = [
     "add_outer",
     "identity",
     "inner",
+    "item",
     "load",
     "multiplied",
     "plus",
@@ -35,6 +36,11 @@ __all__ = [
 
 MOST_STATES = 8
 """The most values for which unrolling pays: beyond, code grows faster than it gains."""
+
+
+def item(values, at):
+    """Return element ``at`` of a flat array; the compiler need not look for a negative index."""
+    return values[at]
 
 
 def load(rows, at, size):
@@ -139,6 +145,7 @@ if not config.DISABLE_JIT:
         add_outer,
         identity,
         inner,
+        item,
         load,
         multiplied,
         plus,
