@@ -43,7 +43,7 @@ def finished(tmp_path_factory: pytest.TempPathFactory) -> Project:
     project.add(ROOT / "demo_data" / "assembly.fa.gz", ROOT / "demo_data" / "start.json")
     project.add(*sorted(DATA.glob("*.fa.gz")), *sorted((DATA / "models").glob("*.json")))
     # Small batches, so that even the demo is cut into several and gathered.
-    project.configure(ROWS, batch_bases=200_000)
+    project.configure(ROWS, batch_bases=400_000)
     project.snakemake()
     return project
 
