@@ -13,7 +13,7 @@ __all__ = ["draw", "main"]
 
 HERE = Path(__file__).resolve().parent
 RECORD, START, END = "scaffold_02", 0, 126_500
-WIDTH, LEFT, RIGHT, CURVE, ROW = 860, 96, 12, 54, 20
+WIDTH, LEFT, RIGHT, CURVE, ROW = 880, 124, 12, 54, 20
 COLOURS = {"island": "#b3541e", "domain": "#23618e", "insert": "#777777"}
 BINS = 380
 
