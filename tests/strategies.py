@@ -9,7 +9,7 @@ from numpy.typing import NDArray
 from hmmseg.model.parameters import Model
 from hmmseg.sequence.contigs import Contig
 from tests.fifty_digits import stationary
-from tests.reference import MISSING, Bases, Parameters, Piece
+from tests.reference import MISSING, Parameters, Piece
 
 __all__ = [
     "Texture",
@@ -44,7 +44,7 @@ def parameters_of(model: Model) -> Parameters:
         model.order,
         model.symmetric,
         model.start_kind,
-        np.asarray(model.start, dtype=np.float64),
+        np.asarray(model.start_probabilities, dtype=np.float64),
         np.asarray(model.transitions, dtype=np.float64),
         np.asarray(model.joint, dtype=np.float64),
     )
@@ -126,14 +126,16 @@ def random_parameters(
     )
 
 
-def random_bases(rng: np.random.Generator, length: int, missing: float = 0.0) -> Bases:
+def random_bases(rng: np.random.Generator, length: int, missing: float = 0.0) -> NDArray[np.uint8]:
     """Draw independent bases, a share of them missing."""
     bases = rng.integers(0, 4, size=length, dtype=np.uint8)
     bases[rng.random(length) < missing] = MISSING
     return bases
 
 
-def segmented_bases(rng: np.random.Generator, length: int, missing: float = 0.0) -> Bases:
+def segmented_bases(
+    rng: np.random.Generator, length: int, missing: float = 0.0
+) -> NDArray[np.uint8]:
     """Draw bases whose composition changes every hundred bases or so."""
     parts: list[NDArray[np.int64]] = []
     while sum(map(len, parts)) < length:

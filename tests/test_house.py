@@ -53,7 +53,7 @@ TOP_LEVEL = {
 }
 
 LONGEST_MODULE = 400
-MOST_PARAMETERS_IN_A_SENTENCE = 2
+MOST_PARAMETERS_IN_A_SENTENCE = 3
 """So many can be explained in prose; more need a section that names each."""
 
 FOLDERS_OF_MACHINES = ("home", "work", "tmp", "root", "Users", "mnt", "scratch")
@@ -259,7 +259,10 @@ def _parameters(function: Function) -> list[str]:
     named += spec.kwonlyargs
     if spec.kwarg:
         named.append(spec.kwarg)
-    return [argument.arg for argument in named if argument.arg not in {"self", "cls"}]
+    names = [argument.arg for argument in named if argument.arg not in {"self", "cls"}]
+    # The first parameter of a Numba intrinsic is the compiler's own; callers never pass it.
+    compiled = any("intrinsic" in ast.unparse(d) for d in function.decorator_list)
+    return names[1:] if compiled else names
 
 
 def _fields(node: ast.ClassDef) -> list[str]:

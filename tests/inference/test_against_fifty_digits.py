@@ -59,7 +59,9 @@ def test_stationary_start(stay: float) -> None:
     rng = np.random.default_rng(int(stay))
     for states in range(1, 9):
         p = random_parameters(rng, states, 0, "stationary", Texture(0.5, stay))
-        np.testing.assert_allclose(model_of(p).start, stationary(p.transitions), rtol=1e-12)
+        np.testing.assert_allclose(
+            model_of(p).start_probabilities, stationary(p.transitions), rtol=1e-12
+        )
 
 
 def _extreme(
@@ -102,7 +104,7 @@ def test_extreme_models(name: str, closed: bool) -> None:
     pieces = [
         Piece([0] * 120 + [1] * 60 + [2] * 20 + [0] * 63 + [MISSING] * 7 + [1] * 30, closed),
         Piece([0, 1] * 150, closed),
-        Piece(rng.integers(0, 3, size=300), closed),
+        Piece(rng.integers(0, 3, size=300, dtype=np.uint8), closed),
         Piece([2] * 300, closed),
     ]
     model = model_of(p)

@@ -31,7 +31,7 @@ def test_step_over_several_contigs(states: int, texture: Texture) -> None:
     before = peer.score(symbols, lengths)
     peer.fit(symbols, lengths)
     assert log_likelihood == pytest.approx(before, rel=1e-9)
-    np.testing.assert_allclose(model.start, peer.startprob_, rtol=0, atol=1e-9)
+    np.testing.assert_allclose(model.start_probabilities, peer.startprob_, rtol=0, atol=1e-9)
     np.testing.assert_allclose(model.transitions, peer.transmat_, rtol=0, atol=1e-9)
     np.testing.assert_allclose(model.joint, peer.emissionprob_, rtol=0, atol=1e-9)
 
@@ -47,6 +47,6 @@ def test_three_steps_in_a_row() -> None:
         model, _ = step(model, contigs)
     symbols, lengths = column(sequences)
     peer = peer_of(p, n_iter=3, params="ste", tol=0.0).fit(symbols, lengths)
-    np.testing.assert_allclose(model.start, peer.startprob_, rtol=0, atol=1e-9)
+    np.testing.assert_allclose(model.start_probabilities, peer.startprob_, rtol=0, atol=1e-9)
     np.testing.assert_allclose(model.transitions, peer.transmat_, rtol=0, atol=1e-9)
     np.testing.assert_allclose(model.joint, peer.emissionprob_, rtol=0, atol=1e-9)

@@ -5,6 +5,7 @@ what makes it exact is checked here from outside, by likelihoods alone.
 """
 
 import numpy as np
+import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
@@ -17,14 +18,16 @@ LOSS_PER_BASE = 1e-11
 """Nats: what rounding may take."""
 
 STEPS = 6
+MANY_STEPS = 60
+"""So many that most models no longer move, and rounding is all that is left of a gain."""
 
 
-def _climb(p: Parameters, pieces: list[Piece]) -> None:
+def _climb(p: Parameters, pieces: list[Piece], steps: int = STEPS) -> None:
     contigs = contigs_of(pieces)
     bases = sum(len(contig) for contig in contigs)
     model = model_of(p)
     trace = []
-    for _ in range(STEPS):
+    for _ in range(steps):
         model, before = step(model, contigs)
         trace.append(before)
     trace.append(float(np.sum(log_likelihood(model, contigs))))
@@ -55,3 +58,13 @@ def test_circles(case: tuple[Parameters, list[Piece]], circles: int) -> None:
     p, pieces = case
     closed = [Piece(piece.bases, closed=True) for piece in pieces[:circles]]
     _climb(p, closed + pieces[circles:])
+
+
+@pytest.mark.slow
+@given(case=learning_cases(max_contigs=30), circles=st.integers(0, 3))
+@settings(max_examples=400)
+def test_long_climbs(case: tuple[Parameters, list[Piece]], circles: int) -> None:
+    """Towards the top, where no step has anything left to give."""
+    p, pieces = case
+    closed = [Piece(piece.bases, closed=True) for piece in pieces[:circles]]
+    _climb(p, closed + pieces[circles:], MANY_STEPS)
