@@ -34,7 +34,9 @@ def cli(debug: bool) -> None:
 
 for _command in (
     models.survey,
+    models.presets,
     models.train,
+    models.explain,
     calls.decode,
     models.score,
     models.simulate,

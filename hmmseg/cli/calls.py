@@ -46,7 +46,7 @@ __all__ = ["batches", "decode", "gather", "summary", "verify"]
     metavar="G",
     help="Merge regions of one state at most this far apart, first of all.",
 )
-@options.sequence_options()
+@options.sequence_options(soft_mask=True)
 @options.threads
 @options.force
 def decode(

@@ -7,7 +7,7 @@ import click
 from hmmseg.cli import options
 from hmmseg.errors import UsageError
 
-__all__ = ["score", "simulate", "survey", "train"]
+__all__ = ["explain", "presets", "print_findings", "score", "simulate", "survey", "train"]
 
 # Rooms are imported inside the commands, so that --help need not wait for compilers and plots.
 
@@ -30,6 +30,8 @@ def survey(sources: Any, output: str, force: bool) -> None:
 @click.command()
 @options.fasta
 @click.option("--output", required=True, metavar="MODEL.json", help="Model document to write.")
+@click.option("--preset", metavar="NAME", help="Start from a preset; see hmmseg presets.")
+@click.option("--spec", metavar="FILE.yaml", help="Start from what this file says is wanted.")
 @click.option("--init", metavar="MODEL.json", help="Start from this model.")
 @click.option(
     "--states",
@@ -65,7 +67,7 @@ def survey(sources: Any, output: str, force: bool) -> None:
     type=click.IntRange(1),
     default=None,
     metavar="R",
-    help="Fits from different starts.  [default: 1 with --init, else 5]",
+    help="Fits from different starts.  [default: 5; 1 with --init, a preset or specification]",
 )
 @click.option(
     "--seed",
@@ -73,15 +75,14 @@ def survey(sources: Any, output: str, force: bool) -> None:
     default=1,
     show_default=True,
     metavar="S",
-    help="Of the random starts.",
+    help="Of everything random.",
 )
 @click.option(
     "--max-iterations",
-    type=click.IntRange(1),
-    default=500,
-    show_default=True,
+    type=click.IntRange(0),
+    default=None,
     metavar="I",
-    help="Iterations of one fit at most.",
+    help="Iterations of one fit at most; 0 leaves the start as it is.  [default: 500]",
 )
 @click.option(
     "--tolerance",
@@ -94,41 +95,109 @@ def survey(sources: Any, output: str, force: bool) -> None:
 @click.option(
     "--pseudocount",
     type=click.FloatRange(0),
-    default=0.0,
-    show_default=True,
+    default=None,
     metavar="BASES",
-    help="Bases added to each state's word counts, in all.",
+    help="Bases added to each state's word counts, in all.  [default: 0, or as the preset says]",
 )
-@options.sequence_options()
+@options.train_bases
+@options.sequence_options(soft_mask=True)
 @options.threads
 @options.force
 def train(
-    sources: Any, output: str, init: str | None, restarts: int | None, start: str,
-    threads: int, force: bool, **plan: Any,
+    sources: Any, output: str, preset: str | None, spec: str | None, init: str | None,
+    start: str, train_bases: int, threads: int, force: bool, **plan: Any,
 ) -> None:  # fmt: skip
     """Fit a model to sequence with Baum-Welch."""
     from hmmseg.jobs import train as job
-    from hmmseg.model import load_model
     from hmmseg.training.restarts import Plan
 
-    if plan["symmetric"] and start == "free" and not init:
-        raise UsageError("--start free needs --stranded: a symmetric model starts stationary")
+    _check_start(preset, spec, init, plan["symmetric"], start)
+    origin, proposed = job.origin(preset, spec, init)
+    for key, value in proposed.items():
+        plan[key] = value if plan[key] is None else plan[key]
     found = job.train(
-        sources, output,
-        Plan(
-            init=load_model(init) if init else None,
-            restarts=restarts or (1 if init else 5),
-            start_kind=start,
-            **plan,
-        ),
-        init, threads, force,
+        sources, output, Plan(start_kind=start, **plan), origin,
+        threads=threads, force=force, train_bases=train_bases or None,
     )  # fmt: skip
-    click.echo("state\treported\tgc\texpected_length\tshare")
-    for row in found:
-        reported = "yes" if row.reported else "no"
+    print_findings(found.findings, found.cautions)
+
+
+def _check_start(
+    preset: str | None, spec: str | None, init: str | None, symmetric: bool, start: str
+) -> None:
+    """Refuse options that contradict one another."""
+    given = [name for name, x in (("--preset", preset), ("--spec", spec), ("--init", init)) if x]
+    if len(given) > 1:
+        raise UsageError(f"{' and '.join(given)} do not go together; give one")
+    if given:
+        context = click.get_current_context()
+        for name in ("states", "order", "symmetric", "start"):
+            if context.get_parameter_source(name) is click.core.ParameterSource.COMMANDLINE:
+                raise UsageError(
+                    f"--{name} does not go with {given[0]}, which says it; leave it out"
+                )
+    elif symmetric and start == "free":
+        raise UsageError("--start free needs --stranded: a symmetric model starts stationary")
+
+
+def print_findings(findings: Any, cautions: Any) -> None:
+    """Print what a model found, as a table and in words; cautions to standard error."""
+    from hmmseg.progress import warn
+
+    click.echo("state\treported\tgc\tcpg_oe\texpected_length\tshare\twords\tin_words")
+    for row in findings:
+        cpg = row.cpg_observed_expected
+        words = ", ".join(f"{word} x{times:.2f}" for word, times in row.words)
         click.echo(
-            f"{row.name}\t{reported}\t{row.gc:.3f}\t{row.expected_length:.0f}\t{row.share:.4f}"
+            f"{row.name}\t{'yes' if row.reported else 'no'}\t{row.gc:.3f}\t"
+            f"{'NA' if cpg is None else f'{cpg:.2f}'}\t{row.expected_length:.0f}\t"
+            f"{row.share:.4f}\t{words or 'NA'}\t{row.text}"
         )
+    for line in cautions:
+        warn(line)
+
+
+@click.command()
+@click.argument("model", metavar="MODEL.json")
+def explain(model: str) -> None:
+    """Say what a model's states are, and what to be careful about."""
+    from hmmseg.jobs import explain as job
+
+    found = job.explain(model)
+    print_findings(found.findings, found.cautions)
+
+
+@click.command()
+@click.argument("name", required=False, metavar="[NAME]")
+def presets(name: str | None) -> None:
+    """List the presets, or print one's document.
+
+    The printed document is a specification: save it, change it, and give it to train --spec.
+    """
+    from hmmseg.model.presets import PRESETS, load_preset, preset_text
+
+    if name is not None:
+        click.echo(preset_text(name), nl=False)
+        return
+    for preset in PRESETS:
+        wanted = load_preset(preset)
+        mask = {"use": "used", "hide": "hidden"}[wanted.soft_mask]
+        lengths = ", ".join(
+            f"{s.name}{'' if s.reported else ' (not reported)'} {s.expected_length:,.0f}"
+            for s in wanted.states
+        )
+        click.echo(f"{preset}")
+        for label, text in (
+            ("for", wanted.purpose),
+            ("finds", wanted.finds),
+            ("also finds", wanted.also_finds),
+            ("states", f"order {wanted.order}; expected lengths in bases: {lengths}"),
+            ("lower case", f"{mask}{'' if wanted.trained else '; not trained, placed by GC'}"),
+            ("calls", f"decode --decoder {wanted.decoder} --min-length {wanted.min_length}"),
+            ("source", wanted.source),
+        ):
+            click.echo(click.wrap_text(text, 96, f"  {label + ':':<12}", " " * 14))
+        click.echo()
 
 
 @click.command()

@@ -7,13 +7,18 @@ from typing import Any
 
 import click
 
-__all__ = ["fasta", "force", "model", "output", "sequence_options", "threads"]
+__all__ = ["fasta", "force", "model", "output", "sequence_options", "threads", "train_bases"]
 
 Decorated = Callable[..., Any]
 
 
-def sequence_options(circular: bool = True) -> Callable[[Decorated], Decorated]:
-    """Add the options that choose records, and hand them on as one ``sources``."""
+def sequence_options(
+    circular: bool = True, soft_mask: bool = False
+) -> Callable[[Decorated], Decorated]:
+    """Add the options that choose records, and hand them on as one ``sources``.
+
+    ``circular`` and ``soft_mask`` say whether there are options for these, too.
+    """
 
     def decorate(function: Decorated) -> Decorated:
         @wraps(function)
@@ -22,6 +27,7 @@ def sequence_options(circular: bool = True) -> Callable[[Decorated], Decorated]:
             min_record: int,
             exclude: str | None,
             gap_min: int,
+            soft_mask: str | None = None,
             circular: tuple[str, ...] = (),
             **others: Any,
         ) -> Any:
@@ -29,7 +35,7 @@ def sequence_options(circular: bool = True) -> Callable[[Decorated], Decorated]:
 
             fasta = others.pop("fasta")
             names = (fasta,) if isinstance(fasta, str) else fasta
-            sources = Sources(names, records, min_record, exclude, circular, gap_min)
+            sources = Sources(names, records, min_record, exclude, circular, gap_min, soft_mask)
             return function(sources, **others)
 
         options = [
@@ -53,6 +59,16 @@ def sequence_options(circular: bool = True) -> Callable[[Decorated], Decorated]:
                     help="This record is a circle; may be given again.",
                 )
             )
+        if soft_mask:
+            options.append(
+                click.option(
+                    "--soft-mask",
+                    type=click.Choice(["use", "hide"]),
+                    default=None,
+                    help="Whether lower-case bases are used, or hidden as missing.  "
+                    "[default: as the preset or model says, else use]",
+                )
+            )
         wrapped: Decorated = with_sources
         for option in reversed(options):
             wrapped = option(wrapped)
@@ -65,6 +81,11 @@ fasta = click.argument("fasta", nargs=-1, required=True, metavar="FASTA...")
 force = click.option("--force", is_flag=True, help="Replace an earlier result.")
 output = click.option("--output", required=True, metavar="DIR", help="Folder to write.")
 model = click.option("--model", required=True, metavar="MODEL.json", help="Model to use.")
+
+train_bases = click.option(
+    "--train-bases", type=click.IntRange(0), default=50_000_000, show_default=True, metavar="N",
+    help="Train on a random sample of about so many bases; 0 for everything.",
+)  # fmt: skip
 
 
 def _default_threads() -> int:

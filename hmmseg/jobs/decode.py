@@ -17,6 +17,7 @@ from hmmseg.progress import Progress, warn
 from hmmseg.provenance import write_provenance
 from hmmseg.regions.calling import Caller, Calls
 from hmmseg.regions.intervals import Filters
+from hmmseg.regions.masking import SOFT_MASKED, soft_masked_fraction
 from hmmseg.regions.table import number_regions, regions_of_record
 from hmmseg.sequence.contigs import Contig
 from hmmseg.sequence.reading import Record
@@ -121,6 +122,7 @@ def decode(
     caller = Caller(model, decoder, threshold, filters, threads)
     if not caller.states:
         raise ModelError(f"{model_path}: no state is reported; set 'reported' of one to true")
+    sources = sources.with_soft_mask((model.training or {}).get("soft_mask", "use"))
     parameters = {
         **sources.parameters(),
         "model": Path(model_path),
@@ -201,7 +203,9 @@ class _Run:
             calls.append((contig, self._caller.call(contig, self._follower(contig))))
             self._contigs += 1
             self._decoded += len(contig)
-        self._tables.append(regions_of_record(calls, self._model.names))
+        table = regions_of_record(calls, self._model.names)
+        table[SOFT_MASKED] = soft_masked_fraction(table, record)
+        self._tables.append(table)
 
     def _follower(self, contig: Contig) -> Callable[[int, NDArray[np.float64]], None]:
         """Return what takes the posteriors of a contig to the tracks."""

@@ -1,14 +1,16 @@
 """What a command reads: sequence files, and which records and parts of them."""
 
 from collections.abc import Iterator, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any
 
 from hmmseg.errors import SequenceError
 from hmmseg.progress import warn
+from hmmseg.sequence.alphabet import MISSING
 from hmmseg.sequence.contigs import GAP_MIN, Contig, split
 from hmmseg.sequence.reading import Record, read_records
+from hmmseg.sequence.sampling import sample_contigs
 from hmmseg.sequence.selection import Selection
 
 __all__ = ["Sources"]
@@ -32,6 +34,9 @@ class Sources:
         Records that are circular whatever their header says.
     gap_min
         Shortest run of N that is a gap.
+    soft_mask
+        ``"use"``: lower-case bases are ordinary; ``"hide"``: they are missing. None: whatever
+        the model or the preset at hand says, else ``"use"``.
     """
 
     fasta: tuple[str, ...]
@@ -40,6 +45,11 @@ class Sources:
     exclude: str | None = None
     circular: tuple[str, ...] = ()
     gap_min: int = GAP_MIN
+    soft_mask: str | None = None
+
+    def with_soft_mask(self, policy: str) -> "Sources":
+        """Return the same with a policy, unless one was asked for."""
+        return self if self.soft_mask is not None else replace(self, soft_mask=policy)
 
     def read(self) -> Iterator[Record]:
         """Yield the selected records."""
@@ -57,7 +67,8 @@ class Sources:
         selection = self._selection()
         found = False
         for record in selection.apply(read_records(self.fasta)):
-            contigs = split(record, self.gap_min, selection.exclude.get(record.name))
+            seen = _hidden(record) if self.soft_mask == "hide" else record
+            contigs = split(seen, self.gap_min, selection.exclude.get(record.name))
             if not contigs:
                 warn(f"record {record.name}: skipped, it has no known base outside gaps")
             found = found or bool(contigs)
@@ -67,6 +78,13 @@ class Sources:
                 f"{', '.join(self.fasta)}: no record has a known base outside gaps and "
                 "exclusions; check the file or the selection"
             )
+
+    def read_sample(self, bases: int | None, seed: int) -> tuple[list[Contig], bool]:
+        """Return the contigs, or a seeded sample of about so many bases, and whether it is one."""
+        everything = (contig for _, found in self.read_contigs() for contig in found)
+        return (
+            (list(everything), False) if bases is None else sample_contigs(everything, bases, seed)
+        )
 
     def _selection(self) -> Selection:
         return Selection.from_options(self.records, self.min_record, self.exclude, self.circular)
@@ -80,8 +98,17 @@ class Sources:
             "exclude": Path(self.exclude) if self.exclude else None,
             "circular": list(self.circular),
             "gap_min": self.gap_min,
+            "soft_mask": self.soft_mask or "use",
         }
 
     def files(self) -> Sequence[str]:
         """Return the files that bear on the result."""
         return [*self.fasta, *(path for path in (self.records, self.exclude) if path)]
+
+
+def _hidden(record: Record) -> Record:
+    """Return the record with its soft-masked bases missing."""
+    bases = record.bases.copy()
+    for start, end in record.soft_mask:
+        bases[start:end] = MISSING
+    return replace(record, bases=bases)

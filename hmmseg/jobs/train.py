@@ -1,51 +1,116 @@
 """The command ``train``: fit a model to sequence."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from math import isfinite
 from pathlib import Path
 from typing import Any
 
 from hmmseg import __version__
+from hmmseg.evidence.agreement import difference
+from hmmseg.evidence.cautions import cautions
+from hmmseg.evidence.findings import StateFinding, describe
 from hmmseg.inference.streams import Corpus
 from hmmseg.jobs.sources import Sources
-from hmmseg.model import Model, model_to_dict
-from hmmseg.model.parameters import FREE
+from hmmseg.model import load_model, model_to_dict
+from hmmseg.model.anchoring import anchored
+from hmmseg.model.presets import load_preset
+from hmmseg.model.specification import Specification, load_specification
 from hmmseg.outputs import check_target, sha256_of, whole_file, write_json
 from hmmseg.progress import Progress, warn
 from hmmseg.provenance import write_provenance
 from hmmseg.training.baum_welch import Fit
 from hmmseg.training.restarts import Plan, Restarts, fit_restarts
+from hmmseg.training.starts import word_counts
 
-__all__ = ["StateRow", "train"]
+__all__ = ["Origin", "Trained", "origin", "train"]
+
+
+_ITERATIONS = 500
 
 
 @dataclass(frozen=True)
-class StateRow:
-    """One line of the table that training ends with.
+class Origin:
+    """Where training starts, if not at random.
+
+    Parameters
+    ----------
+    init
+        A model document.
+    wanted
+        A specification, which is anchored to the sequence.
+    file
+        The file it was read from; None for a preset.
+    """
+
+    init: str | None = None
+    wanted: Specification | None = None
+    file: str | None = None
+
+    def parameters(self) -> dict[str, Any]:
+        """Return what is to stand in the provenance."""
+        if self.file is not None:
+            return {"spec": Path(self.file).name}
+        if self.wanted is not None:
+            return {"preset": self.wanted.name}
+        return {"init": Path(self.init).name if self.init else None}
+
+    def files(self) -> list[str]:
+        """Return the files that bear on the result."""
+        return [path for path in (self.init, self.file) if path]
+
+
+@dataclass(frozen=True)
+class Trained:
+    """What training ended with.
 
     Attributes
     ----------
-    name : str
-        Of the state.
-    reported : bool
-        Whether its regions are reported.
-    gc : float
-        GC fraction of its emissions.
-    expected_length : float
-        Mean length of a visit, in bases.
-    share : float
-        Expected share of positions.
+    findings : list of StateFinding
+        One for each state.
+    cautions : list of str
+        What calls for a person's eye.
+    bits_per_base : float
+        Of the final model.
     """
 
-    name: str
-    reported: bool
-    gc: float
-    expected_length: float
-    share: float
+    findings: list[StateFinding]
+    cautions: list[str]
+    bits_per_base: float
+
+
+def origin(preset: str | None, spec: str | None, init: str | None) -> tuple[Origin, dict[str, Any]]:
+    """Return where training starts, and the settings of a plan that it proposes.
+
+    Parameters
+    ----------
+    preset
+        Name of a preset.
+    spec
+        File of a specification.
+    init
+        File of a model.
+    """
+    proposed = {"restarts": 1 if init else 5, "max_iterations": _ITERATIONS, "pseudocount": 0.0}
+    if not preset and not spec:
+        return Origin(init), proposed
+    wanted = load_preset(preset) if preset else load_specification(spec or "")
+    return Origin(None, wanted, spec), {
+        "restarts": wanted.restarts,
+        "max_iterations": _ITERATIONS if wanted.trained else 0,
+        "pseudocount": wanted.pseudocount,
+    }
 
 
 def train(
-    sources: Sources, output: str, plan: Plan, init: str | None, threads: int, force: bool
-) -> list[StateRow]:
+    sources: Sources,
+    output: str,
+    plan: Plan,
+    start: Origin,
+    *,
+    threads: int,
+    force: bool,
+    train_bases: int | None = None,
+) -> Trained:
     """Fit a model and write its document.
 
     Parameters
@@ -55,21 +120,26 @@ def train(
     output
         The model document to write; its provenance goes beside it.
     plan
-        What to fit and how.
-    init
-        The file the plan's starting model was read from.
+        What to fit and how; its starting model is set from the origin. No iteration means that
+        the starting model is written as it is.
+    start
+        Where training starts.
     threads
         Threads to use; the result does not depend on it.
     force
         Replace an existing document.
-
-    Returns
-    -------
-    list of StateRow
-        One for each state.
+    train_bases
+        Train on a seeded sample of about so many bases; None for everything.
     """
     check_target(output, force)
-    contigs = [contig for _, found in sources.read_contigs() for contig in found]
+    if start.init:
+        plan = replace(plan, init=load_model(start.init))
+    if start.wanted is not None:
+        sources = sources.with_soft_mask(start.wanted.soft_mask)
+    contigs, sampled = sources.read_sample(train_bases, plan.seed)
+    if start.wanted is not None:
+        counts = word_counts(contigs, start.wanted.order)
+        plan = replace(plan, init=anchored(start.wanted, counts))
     order = plan.init.order if plan.init else plan.order
     symmetric = plan.init.symmetric if plan.init else plan.symmetric
     corpus = Corpus(contigs, order, symmetric and order > 0, threads)
@@ -80,30 +150,56 @@ def train(
 
         found = fit_restarts(plan, corpus, threads, watch)
     best = found.fits[found.best]
-    if not best.converged:
+    _tell(plan, found)
+    document = model_to_dict(found.model)
+    document["training"] = {
+        **_history(sources, plan, corpus, found, best),
+        **start.parameters(),
+        "soft_mask": sources.soft_mask or "use",
+        "sampled": sampled,
+    }
+    with whole_file(output, force=force) as temporary:
+        write_json(temporary, document)
+    parameters = _parameters(sources, plan, start, train_bases)
+    inputs = [*sources.files(), *start.files()]
+    write_provenance(output, "train", parameters, plan.seed, inputs, [output])
+    bases = corpus.bases if plan.max_iterations else None
+    return Trained(describe(found.model), cautions(found.model, bases), best.bits_per_base)
+
+
+def _tell(plan: Plan, found: Restarts) -> None:
+    """Warn of what a person should know about the search."""
+    best = found.fits[found.best]
+    if not best.converged and plan.max_iterations:
         warn(
             f"training stopped after {plan.max_iterations} iterations before it converged; raise "
             "--max-iterations or --tolerance"
         )
-    document = model_to_dict(found.model)
-    document["training"] = _history(sources, plan, corpus, found, best)
-    with whole_file(output, force=force) as temporary:
-        write_json(temporary, document)
-    inputs = [*sources.files(), *([init] if init else [])]
-    write_provenance(output, "train", _parameters(sources, plan, init), plan.seed, inputs, [output])
-    return _rows(found.model)
+    if len(found.fits) > 1:
+        order = sorted(range(len(found.fits)), key=lambda i: -found.fits[i].objective)
+        second = found.fits[order[1]]
+        apart = best.objective - second.objective
+        if text := difference(found.model, second.model):
+            warn(
+                f"the best two of {len(found.fits)} starts, {apart:.1f} nats apart, found different "
+                f"things: {text}; give more --restarts, or say what is wanted with --preset or "
+                "--spec"
+            )
 
 
-def _parameters(sources: Sources, plan: Plan, init: str | None) -> dict[str, Any]:
-    own: dict[str, Any] = {
-        "init": Path(init) if init else None,
-        "states": plan.states,
-        "order": plan.order,
-        "symmetric": plan.symmetric,
-        "start": plan.start_kind,
-    }
-    if init:
-        own = {"init": Path(init)}
+def _parameters(
+    sources: Sources, plan: Plan, start: Origin, train_bases: int | None
+) -> dict[str, Any]:
+    own = start.parameters()
+    if plan.init is None:
+        own |= {
+            "states": plan.states,
+            "order": plan.order,
+            "symmetric": plan.symmetric,
+            "start": plan.start_kind,
+        }
+    else:
+        own |= {"order": plan.init.order}
     return {
         **sources.parameters(),
         **own,
@@ -111,6 +207,7 @@ def _parameters(sources: Sources, plan: Plan, init: str | None) -> dict[str, Any
         "max_iterations": plan.max_iterations,
         "tolerance": plan.tolerance,
         "pseudocount": plan.pseudocount,
+        "train_bases": train_bases,
     }
 
 
@@ -137,6 +234,7 @@ def _history(
                 "log_likelihood": one.log_likelihood,
                 "iterations": len(one.trace) - 1,
                 "converged": one.converged,
+                "states": _briefly(one),
                 "trace": list(one.trace),
             }
             for one in found.fits
@@ -144,22 +242,13 @@ def _history(
     }
 
 
-def _rows(model: Model) -> list[StateRow]:
-    if model.start_kind == FREE:
-        from hmmseg.training.starts import long_run_share  # noqa: PLC0415 - only here
-
-        share = long_run_share(model)
-    else:
-        share = model.start_probabilities
+def _briefly(fit: Fit) -> list[dict[str, float | None]]:
+    """Return what one fit found, in numbers."""
     return [
-        StateRow(
-            name=model.names[i],
-            reported=model.reported[i],
-            gc=float(model.gc[i]),
-            expected_length=float("inf")
-            if model.transitions[i, i] == 1
-            else float(1 / (1 - model.transitions[i, i])),
-            share=float(share[i]),
-        )
-        for i in range(model.states)
+        {
+            "gc": state.gc,
+            "expected_length": state.expected_length if isfinite(state.expected_length) else None,
+            "share": state.share,
+        }
+        for state in describe(fit.model)
     ]

@@ -29,7 +29,15 @@ from hmmseg.errors import ModelError
 from hmmseg.model.parameters import FREE, MAX_ORDER, STATIONARY, Model
 from hmmseg.model.stationary import stationary_distribution
 
-__all__ = ["FORMAT", "VERSION", "load_model", "model_from_dict", "model_to_dict"]
+__all__ = [
+    "FORMAT",
+    "VERSION",
+    "is_plain_name",
+    "joint_of_chain",
+    "load_model",
+    "model_from_dict",
+    "model_to_dict",
+]
 
 FORMAT = "hmmseg-model"
 VERSION = 1
@@ -148,7 +156,7 @@ def _read_state(index: int, state: Any, order: int) -> tuple[str, bool, NDArray[
         raise ModelError(f"{where}: must be an object with name, reported and joint")
     _check_keys(f"{where}.", state, _STATE_KEYS, {"name", "reported"})
     name, reported = state["name"], state["reported"]
-    if not isinstance(name, str) or not _is_plain_name(name):
+    if not isinstance(name, str) or not is_plain_name(name):
         raise ModelError(
             f"{where}.name: {name!r} must be 1 to {_NAME_LIMIT} letters, digits, '-' or '.'"
         )
@@ -163,10 +171,10 @@ def _read_state(index: int, state: Any, order: int) -> tuple[str, bool, NDArray[
             f"{where}.conditional: possible up to order {_CONDITIONAL_MAX_ORDER}; give joint"
         )
     rows = _numbers(f"{where}.conditional", state["conditional"], (4**order, 4))
-    return name, reported, _joint_of_chain(f"{where}.conditional", rows)
+    return name, reported, joint_of_chain(f"{where}.conditional", rows)
 
 
-def _is_plain_name(name: str) -> bool:
+def is_plain_name(name: str) -> bool:
     """Tell whether a state's name can stand in a file name and in every track format."""
     return (
         0 < len(name) <= _NAME_LIMIT
@@ -191,8 +199,11 @@ def _numbers(where: str, values: Any, shape: tuple[int, ...]) -> NDArray[np.floa
     return np.array(values, dtype=np.float64)
 
 
-def _joint_of_chain(where: str, rows: NDArray[np.float64]) -> NDArray[np.float64]:
-    """Return the word probabilities of the stationary chain with these conditionals."""
+def joint_of_chain(where: str, rows: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Return the word probabilities of the stationary chain with these conditionals.
+
+    ``rows`` is float64[context, symbol]; ``where`` is what messages call it.
+    """
     contexts = len(rows)
     for index, row in enumerate(rows):
         if not np.isfinite(row).all() or row.min() < 0 or abs(row.sum() - 1) > 1e-6:

@@ -1,0 +1,1 @@
+"""Tests of models, of their documents and of what describes them."""
