@@ -12,7 +12,7 @@ import pytest
 from hmmseg.cli import main
 
 COMMANDS = (
-    "survey", "train", "decode", "score", "simulate", "verify", "batches", "gather", "summary",
+    "survey", "presets", "train", "explain", "decode", "score", "simulate", "verify", "batches", "gather", "summary",
 )  # fmt: skip
 
 MODEL: dict[str, Any] = {
@@ -62,7 +62,7 @@ def test_whole_job(here: Path, capsys: pytest.CaptureFixture[str]) -> None:
     assert main(["survey", "some.fa", "--output", "survey"]) == 0
     assert main(["train", "some.fa", "--output", "own.json", "--restarts", "2"]) == 0
     out, _ = lines_of(capsys)
-    assert out[-3:-2] == ["state\treported\tgc\texpected_length\tshare"]
+    assert out[-3].startswith("state\treported\tgc\tcpg_oe\texpected_length\tshare\t")
     assert main(["decode", "some.fa", "--model", "own.json", "--output", "calls"]) == 0
     for folder in ("survey", "calls"):
         assert main(["verify", folder]) == 0

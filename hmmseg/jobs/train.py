@@ -181,8 +181,8 @@ def _tell(plan: Plan, found: Restarts) -> None:
         apart = best.objective - second.objective
         if text := difference(found.model, second.model):
             warn(
-                f"the best two of {len(found.fits)} starts, {apart:.1f} nats apart, found different "
-                f"things: {text}; give more --restarts, or say what is wanted with --preset or "
+                f"the best two of {len(found.fits)} starts, {apart:.1f} nats apart, found "
+                f"different things: {text}; give more --restarts, or say what is wanted with --preset or "
                 "--spec"
             )
 
