@@ -19,6 +19,7 @@ from tests.strategies import (
     contig_of,
     contigs_of,
     model_of,
+    random_bases,
     random_parameters,
     segmented_bases,
 )
@@ -144,3 +145,18 @@ def test_threads_give_the_same_bits(order: int, kind: str) -> None:
         assert first.tobytes() == second.tobytes()
         first_path, second_path = (best_path(model, contig, threads=n) for n in (1, 2))
         assert first_path.tobytes() == second_path.tobytes()
+
+
+@pytest.mark.parametrize("stride", [2, -1])
+def test_views_are_read_like_copies(stride: int) -> None:
+    """Bases need not lie side by side in memory."""
+    rng = np.random.default_rng(6)
+    p = random_parameters(rng, 2, 1, "stationary")
+    model = model_of(p)
+    view = random_bases(rng, 1000, missing=0.03)[::stride]
+    strided, copied = contig_of(Piece(view)), contig_of(Piece(view.copy()))
+    assert not strided.bases.flags.c_contiguous
+    one, other = log_likelihood(model, [strided, copied])
+    assert one == other
+    np.testing.assert_array_equal(posterior(model, strided), posterior(model, copied))
+    np.testing.assert_array_equal(best_path(model, strided), best_path(model, copied))

@@ -127,7 +127,7 @@ def test_symmetric_step_keeps_the_ties() -> None:
     for order in (0, 1, 2):
         p = random_parameters(rng, 3, order, "symmetric", Texture(1.0, 10.0))
         bases = np.asarray(segmented_bases(rng, 2000, missing=0.03))
-        other = np.where(bases == MISSING, MISSING, 3 - bases)[::-1]
+        other = np.where(bases == MISSING, MISSING, 3 - bases)[::-1].copy()
         here, _ = step(model_of(p), contigs_of([Piece(bases)]))
         there, _ = step(model_of(p), contigs_of([Piece(other)]))
         np.testing.assert_allclose(here.joint, there.joint, rtol=0, atol=1e-10)
