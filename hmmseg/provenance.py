@@ -6,6 +6,7 @@ and checksums. It has no dates, no host and no absolute paths, so two runs give 
 
 import json
 import platform
+import zlib
 from collections.abc import Mapping, Sequence
 from importlib import metadata
 from pathlib import Path
@@ -21,7 +22,7 @@ FORMAT = "hmmseg-provenance"
 VERSION = 1
 
 # What computes or writes results; the versions of the rest say nothing about them.
-_SOFTWARE = ("numpy", "numba", "llvmlite", "biopython", "pandas", "pyBigWig")
+_SOFTWARE = ("numpy", "numba", "llvmlite", "biopython", "pandas")
 # A result is the same whatever these are.
 _NOT_RESULT = frozenset({"debug", "force", "output", "quiet", "threads"})
 _KEYS = frozenset(
@@ -115,7 +116,9 @@ def read_provenance(folder_or_file: str | Path) -> dict[str, Any]:
 
 def _software() -> dict[str, str]:
     versions = {"hmmseg": __version__, "python": platform.python_version()}
-    return versions | {name: metadata.version(name) for name in _SOFTWARE}
+    versions |= {name: metadata.version(name) for name in _SOFTWARE}
+    # Another zlib may compress the same content to other bytes.
+    return versions | {"zlib": zlib.ZLIB_RUNTIME_VERSION}
 
 
 def _fingerprint(path: str | Path, name: str) -> dict[str, Any]:

@@ -47,7 +47,7 @@ def test_the_document(tmp_path: Path) -> None:
     software = document.pop("software")
     assert software["hmmseg"] == hmmseg.__version__
     assert software["numpy"] == np.__version__
-    assert {"python", "numba", "biopython"} <= set(software)
+    assert {"python", "numba", "biopython", "zlib"} <= set(software)
     sha = {text: hashlib.sha256(text).hexdigest() for text in (b">a\nACGT\n", b"{}", b"")}
     bed = b"a\t0\t4\n"
     assert document == {

@@ -1,14 +1,15 @@
 """Posterior tracks as bigWig: written in runs of equal values, checked before and after.
 
-References
-----------
-Kent W. J., Zweig A. S., Barber G., Hinrichs A. S., Karolchik D. (2010). BigWig and BigBed:
-enabling browsing of large distributed datasets. Bioinformatics 26, 2204-2207, with the file
-layout in its supplement.
+The package writes the file itself. pyBigWig 0.3, the usual library, takes time that grows with
+the square of the number of records (a minute for 20,000 when tried), crashes or runs for ever
+when the disk is full, and makes a file that others cannot read if there are no values. The
+tests read what is written here by pyBigWig and by pybigtools.
 """
 
 import struct
-from collections.abc import Mapping
+import zlib
+from collections.abc import Iterator, Mapping
+from contextlib import contextmanager
 from dataclasses import dataclass
 from pathlib import Path
 from types import TracebackType
@@ -18,22 +19,20 @@ import numpy as np
 import numpy.typing as npt
 
 from hmmseg.errors import OutputError
+from hmmseg.tracks.bbi import RUN
+from hmmseg.tracks.bigwig_file import RUNS_IN_BLOCK, BigWigReader, BigWigWriter
 
-__all__ = ["PosteriorTrack", "TrackSummary", "rounded_runs", "summarize_track"]
+__all__ = ["PosteriorTrack", "TrackSummary", "read_track", "rounded_runs", "summarize_track"]
 
-# Runs handed over at once. The layout of the file depends on it, so it is no option.
-RUNS_AT_ONCE = 16_384
-# Bases read at once when a track is checked: 16 MB of float32.
-BASES_AT_ONCE = 4_194_304
 MAX_LENGTH = 2**32 - 1
 LEVELS = 1000.0
 
-_Runs = tuple[npt.NDArray[np.int64], npt.NDArray[np.int64], npt.NDArray[np.float32]]
+_Integers = npt.NDArray[np.int64]
+_Numbers = npt.NDArray[np.float64]
+_Runs = tuple[_Integers, _Integers, npt.NDArray[np.float32]]
 
 
-def rounded_runs(
-    values: npt.ArrayLike,
-) -> tuple[npt.NDArray[np.int64], npt.NDArray[np.int64], npt.NDArray[np.float64]]:
+def rounded_runs(values: npt.ArrayLike) -> tuple[_Integers, _Integers, _Numbers]:
     """Round values to three decimals and join neighbours that are then equal.
 
     Parameters
@@ -70,9 +69,6 @@ class PosteriorTrack:
     Positions without a run, such as gaps, have no value. When the block ends the file is
     closed, opened again and compared with what was handed over.
 
-    The index of names in the file is in input order, not sorted; programs that search it
-    rather than read it need sorted names from 65,536 records on.
-
     Parameters
     ----------
     path : path
@@ -88,8 +84,6 @@ class PosteriorTrack:
     """
 
     def __init__(self, path: str | Path, record_lengths: Mapping[str, int]) -> None:
-        import pyBigWig  # noqa: PLC0415  (start-up time)
-
         for name, length in record_lengths.items():
             if not 1 <= length <= MAX_LENGTH:
                 raise OutputError(f"{path}: bigWig cannot hold {name} of {length} bases")
@@ -100,14 +94,8 @@ class PosteriorTrack:
         self._rank = {name: i for i, name in enumerate(self.record_lengths)}
         self._record = ""
         self._pending = _no_runs()
-        self._bases = 0
-        self._total = 0.0
-        try:
-            self.path.touch()  # the library crashes where it cannot make the file
-        except OSError as error:
-            raise OutputError(f"cannot write {path}: {error.strerror}") from error
-        self._file: Any = pyBigWig.open(str(path), "w")
-        self._file.addHeader(list(self.record_lengths.items()))
+        with self._explained():
+            self._file = BigWigWriter(path, self.record_lengths)
 
     def add(
         self,
@@ -144,8 +132,8 @@ class PosteriorTrack:
             self._check(runs)
             self._pending = _joined(self._pending, runs)
             # The last run stays behind: the next call may continue it.
-            while len(self._pending[0]) > RUNS_AT_ONCE:
-                self._hand_over(RUNS_AT_ONCE)
+            while len(self._pending[0]) > RUNS_IN_BLOCK:
+                self._hand_over(RUNS_IN_BLOCK)
 
     def close(self) -> None:
         """Close the file, open it again and compare it with what was handed over.
@@ -156,16 +144,14 @@ class PosteriorTrack:
             If the file does not hold it.
         """
         self._hand_over(len(self._pending[0]))
-        self._file.close()
-        if not self._bases:
-            _complete_empty(self.path)
+        with self._explained():
+            self._file.finish()
         found = summarize_track(self.path)
-        if list(found.record_lengths.items()) != list(self.record_lengths.items()):
+        if found.record_lengths != self.record_lengths:
             raise OutputError(f"{self.path}: read back, its records differ from those written")
-        # Both are sums of the same float32 values in another order.
-        if found.bases != self._bases or abs(found.total - self._total) > 1e-9 * self._bases:
+        if (found.bases, found.total) != (self._file.bases, self._file.total):
             raise OutputError(
-                f"{self.path}: read back, it differs from what was written; is the disk full?"
+                f"{self.path}: read back, it differs from what was written; is the disk sound?"
             )
 
     def __enter__(self) -> Self:
@@ -179,10 +165,11 @@ class PosteriorTrack:
         traceback: TracebackType | None,
     ) -> None:
         """Close and check the file, or only let go of it if the block failed."""
-        if kind is None:
-            self.close()
-        else:
-            self._file.close()
+        try:
+            if kind is None:
+                self.close()
+        finally:
+            self._file.abandon()
 
     def _turn_to(self, record: str) -> None:
         if record == self._record:
@@ -216,16 +203,19 @@ class PosteriorTrack:
             return
         starts, ends, values = self._pending
         self._pending = starts[number:], ends[number:], values[number:]
-        starts, ends, values = starts[:number], ends[:number], values[:number]
+        runs = np.empty(number, dtype=RUN)
+        runs["start"], runs["end"], runs["value"] = starts[:number], ends[:number], values[:number]
+        with self._explained():
+            self._file.write_runs(self._rank[self._record], runs)
+
+    @contextmanager
+    def _explained(self) -> Iterator[None]:
         try:
-            self._file.addEntries(
-                [self._record] * number, starts.tolist(), ends=ends.tolist(), values=values.tolist()
-            )
-        except RuntimeError as error:
-            raise OutputError(f"cannot write {self.path}: {error}; is the disk full?") from error
-        lengths = ends - starts
-        self._bases += int(lengths.sum())
-        self._total += float((values.astype(np.float64) * lengths).sum())
+            yield
+        except OSError as error:
+            raise OutputError(
+                f"cannot write {self.path}: {error.strerror}; make room or choose another place"
+            ) from error
 
 
 @dataclass(frozen=True)
@@ -252,28 +242,52 @@ def summarize_track(path: str | Path) -> TrackSummary:
     OutputError
         If the file is no readable bigWig.
     """
-    import pyBigWig  # noqa: PLC0415  (start-up time)
-
     bases, total, low, high = 0, 0.0, np.inf, -np.inf
-    try:
-        file: Any = pyBigWig.open(str(path))
-        if not file.isBigWig():
-            raise OutputError(f"{path}: not a bigWig file")
-        record_lengths = {str(name): int(length) for name, length in file.chroms().items()}
-        for name, length in record_lengths.items():
-            for start in range(0, length, BASES_AT_ONCE):
-                dense = file.values(name, start, min(length, start + BASES_AT_ONCE), numpy=True)
-                values = dense[~np.isnan(dense)]
-                if len(values):
-                    bases += len(values)
-                    total += float(values.sum(dtype=np.float64))
-                    low, high = min(low, float(values.min())), max(high, float(values.max()))
-        file.close()
-    except RuntimeError as error:
-        raise OutputError(f"{path}: not a readable bigWig file") from error
+    with _explained_reading(path), BigWigReader(path) as file:
+        record_lengths = file.record_lengths
+        lengths = list(record_lengths.values())
+        for record, runs in file.runs():
+            widths, values = runs["end"] - runs["start"], runs["value"].astype(np.float64)
+            if not np.isfinite(values).all() or runs["end"].max() > lengths[record]:
+                raise ValueError("values or intervals out of bounds")
+            bases += int(widths.sum(dtype=np.int64))
+            total += float((widths * values).sum())
+            low, high = min(low, float(values.min())), max(high, float(values.max()))
     if not bases:
         low = high = np.nan
     return TrackSummary(record_lengths, bases, total, low, high)
+
+
+def read_track(path: str | Path) -> Iterator[tuple[str, _Integers, _Integers, _Numbers]]:
+    """Read the runs of a bigWig file written by `PosteriorTrack`, in its order.
+
+    Yields
+    ------
+    record : str
+        Name of the record.
+    starts, ends : int64[run]
+        Half-open intervals; a record comes in several pieces if it has many runs.
+    values : float64[run]
+        Value of every base of the run.
+
+    Raises
+    ------
+    OutputError
+        If the file is no readable bigWig.
+    """
+    with _explained_reading(path), BigWigReader(path) as file:
+        names = list(file.record_lengths)
+        for record, runs in file.runs():
+            starts, ends = runs["start"].astype(np.int64), runs["end"].astype(np.int64)
+            yield names[record], starts, ends, runs["value"].astype(np.float64)
+
+
+@contextmanager
+def _explained_reading(path: str | Path) -> Iterator[None]:
+    try:
+        yield
+    except (ValueError, IndexError, struct.error, zlib.error) as error:
+        raise OutputError(f"{path}: not a readable bigWig file of runs ({error})") from error
 
 
 def _no_runs() -> _Runs:
@@ -296,21 +310,3 @@ def _check_finite(values: npt.NDArray[Any], where: str) -> None:
     if not finite.all():
         at = int(np.argmin(finite))
         raise OutputError(f"{where}: value {at} is {values[at]}, not a finite number")
-
-
-def _complete_empty(path: Path) -> None:
-    """Give a bigWig file without values the index that its header must point to.
-
-    pyBigWig leaves the index out and an extreme lowest value in the summary, and other readers
-    then refuse the file. Layout: supplement of Kent et al. (2010), tables 5, 7, 14 and 15.
-    """
-    content = bytearray(path.read_bytes())
-    (end_mark,) = struct.unpack_from("<I", content, len(content) - 4)
-    del content[-4:]
-    (summary,) = struct.unpack_from("<Q", content, 44)
-    content[summary : summary + 40] = bytes(40)
-    index = len(content)
-    struct.pack_into("<Q", content, 24, index)
-    content += struct.pack("<IIQIIIIQII", 0x2468ACE0, 256, 0, 0, 0, 0, 0, index, 512, 0)
-    content += struct.pack("<BBHI", 1, 0, 0, end_mark)  # one leaf without entries
-    path.write_bytes(content)

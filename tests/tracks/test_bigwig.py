@@ -1,14 +1,21 @@
-"""Posterior tracks, read back by pybigtools, a bigWig reader of another origin (Rust)."""
+"""Posterior tracks, read back by two readers of other origins.
 
+They are pybigtools (on bigtools, in Rust) and pyBigWig (on libBigWig, in C).
+"""
+
+import bisect
+import contextlib
 import itertools
 import os
+import struct
 import subprocess
 import sys
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from pathlib import Path
 
 import numpy as np
-import pybigtools  # type: ignore[import-untyped]
+import pybigtools
+import pyBigWig
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
@@ -16,10 +23,13 @@ from numpy.typing import NDArray
 
 from hmmseg.errors import OutputError
 from hmmseg.outputs import sha256_of
-from hmmseg.tracks import bigwig
-from hmmseg.tracks.bigwig import PosteriorTrack, rounded_runs, summarize_track
+from hmmseg.tracks import bbi, bigwig_file
+from hmmseg.tracks.bigwig import PosteriorTrack, read_track, rounded_runs, summarize_track
+from hmmseg.tracks.bigwig_file import RUNS_IN_BLOCK
+from hmmseg.tracks.zoom import bins_of_runs, first_bin_size
 
 Runs = list[tuple[int, int, float]]
+Change = Callable[[int, NDArray[np.void]], tuple[int, NDArray[np.void]]]
 
 # Names as they come in assemblies; not in alphabetical order.
 LENGTHS = {"scaffold_2": 300, "chr1.1": 1, "gi|7|x": 90, "a": 40}
@@ -29,6 +39,15 @@ def second_reader(path: Path) -> dict[str, Runs]:
     """Return the intervals of each record as pybigtools reads them."""
     file = pybigtools.open(str(path))
     return {name: [tuple(run) for run in file.records(name)] for name in file.chroms()}
+
+
+def third_reader(path: Path) -> dict[str, Runs]:
+    """Return the intervals of each record that has any as pyBigWig reads them."""
+    file = pyBigWig.open(str(path))
+    assert list(file.chroms().items()) == list(LENGTHS.items())
+    found = {name: file.intervals(name) for name in LENGTHS}
+    file.close()
+    return {name: list(runs) for name, runs in found.items() if runs}
 
 
 def dense(runs: Runs, length: int) -> NDArray[np.float32]:
@@ -68,6 +87,7 @@ def test_what_is_written_is_read_back(track: dict[str, Runs]) -> None:
         write(path, list(track.items()))
         found = second_reader(path)
         assert pybigtools.open(str(path)).chroms() == LENGTHS
+        assert third_reader(path) == {name: runs for name, runs in found.items() if runs}
         for name, length in LENGTHS.items():
             expected = dense(track[name], length)
             np.testing.assert_array_equal(dense(found[name], length), expected)
@@ -123,9 +143,9 @@ def many_runs(number: int, seed: int = 7) -> tuple[NDArray[np.int64], ...]:
 
 
 def test_more_runs_than_are_handed_over_at_once(tmp_path: Path) -> None:
-    starts, ends, levels = many_runs(3 * bigwig.RUNS_AT_ONCE + 5)
+    starts, ends, levels = many_runs(300 * RUNS_IN_BLOCK + 5)
     length = int(ends[-1])
-    for name, cuts in (("whole.bw", []), ("cut.bw", [1, bigwig.RUNS_AT_ONCE - 1, 40_000])):
+    for name, cuts in (("whole.bw", []), ("cut.bw", [1, RUNS_IN_BLOCK - 1, 40_000, 200_000])):
         with PosteriorTrack(tmp_path / name, {"x": length}) as track:
             pieces = (np.split(column, cuts) for column in (starts, ends, levels / 1000))
             for piece in zip(*pieces, strict=True):
@@ -148,7 +168,7 @@ def test_other_memory_gives_the_same_bytes(tmp_path: Path) -> None:
         "    track.add('x.1', starts, ends, levels / 1000)\n"
     )
     sums = set()
-    for pattern in ("0", "85", "170"):
+    for pattern in ("0", "170"):
         path = tmp_path / pattern
         subprocess.run(
             [sys.executable, "-c", code, str(path)],
@@ -176,6 +196,9 @@ def test_a_track_without_any_run_is_a_file_that_reads(
     assert (found.record_lengths, found.bases, found.total) == (lengths, 0, 0)
     assert np.isnan(found.lowest)
     assert np.isnan(found.highest)
+    other = pyBigWig.open(str(path))
+    assert other.chroms() == lengths
+    assert [other.intervals(name) for name in lengths] == [None] * len(lengths)
 
 
 def test_calls_without_runs_change_nothing(tmp_path: Path) -> None:
@@ -238,24 +261,34 @@ class TestRefused:
 class TestReadBack:
     """The file is compared with what was handed over, so a loss on the way is seen."""
 
-    def lose(self, path: Path, monkeypatch: pytest.MonkeyPatch, keep: int) -> None:
-        hand_over = PosteriorTrack._hand_over
-
-        def lossy(self: PosteriorTrack, number: int) -> None:
-            real, self._file = self._file, Lossy(self._file, keep)
-            hand_over(self, number)
-            self._file = real
-
-        monkeypatch.setattr(PosteriorTrack, "_hand_over", lossy)
+    def write_with(self, path: Path, monkeypatch: pytest.MonkeyPatch, change: Change) -> None:
+        # What goes to the disk is not what was counted.
+        pack = bbi.pack_section
+        monkeypatch.setattr(bbi, "pack_section", lambda number, runs: pack(*change(number, runs)))
         write(path, [("a", [(0, 5, 0.25), (5, 10, 0.5)])])
 
-    def test_a_lost_run(self, tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
-        with pytest.raises(OutputError, match="differs from what was written"):
-            self.lose(tmp_path / "x.bw", monkeypatch, keep=1)
-
-    def test_all_runs_lost(self, tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    @pytest.mark.parametrize(
+        "change",
+        [
+            lambda number, runs: (number, runs[:1]),
+            lambda number, runs: (number, runs[::-1][:1]),
+            lambda number, runs: (99, runs),
+        ],
+    )
+    def test_lost_runs(
+        self, tmp_path: Path, monkeypatch: pytest.MonkeyPatch, change: Change
+    ) -> None:
         with pytest.raises(OutputError, match=r"differs from what was written|not a readable"):
-            self.lose(tmp_path / "x.bw", monkeypatch, keep=0)
+            self.write_with(tmp_path / "x.bw", monkeypatch, change)
+
+    def test_changed_values(self, tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+        def change(number: int, runs: NDArray[np.void]) -> tuple[int, NDArray[np.void]]:
+            runs = runs.copy()
+            runs["value"][1] = 0.375
+            return number, runs
+
+        with pytest.raises(OutputError, match="differs from what was written"):
+            self.write_with(tmp_path / "x.bw", monkeypatch, change)
 
     def test_nothing_is_checked_after_a_failure(self, tmp_path: Path) -> None:
         track = PosteriorTrack(tmp_path / "x.bw", LENGTHS)
@@ -263,20 +296,32 @@ class TestReadBack:
             raise ZeroDivisionError
 
 
-class Lossy:
-    """A bigWig file that loses the entries after the first few."""
-
-    def __init__(self, file: object, keep: int) -> None:
-        self.file, self.keep = file, keep
-
-    def addEntries(  # noqa: N802
-        self, names: list[str], starts: list[int], ends: list[int], values: list[float]
-    ) -> None:
-        k = self.keep
-        if k:
-            self.file.addEntries(  # type: ignore[attr-defined]
-                names[:k], starts[:k], ends=ends[:k], values=values[:k]
-            )
+@pytest.mark.parametrize("bytes_free", [100, 5_000, 100_000])
+def test_a_full_disk_is_an_error_in_one_line(tmp_path: Path, bytes_free: int) -> None:
+    # The system's limit on the size of a file stands for the end of the disk (setrlimit(2)).
+    code = (
+        "import resource, sys\nfrom tests.tracks.test_bigwig import many_runs\n"
+        "from hmmseg.errors import OutputError\nfrom hmmseg.tracks import PosteriorTrack\n"
+        "starts, ends, levels = many_runs(50_000)\n"
+        "resource.setrlimit(resource.RLIMIT_FSIZE, (int(sys.argv[2]),) * 2)\n"
+        "try:\n"
+        "    with PosteriorTrack(sys.argv[1], {'x': int(ends[-1])}) as track:\n"
+        "        track.add('x', starts, ends, levels / 1000)\n"
+        "except OutputError as error:\n"
+        "    print(error)\n"
+    )
+    done = subprocess.run(
+        [sys.executable, "-c", code, str(tmp_path / "x.bw"), str(bytes_free)],
+        cwd=Path(__file__).parents[2],
+        capture_output=True,
+        text=True,
+        check=True,
+        timeout=120,
+    )
+    expected = f"cannot write {tmp_path / 'x.bw'}: File too large; make room or choose another"
+    assert done.stdout.startswith(expected)
+    assert done.stdout.count("\n") == 1
+    assert done.stderr == ""
 
 
 class TestSummary:
@@ -287,24 +332,175 @@ class TestSummary:
             found = summarize_track(path)
             values = np.concatenate([dense(track[name], LENGTHS[name]) for name in LENGTHS])
             values = values[~np.isnan(values)]
-            assert found.record_lengths == LENGTHS
+            assert list(found.record_lengths.items()) == list(LENGTHS.items())
             assert found.bases == len(values)
             assert found.total == pytest.approx(float(values.sum(dtype=np.float64)), abs=1e-9)
             if len(values):
                 assert (found.lowest, found.highest) == (values.min(), values.max())
+            other = pybigtools.open(str(path)).info()["summary"]
+            assert other["basesCovered"] == found.bases
+            assert other["sum"] == pytest.approx(found.total)
+            if len(values):
+                assert (other["min"], other["max"]) == (values.min(), values.max())
 
-    def test_reads_in_pieces(self, tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
-        write(tmp_path / "x.bw", [("scaffold_2", [(3, 250, 0.125)]), ("a", [(0, 40, 0.5)])])
-        whole = summarize_track(tmp_path / "x.bw")
-        monkeypatch.setattr(bigwig, "BASES_AT_ONCE", 7)
-        assert summarize_track(tmp_path / "x.bw") == whole
-        assert (whole.bases, whole.total) == (287, 247 * 0.125 + 20)
+    @given(tracks())
+    def test_runs_are_read_back(self, track: dict[str, Runs]) -> None:
+        with scratch() as path:
+            write(path, list(track.items()))
+            found: dict[str, Runs] = {name: [] for name in LENGTHS}
+            for name, *columns in read_track(path):
+                found[name] += zip(*columns, strict=True)
+            assert found == second_reader(path)
 
-    @pytest.mark.parametrize("content", [b"", b"not a bigWig file" * 100])
+    @pytest.mark.parametrize("content", [b"", b"x", b"not a bigWig file" * 100])
     def test_of_another_file(self, tmp_path: Path, content: bytes) -> None:
         (tmp_path / "x.bw").write_bytes(content)
         with pytest.raises(OutputError, match=r"x\.bw: not a readable bigWig file"):
             summarize_track(tmp_path / "x.bw")
+
+    def test_of_the_product_of_another_program(self, tmp_path: Path) -> None:
+        path = tmp_path / "x.bw"
+        file = pyBigWig.open(str(path), "w")
+        file.addHeader(list(LENGTHS.items()))
+        file.addEntries(["a", "a"], [0, 30], ends=[10, 40], values=[0.5, 0.25])
+        file.close()
+        found = summarize_track(path)
+        assert (found.record_lengths, found.bases, found.total) == (LENGTHS, 20, 7.5)
+
+    @given(st.data())
+    def test_of_damaged_files(self, data: st.DataObject) -> None:
+        with scratch() as path:
+            write(path, [("scaffold_2", [(0, 5, 0.25), (9, 200, 0.5)]), ("a", [(3, 4, 1.0)])])
+            content = bytearray(path.read_bytes())
+            if data.draw(st.booleans()):
+                del content[data.draw(st.integers(0, len(content) - 1)) :]
+            for _ in range(data.draw(st.integers(0, 3)) if content else 0):
+                at = data.draw(st.integers(0, len(content) - 1))
+                content[at] = data.draw(st.integers(0, 255))
+            path.write_bytes(content)
+            # Whatever the damage: a summary or the one kind of error, and no crash.
+            with contextlib.suppress(OutputError):
+                assert summarize_track(path).bases >= 0
+
+
+class TestNames:
+    """The tree of names, searched as Kent et al. (2010), supplementary tables 8 to 11, have it."""
+
+    @staticmethod
+    def look_up(content: bytes, name: str) -> tuple[int, int]:
+        """Return number and length of a record, going down by its name only."""
+        (tree,) = struct.unpack_from("<Q", content, 8)
+        magic, _, size, value_size, _, _ = struct.unpack_from("<IIIIQQ", content, tree)
+        assert (magic, value_size) == (0x78CA8C91, 8)
+        key, node = name.encode().ljust(size, b"\0"), tree + 32
+        while True:
+            is_leaf, _, count = struct.unpack_from("<BBH", content, node)
+            starts = [node + 4 + i * (size + 8) for i in range(count)]
+            keys = [content[at : at + size] for at in starts]
+            assert keys == sorted(keys)
+            at = starts[bisect.bisect_right(keys, key) - 1]
+            if is_leaf:
+                assert content[at : at + size] == key
+                number, length = struct.unpack_from("<II", content, at + size)
+                return number, length
+            (node,) = struct.unpack_from("<Q", content, at + size)
+
+    # One node holds 256 names, and 256 nodes stand below one: one, two and three storeys.
+    @pytest.mark.parametrize("number", [1, 256, 257, 66_000])
+    def test_every_name_is_found(self, tmp_path: Path, number: int) -> None:
+        lengths = {f"s{i * 7919 % number}.é": 10 + i for i in range(number)}
+        some = list(lengths)[:: 1 + number // 50]
+        write(tmp_path / "x.bw", [(name, [(0, 10, 0.5)]) for name in some], lengths)
+        content = (tmp_path / "x.bw").read_bytes()
+        for i, name in list(enumerate(lengths))[:: 1 + number // 997]:
+            assert self.look_up(content, name) == (i, 10 + i)
+        file = pybigtools.open(str(tmp_path / "x.bw"))
+        assert file.chroms() == lengths
+        for name in list(lengths)[:: 1 + number // 150]:
+            expected = [(0, 10, 0.5)] if name in some else []
+            assert list(file.records(name)) == expected
+
+
+class TestZoom:
+    @pytest.fixture(autouse=True)
+    def _levels_for_few(self, monkeypatch: pytest.MonkeyPatch) -> None:
+        monkeypatch.setattr(bigwig_file, "FEW", 40)
+
+    def write_many(self, path: Path) -> dict[str, NDArray[np.float32]]:
+        """Write records of many and of few runs, with holes; return their dense values."""
+        rng = np.random.default_rng(11)
+        lengths = {"x": 150_000, "none": 700, "y.1": 90_000, "short": 3, "long": 400_000}
+        values = {name: np.full(length, np.nan, np.float32) for name, length in lengths.items()}
+        with PosteriorTrack(path, lengths) as track:
+            for name, mean in (("x", 4), ("y.1", 30), ("short", 1), ("long", 50_000)):
+                cuts = np.cumsum(rng.integers(1, 2 * mean + 1, 2 * lengths[name] // mean))
+                cuts = np.append(cuts[cuts < lengths[name]], lengths[name])
+                starts, ends = np.append(0, cuts[:-1]), cuts
+                keep = rng.random(len(starts)) < 0.9
+                levels = rng.integers(0, 1001, len(starts)) / 1000
+                track.add(name, starts[keep], ends[keep], levels[keep])
+                for start, end, level in zip(starts[keep], ends[keep], levels[keep], strict=True):
+                    values[name][start:end] = level
+        return values
+
+    def test_bins_hold_what_the_values_say(self, tmp_path: Path) -> None:
+        values = self.write_many(tmp_path / "x.bw")
+        file = pybigtools.open(str(tmp_path / "x.bw"))
+        sizes = file.zooms()
+        assert len(sizes) >= 3
+        assert all(coarse == 4 * fine for fine, coarse in itertools.pairwise(sizes))
+        for size, (name, dense_values) in itertools.product(sizes, values.items()):
+            rows = {start // size: (start, end, info) for start, end, info in
+                    file.zoom_records(size, name)}  # fmt: skip
+            bins = range(0, len(dense_values), size)
+            for at in bins:
+                inside = dense_values[at : at + size].astype(np.float64)
+                covered = np.flatnonzero(~np.isnan(inside))
+                if not len(covered):
+                    assert at // size not in rows
+                    continue
+                start, end, info = rows.pop(at // size)
+                inside = inside[covered]
+                assert (start, end) == (at + covered[0], at + covered[-1] + 1)
+                assert info["bases_covered"] == len(inside)
+                assert (info["min_val"], info["max_val"]) == (inside.min(), inside.max())
+                assert info["sum"] == pytest.approx(inside.sum(), rel=1e-5, abs=1e-6)
+                assert info["sum_squares"] == pytest.approx((inside**2).sum(), rel=1e-5, abs=1e-6)
+            assert not rows
+
+    def test_statistics_from_zoom_levels_and_from_values_agree(self, tmp_path: Path) -> None:
+        values = self.write_many(tmp_path / "x.bw")
+        file = pyBigWig.open(str(tmp_path / "x.bw"))
+        assert file.header()["nLevels"] >= 3
+        for name, dense_values in values.items():
+            covered = dense_values[~np.isnan(dense_values)]
+            kinds = {"mean": np.mean, "min": np.min, "max": np.max}
+            for kind, function in kinds.items():
+                exact = function(covered.astype(np.float64)) if len(covered) else None
+                for found in (file.stats(name, type=kind), file.stats(name, type=kind, exact=True)):
+                    assert found == [exact if exact is None else pytest.approx(exact, abs=1e-5)]
+        file.close()
+
+    def test_a_small_track_has_none(self, tmp_path: Path) -> None:
+        write(tmp_path / "x.bw", [("a", [(0, 5, 0.25)])])
+        assert pybigtools.open(str(tmp_path / "x.bw")).zooms() == []
+
+    def test_scattered_single_bases_are_not_worth_a_level(self, tmp_path: Path) -> None:
+        starts = np.arange(0, 5_000_000, 1000)
+        with PosteriorTrack(tmp_path / "x.bw", {"x": 5_000_000}) as track:
+            track.add("x", starts, starts + 1, np.full(len(starts), 0.5))
+        file = pybigtools.open(str(tmp_path / "x.bw"))
+        assert file.zooms() == []
+        assert [start for start, _, _ in file.records("x")] == starts.tolist()
+
+    def test_one_run_over_a_long_record_makes_few_bins(self) -> None:
+        # 4 Gb, the most that bigWig holds: the number of bins is bounded, whatever the length.
+        size = first_bin_size(bases=2**32 - 1, runs=2**31, longest=2**32 - 1)
+        assert (2**32 - 1) / size <= 2**20
+        runs = np.array([(0, 2**32 - 1, 0.5)], dtype=bbi.RUN)
+        rows = bins_of_runs(np.array([0]), runs, size)
+        assert rows["bases"].astype(np.int64).sum() == 2**32 - 1
+        assert rows["end"][-1] == 2**32 - 1
 
 
 class TestRoundedRuns:
