@@ -16,7 +16,14 @@ from hmmseg import __version__
 from hmmseg.errors import OutputError
 from hmmseg.outputs import PROVENANCE, sha256_of, whole_file, write_json
 
-__all__ = ["FORMAT", "VERSION", "provenance_path", "read_provenance", "write_provenance"]
+__all__ = [
+    "FORMAT",
+    "VERSION",
+    "is_current",
+    "provenance_path",
+    "read_provenance",
+    "write_provenance",
+]
 
 FORMAT = "hmmseg-provenance"
 VERSION = 1
@@ -65,6 +72,49 @@ def write_provenance(
     result = Path(folder_or_file)
     root = result if result.is_dir() else result.parent
     document = {
+        **_origin(command, parameters, seed, inputs),
+        "outputs": [_fingerprint(path, _relative(path, root)) for path in outputs],
+    }
+    with whole_file(provenance_path(result), force=True) as temporary:
+        write_json(temporary, document)
+
+
+def is_current(
+    folder_or_file: str | Path,
+    command: str,
+    parameters: Mapping[str, Any],
+    seed: int | None,
+    inputs: Sequence[str | Path],
+) -> bool:
+    """Tell whether a result is there, whole, and what the same call would make again.
+
+    Parameters
+    ----------
+    folder_or_file, command, parameters, seed, inputs
+        As for `write_provenance`.
+    """
+    result = Path(folder_or_file)
+    try:
+        found = read_provenance(result)
+    except OutputError:
+        return False
+    expected = _origin(command, parameters, seed, inputs)
+    # Through JSON, so that both have been written and read.
+    if json.loads(json.dumps(expected)) != {k: v for k, v in found.items() if k != "outputs"}:
+        return False
+    root = result if result.is_dir() else result.parent
+    return all(
+        (root / entry["name"]).is_file()
+        and _fingerprint(root / entry["name"], entry["name"]) == entry
+        for entry in found["outputs"]
+    )
+
+
+def _origin(
+    command: str, parameters: Mapping[str, Any], seed: int | None, inputs: Sequence[str | Path]
+) -> dict[str, Any]:
+    """Return everything but the outputs."""
+    return {
         "format": FORMAT,
         "version": VERSION,
         "software": _software(),
@@ -72,10 +122,7 @@ def write_provenance(
         "parameters": {k: _plain(v) for k, v in parameters.items() if k not in _NOT_RESULT},
         "seed": None if seed is None else int(seed),
         "inputs": [_fingerprint(path, Path(path).name) for path in inputs],
-        "outputs": [_fingerprint(path, _relative(path, root)) for path in outputs],
     }
-    with whole_file(provenance_path(result), force=True) as temporary:
-        write_json(temporary, document)
 
 
 def provenance_path(folder_or_file: str | Path) -> Path:

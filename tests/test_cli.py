@@ -12,7 +12,7 @@ import pytest
 from hmmseg.cli import main
 
 COMMANDS = (
-    "survey", "presets", "train", "explain", "decode", "score", "simulate", "verify", "batches", "gather", "summary",
+    "annotate", "survey", "presets", "train", "explain", "decode", "score", "simulate", "verify", "batches", "gather", "summary",
 )  # fmt: skip
 
 MODEL: dict[str, Any] = {

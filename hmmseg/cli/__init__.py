@@ -7,7 +7,7 @@ from collections.abc import Sequence
 import click
 
 from hmmseg import __version__
-from hmmseg.cli import calls, models
+from hmmseg.cli import calls, models, whole
 from hmmseg.errors import HmmsegError
 
 __all__ = ["main"]
@@ -33,6 +33,7 @@ def cli(debug: bool) -> None:
 
 
 for _command in (
+    whole.annotate,
     models.survey,
     models.presets,
     models.train,

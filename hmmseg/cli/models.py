@@ -193,7 +193,11 @@ def presets(name: str | None) -> None:
             ("also finds", wanted.also_finds),
             ("states", f"order {wanted.order}; expected lengths in bases: {lengths}"),
             ("lower case", f"{mask}{'' if wanted.trained else '; not trained, placed by GC'}"),
-            ("calls", f"decode --decoder {wanted.decoder} --min-length {wanted.min_length}"),
+            (
+                "calls",
+                f"decode --decoder {wanted.decoder} --min-length {wanted.min_length} "
+                f"--merge-gap {wanted.merge_gap}",
+            ),
             ("source", wanted.source),
         ):
             click.echo(click.wrap_text(text, 96, f"  {label + ':':<12}", " " * 14))

@@ -1,5 +1,6 @@
 """The command ``decode``: call regions and write posteriors."""
 
+import json
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from pathlib import Path
@@ -14,7 +15,7 @@ from hmmseg.jobs.sources import Sources
 from hmmseg.model import Model, load_model
 from hmmseg.outputs import PROVENANCE, check_target, whole_folder, write_json
 from hmmseg.progress import Progress, warn
-from hmmseg.provenance import write_provenance
+from hmmseg.provenance import is_current, write_provenance
 from hmmseg.regions.calling import Caller, Calls
 from hmmseg.regions.intervals import Filters
 from hmmseg.regions.masking import SOFT_MASKED, soft_masked_fraction
@@ -84,7 +85,7 @@ def track_name(state: str) -> str:
     return f"{state}.posterior.bw"
 
 
-def decode(
+def decode(  # noqa: PLR0913 - as many as the command has
     sources: Sources,
     model_path: str,
     output: str,
@@ -94,6 +95,7 @@ def decode(
     filters: Filters,
     threads: int,
     force: bool,
+    reuse: bool = False,
 ) -> dict[str, Any]:
     """Call regions of every record and write the folder of results.
 
@@ -111,13 +113,16 @@ def decode(
         Threads to use; the result does not depend on it.
     force
         Replace an earlier result.
+    reuse
+        Return an earlier result if it is what would be made again.
 
     Returns
     -------
     dict
         The document ``summary.json``.
     """
-    check_target(output, force)
+    if not reuse:
+        check_target(output, force)
     model = load_model(model_path)
     caller = Caller(model, decoder, threshold, filters, threads)
     if not caller.states:
@@ -130,11 +135,15 @@ def decode(
         "threshold": threshold if decoder == "posterior" else None,
         **filters._asdict(),
     }
+    inputs = [*sources.files(), model_path]
+    if reuse and is_current(output, "decode", parameters, None, inputs):
+        earlier: dict[str, Any] = json.loads((Path(output) / "summary.json").read_bytes())
+        return earlier
+    check_target(output, force)
     with whole_folder(output, force=force) as folder:
         result, table = _Run(caller, folder).over(sources)
         summary = write_result(folder, result, table)
         written = sorted(path for path in folder.iterdir() if path.name != PROVENANCE)
-        inputs = [*sources.files(), model_path]
         write_provenance(folder, "decode", parameters, None, inputs, written)
     return summary
 

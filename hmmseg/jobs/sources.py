@@ -37,6 +37,8 @@ class Sources:
     soft_mask
         ``"use"``: lower-case bases are ordinary; ``"hide"``: they are missing. None: whatever
         the model or the preset at hand says, else ``"use"``.
+    without
+        Records that are read but not used.
     """
 
     fasta: tuple[str, ...]
@@ -46,6 +48,7 @@ class Sources:
     circular: tuple[str, ...] = ()
     gap_min: int = GAP_MIN
     soft_mask: str | None = None
+    without: tuple[str, ...] = ()
 
     def with_soft_mask(self, policy: str) -> "Sources":
         """Return the same with a policy, unless one was asked for."""
@@ -67,6 +70,8 @@ class Sources:
         selection = self._selection()
         found = False
         for record in selection.apply(read_records(self.fasta)):
+            if record.name in self.without:
+                continue
             seen = _hidden(record) if self.soft_mask == "hide" else record
             contigs = split(seen, self.gap_min, selection.exclude.get(record.name))
             if not contigs:
@@ -99,6 +104,7 @@ class Sources:
             "circular": list(self.circular),
             "gap_min": self.gap_min,
             "soft_mask": self.soft_mask or "use",
+            **({"without": list(self.without)} if self.without else {}),
         }
 
     def files(self) -> Sequence[str]:

@@ -7,9 +7,9 @@ from typing import Any
 
 from hmmseg import __version__
 from hmmseg.evidence.agreement import difference
-from hmmseg.evidence.cautions import cautions
-from hmmseg.evidence.findings import StateFinding, describe
+from hmmseg.evidence.findings import describe
 from hmmseg.inference.streams import Corpus
+from hmmseg.jobs.explain import Explained, explain
 from hmmseg.jobs.sources import Sources
 from hmmseg.model import load_model, model_to_dict
 from hmmseg.model.anchoring import anchored
@@ -17,12 +17,12 @@ from hmmseg.model.presets import load_preset
 from hmmseg.model.specification import Specification, load_specification
 from hmmseg.outputs import check_target, sha256_of, whole_file, write_json
 from hmmseg.progress import Progress, warn
-from hmmseg.provenance import write_provenance
+from hmmseg.provenance import is_current, write_provenance
 from hmmseg.training.baum_welch import Fit
 from hmmseg.training.restarts import Plan, Restarts, fit_restarts
 from hmmseg.training.starts import word_counts
 
-__all__ = ["Origin", "Trained", "origin", "train"]
+__all__ = ["Origin", "origin", "train"]
 
 
 _ITERATIONS = 500
@@ -59,25 +59,6 @@ class Origin:
         return [path for path in (self.init, self.file) if path]
 
 
-@dataclass(frozen=True)
-class Trained:
-    """What training ended with.
-
-    Attributes
-    ----------
-    findings : list of StateFinding
-        One for each state.
-    cautions : list of str
-        What calls for a person's eye.
-    bits_per_base : float
-        Of the final model.
-    """
-
-    findings: list[StateFinding]
-    cautions: list[str]
-    bits_per_base: float
-
-
 def origin(preset: str | None, spec: str | None, init: str | None) -> tuple[Origin, dict[str, Any]]:
     """Return where training starts, and the settings of a plan that it proposes.
 
@@ -110,7 +91,8 @@ def train(
     threads: int,
     force: bool,
     train_bases: int | None = None,
-) -> Trained:
+    reuse: bool = False,
+) -> Explained:
     """Fit a model and write its document.
 
     Parameters
@@ -130,12 +112,20 @@ def train(
         Replace an existing document.
     train_bases
         Train on a seeded sample of about so many bases; None for everything.
+    reuse
+        Return an earlier result if it is what would be made again.
     """
-    check_target(output, force)
+    if not reuse:
+        check_target(output, force)
     if start.init:
         plan = replace(plan, init=load_model(start.init))
     if start.wanted is not None:
         sources = sources.with_soft_mask(start.wanted.soft_mask)
+    parameters = _parameters(sources, plan, start, train_bases)
+    inputs = [*sources.files(), *start.files()]
+    if reuse and is_current(output, "train", parameters, plan.seed, inputs):
+        return explain(output)
+    check_target(output, force)
     contigs, sampled = sources.read_sample(train_bases, plan.seed)
     if start.wanted is not None:
         counts = word_counts(contigs, start.wanted.order)
@@ -160,11 +150,8 @@ def train(
     }
     with whole_file(output, force=force) as temporary:
         write_json(temporary, document)
-    parameters = _parameters(sources, plan, start, train_bases)
-    inputs = [*sources.files(), *start.files()]
     write_provenance(output, "train", parameters, plan.seed, inputs, [output])
-    bases = corpus.bases if plan.max_iterations else None
-    return Trained(describe(found.model), cautions(found.model, bases), best.bits_per_base)
+    return explain(output)
 
 
 def _tell(plan: Plan, found: Restarts) -> None:
@@ -182,8 +169,8 @@ def _tell(plan: Plan, found: Restarts) -> None:
         if text := difference(found.model, second.model):
             warn(
                 f"the best two of {len(found.fits)} starts, {apart:.1f} nats apart, found "
-                f"different things: {text}; give more --restarts, or say what is wanted with --preset or "
-                "--spec"
+                f"different things: {text}; give more --restarts, or say what is wanted with "
+                "--preset or --spec"
             )
 
 
@@ -191,15 +178,15 @@ def _parameters(
     sources: Sources, plan: Plan, start: Origin, train_bases: int | None
 ) -> dict[str, Any]:
     own = start.parameters()
-    if plan.init is None:
+    if start.wanted is not None:
+        own |= {"order": start.wanted.order}
+    elif plan.init is None:
         own |= {
             "states": plan.states,
             "order": plan.order,
             "symmetric": plan.symmetric,
             "start": plan.start_kind,
         }
-    else:
-        own |= {"order": plan.init.order}
     return {
         **sources.parameters(),
         **own,

@@ -13,7 +13,7 @@ A specification is no model yet: compositions may be relative to the genome at h
 
 import math
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any
 
@@ -132,6 +132,24 @@ class Specification:
     finds: str = ""
     also_finds: str = ""
     source: str = ""
+
+    def with_order(self, order: int) -> "Specification":
+        """Return the same with another order.
+
+        Raises
+        ------
+        ModelError
+            A state's words are given, which belong to the order they are given for.
+        """
+        if order == self.order:
+            return self
+        for wish in self.states:
+            if wish.conditional is not None or wish.enriched is not None:
+                raise ModelError(
+                    f"state {wish.name} of {self.name} is given by words of {self.order + 1} "
+                    f"bases, so the order stays {self.order}"
+                )
+        return replace(self, order=order)
 
 
 def load_specification(path: str | Path) -> Specification:

@@ -15,6 +15,8 @@ from hmmseg.inference.streams import Corpus
 from hmmseg.model import Model
 from hmmseg.model.anchoring import anchored
 from hmmseg.model.presets import load_preset
+from hmmseg.regions.calling import Caller
+from hmmseg.regions.intervals import Filters
 from hmmseg.sequence.contigs import Contig, split
 from hmmseg.sequence.intervals import BedLine, read_bed
 from hmmseg.sequence.reading import read_records
@@ -149,12 +151,12 @@ def end_errors(seed: int, length: int) -> tuple[int, int] | None:
     wanted = load_preset("at-rich")
     assert not wanted.trained
     model = anchored(wanted, word_counts([contig], wanted.order))
-    assert wanted.decoder == "posterior"
-    inside = posterior(model, contig)[:, model.names.index("at-rich")] > 0.5
-    edges = np.flatnonzero(np.diff(inside.astype(int))) + 1
-    if len(edges) != 2:
+    filters = Filters(wanted.min_length, wanted.merge_gap)
+    calls = Caller(model, wanted.decoder, filters=filters).call(contig, lambda *_: None)
+    starts, ends, _ = calls.intervals
+    if len(starts) != 1:
         return None
-    return abs(int(edges[0]) - start), abs(int(edges[1]) - start - 2400)
+    return abs(int(starts[0]) - start), abs(int(ends[0]) - start - 2400)
 
 
 def test_at_rich_finds_one_block() -> None:
