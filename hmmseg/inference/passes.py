@@ -5,6 +5,7 @@ whoever runs the pass does them again with logarithms (:mod:`hmmseg.inference.ex
 """
 
 from dataclasses import dataclass
+from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -12,6 +13,7 @@ from numpy.typing import NDArray
 from hmmseg.inference.streams import Stream, in_threads
 from hmmseg.inference.tables import Tables
 from hmmseg.kernels.blocks import block_kernels
+from hmmseg.kernels.chains import chain_kernel, chains_pay
 from hmmseg.kernels.scan import log_scaled, log_trace_of_power, scan_closed, scan_contigs
 from hmmseg.model import Model
 
@@ -93,11 +95,58 @@ def find_ends(model: Model, tables: Tables, stream: Stream, threads: int) -> Blo
     if tables.interval == 0:
         return _everything_lost(states, contigs)
     products = np.empty((blocks, states, states))
-    scales = np.empty((blocks, states))
-    flags = np.zeros(blocks, bool)
-    transfer = block_kernels(states).transfer
+    times = np.zeros((blocks, states), np.int64)
+    first_vectors = np.ascontiguousarray(
+        model.start_probabilities * model.emissions[:, stream.heads].T
+    )
+    carried = chains_pay(states)
+    mine = _in_circles(stream) if carried else np.arange(blocks)
+    scan = _Scan(
+        np.empty((blocks, states)),
+        np.empty((blocks, states)),
+        np.zeros((contigs, states)),
+        np.zeros(contigs),
+        _transfer(tables, stream, threads, mine, products, times),
+    )
+    if carried:
+        _run_through(tables, stream, threads, first_vectors, scan)
+    else:
+        scan_contigs(products, times, stream.contig_blocks, stream.closed, first_vectors, *scan)
+    circles = _scan_circles(model, stream, products, times, scan.logs, scan.lost)
+    jobs = _merge_jobs(stream, scan.starts, scan.ends, circles)
+    jobs = jobs.without(np.repeat(scan.lost, np.diff(stream.contig_blocks)))
+    return BlockEnds(jobs, scan.heads, scan.logs, scan.lost)
 
-    by_length = np.argsort(np.diff(stream.bounds), kind="stable")
+
+class _Scan(NamedTuple):
+    """What :func:`hmmseg.kernels.scan.scan_contigs` fills."""
+
+    starts: NDArray[np.float64]
+    ends: NDArray[np.float64]
+    heads: NDArray[np.float64]
+    logs: NDArray[np.float64]
+    lost: NDArray[np.bool_]
+
+
+def _in_circles(stream: Stream) -> NDArray[np.int64]:
+    """Return the blocks of closed contigs."""
+    return np.flatnonzero(np.repeat(stream.closed, np.diff(stream.contig_blocks)))
+
+
+def _transfer(
+    tables: Tables,
+    stream: Stream,
+    threads: int,
+    blocks: NDArray[np.int64],
+    products: NDArray[np.float64],
+    times: NDArray[np.int64],
+) -> NDArray[np.bool_]:
+    """Fill the transfer matrices of blocks; return the contigs in which a value was lost."""
+    # Blocks go in pairs, best of equal length.
+    by_length = blocks[np.argsort(np.diff(stream.bounds)[blocks], kind="stable")]
+    scales = np.zeros(times.shape)
+    flags = np.zeros(len(times), bool)
+    transfer = block_kernels(products.shape[1]).transfer
 
     def work(first: int) -> None:
         transfer(
@@ -105,20 +154,30 @@ def find_ends(model: Model, tables: Tables, stream: Stream, threads: int) -> Blo
             tables.matrices, tables.interval, products, scales, flags,
         )  # fmt: skip
 
-    in_threads(work, range(0, blocks, _BLOCKS_AT_ONCE), threads)
-    times = scales.astype(np.int64)
-    lost = _any_of_blocks(flags, stream.contig_blocks)
-    starts, ends = np.empty((blocks, states)), np.empty((blocks, states))
-    heads, logs = np.zeros((contigs, states)), np.zeros(contigs)
-    first_vectors = model.start_probabilities * model.emissions[:, stream.heads].T
-    scan_contigs(
-        products, times, stream.contig_blocks, stream.closed, first_vectors,
-        starts, ends, heads, logs, lost,
-    )  # fmt: skip
-    circles = _scan_circles(model, stream, products, times, logs, lost)
-    jobs = _merge_jobs(stream, starts, ends, circles)
-    jobs = jobs.without(np.repeat(lost, np.diff(stream.contig_blocks)))
-    return BlockEnds(jobs, heads, logs, lost)
+    in_threads(work, range(0, len(blocks), _BLOCKS_AT_ONCE), threads)
+    times[:] = scales
+    return _any_of_blocks(flags, stream.contig_blocks)
+
+
+def _run_through(
+    tables: Tables, stream: Stream, threads: int, first_vectors: NDArray[np.float64], scan: _Scan
+) -> None:
+    """Fill what is known of open contigs by carrying vectors through them."""
+    opened = np.flatnonzero(~stream.closed)
+    # Pieces of some hundred blocks each.
+    cuts = np.searchsorted(
+        stream.contig_blocks[opened], np.arange(0, len(scan.starts), _BLOCKS_AT_ONCE), side="left"
+    )
+    pieces = [piece for piece in np.split(opened, np.unique(cuts)) if len(piece)]
+    through = chain_kernel(first_vectors.shape[1])
+
+    def work(contigs: NDArray[np.int64]) -> None:
+        through(
+            stream.tokens, stream.bounds, stream.contig_blocks, contigs, first_vectors,
+            tables.matrices, tables.mirrored, tables.interval, *scan,
+        )  # fmt: skip
+
+    in_threads(work, pieces, threads)
 
 
 def _everything_lost(states: int, contigs: int) -> BlockEnds:

@@ -6,25 +6,26 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hmmseg.inference.exact import impossible
-from hmmseg.inference.streams import BLOCK, in_threads
+from hmmseg.inference.streams import BLOCK, build_stream, in_threads, word_tokens
+from hmmseg.inference.tables import preferred_word
 from hmmseg.kernels.elementary import log_array
 from hmmseg.kernels.paths import (
     IMPOSSIBLE,
+    fill_token_ways,
     fixed_point_logs,
     follow_back,
     path_kernels,
 )
 from hmmseg.kernels.scan import log_trace_of_power
-from hmmseg.kernels.tokens import base_codes
+from hmmseg.kernels.tokens import base_codes, code_total
 from hmmseg.model import Model
 from hmmseg.model.contexts import code_dtype
-from hmmseg.sequence.alphabet import reverse_complement
 from hmmseg.sequence.contigs import Contig
 
 __all__ = ["Runs", "best_path", "best_runs", "path_log_probability", "runs_of"]
 
 _GROUP = 64
-"""Blocks whose back-pointers are held at once."""
+"""Blocks whose best earlier states are held at once."""
 
 
 class Runs(NamedTuple):
@@ -89,10 +90,13 @@ def best_runs(model: Model, contig: Contig, threads: int = 1, block: int = BLOCK
     ----------
     Viterbi 1967, IEEE Transactions on Information Theory 13: 260-269.
     """
-    score, runs = _Decoder(model, contig.bases, contig.closed, threads, block).best()
+    strands = (False, True) if model.both_strands else (False,)
+    found = in_threads(
+        lambda reverse: _Decoder(model, contig, reverse, threads, block).best(), strands, threads
+    )
+    score, runs = found[0]
     if model.both_strands:
-        mirrored = reverse_complement(contig.bases)
-        other, backward = _Decoder(model, mirrored, contig.closed, threads, block).best()
+        other, backward = found[1]
         if other is not None and (score is None or other > score):
             score, runs = other, Runs(len(contig) - backward.edges[::-1], backward.states[::-1])
     if score is None:
@@ -135,113 +139,92 @@ def path_log_probability(model: Model, contig: Contig, path: NDArray[np.integer]
 class _Decoder:
     """Best path of one strand.
 
-    One pass keeps the scores at block edges. A second goes back over groups of blocks, so
-    back-pointers are held for one group at a time.
+    One pass keeps the scores before each block. A second goes back over groups of blocks, so
+    that the best states before tokens are held for one group at a time.
     """
 
     def __init__(
-        self, model: Model, bases: NDArray[np.uint8], closed: bool, threads: int, block: int
+        self, model: Model, contig: Contig, reverse: bool, threads: int, block: int
     ) -> None:
-        self.model, self.bases, self.closed, self.threads = model, bases, closed, threads
-        self.edges = np.concatenate((np.arange(0, bases.size, block), [bases.size]))
-        states = model.states
-        self.log_t = fixed_point_logs(model.transitions.ravel()).reshape(states, states)
-        self.log_e = np.ascontiguousarray(
-            fixed_point_logs(model.emissions.ravel()).reshape(states, -1).T
+        self.model, self.closed, self.threads = model, contig.closed, threads
+        states, order = model.states, model.order
+        word = preferred_word(order, states, len(contig))
+        self.stream = build_stream([contig], order, word, reverse, threads, block)
+        log_t = fixed_point_logs(model.transitions.ravel()).reshape(states, states)
+        log_e = fixed_point_logs(model.emissions.ravel()).reshape(states, -1)
+        self.first = np.maximum(
+            fixed_point_logs(model.start_probabilities) + log_e[:, self.stream.heads[0]],
+            2 * IMPOSSIBLE,
         )
+        self.ways = np.empty((word_tokens(order, word), states, states), np.int64)
+        self.keys = np.empty(self.ways.shape, np.uint32)
+        fill_token_ways(log_t, np.ascontiguousarray(log_e.T), order, word, self.ways, self.keys)
+        self.codes = int(code_total(order))
 
     def best(self) -> tuple[int | None, Runs]:
         """Return the best path's score in 2**-32 nats, None if there is no path, and its runs."""
-        everywhere = np.zeros(self.model.states, np.int64)
+        states = self.model.states
         if not self.closed:
-            return self._decode(everywhere, None, opened=True)
-        score, runs, before = self._free_pass(everywhere)
+            score, runs, _ = self._decode(self.first, None)
+            return score, runs
+        score, runs, before = self._decode(np.zeros(states, np.int64), None)
         if score is None or before == runs.states[-1]:
             return score, runs
         best: tuple[int | None, Runs] = (None, runs)
-        for state in range(self.model.states):
-            entered = np.full(self.model.states, 2 * IMPOSSIBLE)
+        for state in range(states):
+            entered = np.full(states, 2 * IMPOSSIBLE)
             entered[state] = 0
-            score, runs = self._decode(entered, state, opened=False)
+            score, runs, _ = self._decode(entered, state)
             if score is not None and (best[0] is None or score > best[0]):
                 best = (score, runs)
         return best
 
-    def _free_pass(self, everywhere: NDArray[np.int64]) -> tuple[int | None, Runs, int]:
-        marks, score, last = self._scores(everywhere, None, opened=False)
-        runs, before = self._trace(marks, last, opened=False)
-        return score, runs, before
-
-    def _decode(
-        self, entered: NDArray[np.int64], last: int | None, opened: bool
-    ) -> tuple[int | None, Runs]:
-        marks, score, end = self._scores(entered, last, opened)
-        runs, _ = self._trace(marks, end, opened)
-        return score, runs
-
-    def _codes(self, block: int) -> NDArray[np.unsignedinteger]:
-        begin, stop = self.edges[block : block + 2]
-        codes = np.empty(stop - begin, code_dtype(self.model.order))
-        base_codes(self.bases, self.model.order, self.closed, begin, stop, codes)
-        return codes
-
-    def _first(self, codes: NDArray[np.unsignedinteger]) -> NDArray[np.int64]:
-        """Return the scores of an open contig at its first base."""
-        start = fixed_point_logs(self.model.start_probabilities)
-        return np.maximum(start + self.log_e[codes[0]], 2 * IMPOSSIBLE)
-
-    def _scores(
-        self, entered: NDArray[np.int64], last: int | None, opened: bool
-    ) -> tuple[list[NDArray[np.int64]], int | None, int]:
-        """Return the scores before each block, the best final score, and its state."""
+    def _decode(self, entered: NDArray[np.int64], last: int | None) -> tuple[int | None, Runs, int]:
+        """Return score, runs, and state before the first block, given the state at the end."""
+        stream = self.stream
+        scores = entered.copy()
+        marks = np.empty((len(stream.bounds) - 1, self.model.states), np.int64)
         advance = path_kernels(self.model.states).score
-        scores, taken, marks = entered.copy(), 0, []
-        for block in range(len(self.edges) - 1):
-            marks.append(scores.copy())
-            codes = self._codes(block)
-            if opened and block == 0:
-                scores = self._first(codes)
-                codes = codes[1:]
-            taken += int(advance(codes, self.log_t, self.log_e, scores))
+        taken = int(advance(stream.tokens, stream.bounds, self.ways, scores, marks))
         state = int(np.argmax(scores)) if last is None else last
-        possible = scores[state] > IMPOSSIBLE
-        return marks, taken + int(scores[state]) if possible else None, state
+        score = taken + int(scores[state]) if scores[state] > IMPOSSIBLE else None
+        return score, *self._trace(marks, state)
 
-    def _trace(self, marks: list[NDArray[np.int64]], state: int, opened: bool) -> tuple[Runs, int]:
-        """Return the path's runs, and the state before its first position."""
-        pieces: list[Runs] = []
+    def _trace(self, marks: NDArray[np.int64], state: int) -> tuple[Runs, int]:
+        """Return the path's runs, and the state before the first block."""
+        bounds, positions = self.stream.bounds, self.stream.edges[0]
+        edges, states = [positions[-1:]], [np.empty(0, np.uint8)]
+        run = state
         for last in range(len(marks), 0, -_GROUP):
             first = max(last - _GROUP, 0)
             backs = in_threads(
-                lambda block: self._back_pointers(block, marks[block], opened),
+                lambda block: self._states_before(block, marks[block]),
                 range(first, last),
                 self.threads,
             )
             for block, back in zip(range(last - 1, first - 1, -1), reversed(backs), strict=True):
-                path = np.empty(len(back), np.uint8)
-                state = follow_back(back, state, path)
-                piece = runs_of(path)
-                pieces.append(Runs(piece.edges + self.edges[block], piece.states))
-        return _join(pieces[::-1]), state
+                begin, stop = bounds[block : block + 2]
+                begins = np.empty(positions[block + 1] - positions[block], np.int64)
+                whose = np.empty(len(begins), np.uint8)
+                count, run_before, before = follow_back(
+                    self.stream.tokens, begin, stop, self.codes, self.stream.word, back,
+                    self.keys, run, state, positions[block + 1], begins, whose,
+                )  # fmt: skip
+                edges.append(begins[:count].copy())
+                states.append(whose[:count].copy())
+                run, state = run_before, before
+        if not self.closed and state != run:
+            edges.append(np.array([1]))
+            states.append(np.array([run], np.uint8))
+            run = state
+        edges.append(np.zeros(1, np.int64))
+        states.append(np.array([run], np.uint8))
+        return Runs(np.concatenate(edges)[::-1], np.concatenate(states)[::-1]), state
 
-    def _back_pointers(
-        self, block: int, mark: NDArray[np.int64], opened: bool
-    ) -> NDArray[np.uint8]:
-        codes = self._codes(block)
-        scores = mark.copy()
-        back = np.zeros((len(codes), self.model.states), np.uint8)
-        skipped = int(opened and block == 0)
-        if skipped:
-            scores = self._first(codes)
+    def _states_before(self, block: int, mark: NDArray[np.int64]) -> NDArray[np.uint8]:
+        begin, stop = self.stream.bounds[block : block + 2]
+        back = np.empty((stop - begin, self.model.states), np.uint8)
         path_kernels(self.model.states).trace(
-            codes[skipped:], self.log_t, self.log_e, scores, back[skipped:]
+            self.stream.tokens, begin, stop, self.ways, self.keys, mark, back
         )
         return back
-
-
-def _join(pieces: list[Runs]) -> Runs:
-    """Return the runs of neighbouring stretches as one, equal states joined at the seams."""
-    begins = np.concatenate([piece.edges[:-1] for piece in pieces])
-    states = np.concatenate([piece.states for piece in pieces])
-    kept = np.concatenate(([True], states[1:] != states[:-1]))
-    return Runs(np.append(begins[kept], pieces[-1].edges[-1]), states[kept])

@@ -11,13 +11,14 @@ from hmmseg.inference.streams import BLOCK, Stream, build_stream, in_threads
 from hmmseg.inference.tables import Tables, preferred_word, tables_for
 from hmmseg.kernels.posteriors import posterior_kernel
 from hmmseg.model import Model
-from hmmseg.model.contexts import code_dtype
 from hmmseg.sequence.contigs import Contig
 
 __all__ = ["WINDOW_BLOCKS", "posterior", "posterior_windows"]
 
 WINDOW_BLOCKS = 64
 """Blocks in a window."""
+
+_BLOCKS_AT_ONCE = 8
 
 
 def posterior(model: Model, contig: Contig, threads: int = 1) -> NDArray[np.float64]:
@@ -77,11 +78,11 @@ def posterior_windows(
     ]
     length, size = len(contig), WINDOW_BLOCKS * block
     for begin in range(0, length, size):
-        stop = min(begin + size, length)
-        window = strands[0].window(begin, stop)
-        if len(strands) > 1:
-            window += strands[1].window(length - stop, length - begin)[::-1]
-            window /= 2
+        window = np.zeros((min(size, length - begin), model.states))
+        # Where a strand loses a number it changes to logarithms, and the window is done again.
+        share = 1 / len(strands)
+        while sum(strand.add_to(window, begin, share) for strand in strands) < len(strands):
+            window[:] = 0.0
         yield begin, window
 
 
@@ -100,35 +101,55 @@ class _Strand:
         self.ends: BlockEnds = find_ends(model, tables, self.stream, threads)
         self.single: Tables = tables_for(model, 1)
 
-    def window(self, begin: int, stop: int) -> NDArray[np.float64]:
-        """Return float64[position, state] of this strand's positions, which are block edges."""
-        if not self.ends.lost[0]:
-            result = np.zeros((stop - begin, self.model.states))
-            edges = self.stream.edges[0]
-            first, last = np.searchsorted(edges, (begin, stop))
-            if begin == 0 and not self.contig.closed:
-                result[0] = self.ends.heads[0]
-            done = in_threads(
-                lambda block: self._fill(block, begin, result), range(first, last), self.threads
-            )
-            if all(done):
-                return result
-            self.ends.lost[0] = True
-        codes = self.stream.codes(0)
-        return exact_pass(self.model, self.contig, codes, (begin, stop), self.reverse).posterior
+    def add_to(self, window: NDArray[np.float64], first: int, share: float) -> bool:
+        """Add this strand's share of the posterior from a forward position on.
 
-    def _fill(self, block: int, begin: int, result: NDArray[np.float64]) -> bool:
-        """Add one block's posterior; return whether no number was lost."""
-        left, right = self.stream.edges[0][block : block + 2]
-        codes = np.empty(right - left, code_dtype(self.model.order))
-        forward = np.empty((right - left + 1, self.model.states))
-        jobs = self.ends.jobs
-        return all(
-            posterior_kernel(self.model.states)(
-                self.stream.strands[0], self.model.order, self.contig.closed, left, right,
-                jobs.starts[job], jobs.ends[job], jobs.shares[job],
-                self.single.matrices, self.single.mirrored, self.single.interval,
-                codes, forward, result[left - begin : right - begin],
+        Returns
+        -------
+        bool
+            Whether no number was lost.
+        """
+        length = len(self.contig)
+        begin, stop = first, first + len(window)
+        if self.reverse:
+            begin, stop = length - stop, length - begin
+        # The base at position x of this strand has row origin + step * x of the window.
+        origin, step = (length - 1 - first, -1) if self.reverse else (-first, 1)
+        if self.ends.lost[0]:
+            exact = exact_pass(
+                self.model, self.contig, self.stream.codes(0), (begin, stop), self.reverse
             )
-            for job in jobs.of_blocks(block, block + 1)
-        )  # fmt: skip
+            window += share * exact.posterior[::step]
+            return True
+        if begin == 0 and not self.contig.closed:
+            window[origin] += share * self.ends.heads[0]
+        self.ends.lost[0] = not self._add_blocks(window, begin, stop, origin, step, share)
+        return not self.ends.lost[0]
+
+    def _add_blocks(
+        self,
+        window: NDArray[np.float64],
+        begin: int,
+        stop: int,
+        origin: int,
+        step: int,
+        share: float,
+    ) -> bool:
+        """Add what blocks between two edges say; return whether no number was lost."""
+        edges, jobs = self.stream.edges[0], self.ends.jobs
+        first, last = np.searchsorted(edges, (begin, stop))
+        add_posteriors = posterior_kernel(self.model.states)
+
+        def work(block: int) -> bool:
+            mine = jobs.of_blocks(block, min(block + _BLOCKS_AT_ONCE, int(last)))
+            piece = slice(mine.start, mine.stop)
+            return bool(
+                add_posteriors(
+                    self.stream.strands[0], self.model.order, self.contig.closed, edges,
+                    jobs.blocks[piece], jobs.starts[piece], jobs.ends[piece],
+                    share * jobs.shares[piece], self.single.matrices, self.single.mirrored,
+                    self.single.interval, window, origin, step,
+                )
+            )  # fmt: skip
+
+        return all(in_threads(work, range(int(first), int(last), _BLOCKS_AT_ONCE), self.threads))

@@ -12,10 +12,13 @@ from hmmseg.model import Model
 
 __all__ = ["Tables", "preferred_word", "tables_for"]
 
-_TABLE_BYTES = 1 << 17
+_TABLE_BYTES = 1 << 19
 """A table of matrices that is to stay in a core's own cache."""
 
 _LONGEST_WORD = 4
+
+_BASES_A_TOKEN = 64
+"""So many bases must share the work of making and unfolding a token's matrix."""
 
 
 class Tables(NamedTuple):
@@ -42,7 +45,7 @@ def preferred_word(order: int, states: int, bases: int) -> int:
     word = 1
     while word < _LONGEST_WORD:
         tokens = 4 ** (order + word + 1)
-        if tokens * states * states * 8 > _TABLE_BYTES or tokens * 16 > bases:
+        if tokens * states * states * 8 > _TABLE_BYTES or tokens * _BASES_A_TOKEN > bases:
             break
         word += 1
     return word

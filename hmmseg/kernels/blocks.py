@@ -41,6 +41,7 @@ from hmmseg.kernels.vectors import (
 
 __all__ = ["BlockKernels", "block_kernels"]
 
+
 class BlockKernels(NamedTuple):
     """The kernels of one number of states; :mod:`hmmseg.kernels.plain` explains their arguments."""
 
@@ -222,9 +223,7 @@ def _expect_kernel(states: int) -> Callable[..., Any]:
             p, q = load(starts, one, states), load(starts, other, states)
             p = _forward(tokens, p_stop, p_length, common, p, p_rows, matrices, interval)
             q = _forward(tokens, q_stop, q_length, common, q, q_rows, matrices, interval)
-            _forward_pair(
-                tokens, p_stop, q_stop, common, p, q, p_rows, q_rows, matrices, interval
-            )
+            _forward_pair(tokens, p_stop, q_stop, common, p, q, p_rows, q_rows, matrices, interval)
             p, q, p_lost, q_lost = _backward_pair(
                 tokens, p_stop, q_stop, common, load(ends, one, states), load(ends, other, states),
                 shares[one], shares[other], p_rows, q_rows, mirrored, interval, weights,

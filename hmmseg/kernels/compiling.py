@@ -24,7 +24,7 @@ def kernel(function: Callable[..., Any]) -> Callable[..., Any]:
 
 def helper(function: Callable[..., Any]) -> Callable[..., Any]:
     """Compile a function that only kernels call; it becomes part of them, and of their cache."""
-    compiled: Callable[..., Any] = numba.njit(
-        nogil=True, fastmath=False, error_model="numpy"
-    )(function)
+    compiled: Callable[..., Any] = numba.njit(nogil=True, fastmath=False, error_model="numpy")(
+        function
+    )
     return compiled

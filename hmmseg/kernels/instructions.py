@@ -17,19 +17,21 @@ from hmmseg.kernels.limits import SCALE_BITS, VANISHING
 __all__ = [
     "Vector",
     "add_outer",
+    "add_to",
     "identity",
     "inner",
     "item",
     "load",
-    "multiplied",
     "plus",
     "product",
     "rescaled",
+    "rescaled_and_counted",
     "rescaled_columns",
     "scaled",
     "step_columns",
     "store",
     "store_columns",
+    "times_row",
 ]
 
 _SCALE_SHIFT = SCALE_BITS.bit_length() - 1
@@ -88,10 +90,19 @@ class _Row:
     """
 
     def __init__(
-        self, context: Any, builder: ir.IRBuilder, signature: Any, arguments: Any, at: int, size: int
+        self,
+        context: Any,
+        builder: ir.IRBuilder,
+        signature: Any,
+        arguments: Any,
+        at: int,
+        size: int,
     ) -> None:
         """Take the array from argument ``at - 1``, and from argument ``at`` which row it is."""
         kind = signature.args[at - 1]
+        if kind.layout != "C":
+            message = f"rows of a contiguous array are needed, not of {kind}"
+            raise TypeError(message)
         array = context.make_array(kind)(context, builder, arguments[at - 1])
         row = context.cast(builder, arguments[at], signature.args[at], types.intp)
         length = ir.Constant(_INT64, size ** (kind.ndim - 1))
@@ -169,13 +180,14 @@ def scaled(typing, vector, factor):
 
 
 @intrinsic
-def multiplied(typing, vector, other):
-    """Return the products of two vectors' elements."""
+def times_row(typing, vector, rows, at):
+    """Return the products of a vector's elements with those of a row."""
 
     def code(context, builder, signature, arguments):
-        return builder.fmul(*arguments)
+        row = _Row(context, builder, signature, arguments, 2, vector.size)
+        return builder.fmul(row.vector(0, vector.size), arguments[0])
 
-    return vector(vector, other), code
+    return vector(vector, rows, at), code
 
 
 @intrinsic
@@ -239,6 +251,19 @@ def add_outer(typing, weights, token, rows, at, vector):
         return context.get_dummy_value()
 
     return types.void(weights, token, rows, at, vector), code
+
+
+@intrinsic
+def add_to(typing, rows, at, vector):
+    """Add a vector to a row."""
+    size = vector.size
+
+    def code(context, builder, signature, arguments):
+        row = _Row(context, builder, signature, arguments, 1, size)
+        row.fill(0, builder.fadd(row.vector(0, size), arguments[2]))
+        return context.get_dummy_value()
+
+    return types.void(rows, at, vector), code
 
 
 @intrinsic(prefer_literal=True)
@@ -315,23 +340,57 @@ def _scaling(builder: ir.IRBuilder, largest: ir.Value) -> tuple[ir.Value, ir.Val
     return factors, builder.sitofp(counts, largest.type)
 
 
+def _rescale(builder: ir.IRBuilder, vectors: list[ir.Value], largest: ir.Value) -> tuple[Any, ...]:
+    """Return scaled vectors, the exponents, and whether a value nearly vanished."""
+    size = largest.type.count
+    factors, counts = _scaling(builder, largest)
+    new = [builder.fmul(vector, factors) for vector in vectors]
+    vanishing = ir.Constant(ir.VectorType(ir.IntType(1), size), [0] * size)
+    for vector in new:
+        some = builder.fcmp_ordered(">", vector, _constant(size, 0.0))
+        small = builder.fcmp_ordered("<", vector, _constant(size, VANISHING))
+        vanishing = builder.or_(vanishing, builder.and_(some, small))
+    found = builder.extract_element(vanishing, _index(0))
+    for k in range(1, size):
+        found = builder.or_(found, builder.extract_element(vanishing, _index(k)))
+    return new, counts, found
+
+
+def _largest_element(builder: ir.IRBuilder, vector: ir.Value) -> ir.Value:
+    """Return the largest element, as a vector."""
+    size = vector.type.count
+    largest = builder.extract_element(vector, _index(0))
+    for k in range(1, size):
+        largest = _larger(builder, largest, builder.extract_element(vector, _index(k)))
+    return _spread(builder, largest, size)
+
+
 @intrinsic
 def rescaled(typing, vector):
     """Return a vector with its largest value brought near 1."""
 
     def code(context, builder, signature, arguments):
-        largest = builder.extract_element(arguments[0], _index(0))
-        for k in range(1, vector.size):
-            largest = _larger(builder, largest, builder.extract_element(arguments[0], _index(k)))
-        factors, _ = _scaling(builder, _spread(builder, largest, vector.size))
+        factors, _ = _scaling(builder, _largest_element(builder, arguments[0]))
         return builder.fmul(arguments[0], factors)
 
     return vector(vector), code
 
 
 @intrinsic
+def rescaled_and_counted(typing, vector):
+    """Return a vector with its largest value brought near 1, and what was done."""
+
+    def code(context, builder, signature, arguments):
+        largest = _largest_element(builder, arguments[0])
+        new, counts, found = _rescale(builder, [arguments[0]], largest)
+        return context.make_tuple(builder, signature.return_type, [new[0], counts, found])
+
+    return types.Tuple((vector, vector, types.boolean))(vector), code
+
+
+@intrinsic
 def rescaled_columns(typing, columns):
-    """Return columns with the largest value of every row brought near 1."""
+    """Return columns with the largest value of every row brought near 1, and what was done."""
     size = columns.count
 
     def code(context, builder, signature, arguments):
@@ -339,16 +398,7 @@ def rescaled_columns(typing, columns):
         largest = old[0]
         for column in old[1:]:
             largest = _larger(builder, largest, column)
-        factors, counts = _scaling(builder, largest)
-        new = [builder.fmul(column, factors) for column in old]
-        vanishing = ir.Constant(ir.VectorType(ir.IntType(1), size), [0] * size)
-        for column in new:
-            some = builder.fcmp_ordered(">", column, _constant(size, 0.0))
-            small = builder.fcmp_ordered("<", column, _constant(size, VANISHING))
-            vanishing = builder.or_(vanishing, builder.and_(some, small))
-        found = builder.extract_element(vanishing, _index(0))
-        for k in range(1, size):
-            found = builder.or_(found, builder.extract_element(vanishing, _index(k)))
+        new, counts, found = _rescale(builder, old, largest)
         items = [context.make_tuple(builder, columns, new), counts, found]
         return context.make_tuple(builder, signature.return_type, items)
 

@@ -10,7 +10,7 @@ import numpy as np
 from hmmseg.kernels.compiling import kernel
 from hmmseg.kernels.tokens import code_total, words_of
 
-__all__ = ["fill_token_matrices", "smallest_entry", "unfold_counts"]
+__all__ = ["code_in_word", "fill_token_matrices", "smallest_entry", "unfold_counts"]
 
 
 @kernel
@@ -37,15 +37,15 @@ def fill_token_matrices(transitions, emissions, order, word, matrices):
     full = codes - 1 - words_of(order + 1)
     product = np.empty((states, states))
     for number in range(words_of(order + word)):
-        matrices[codes + number] = matrices[full + _code_in_word(number, order, word, 0)]
+        matrices[codes + number] = matrices[full + code_in_word(number, order, word, 0)]
         for at in range(1, word):
-            step = matrices[full + _code_in_word(number, order, word, at)]
+            step = matrices[full + code_in_word(number, order, word, at)]
             _multiply(matrices[codes + number], step, product)
             matrices[codes + number] = product
 
 
 @kernel
-def _code_in_word(number, order, word, at):
+def code_in_word(number, order, word, at):
     """Return the (order + 1)-mer that ends at one base of a word with its context."""
     return (number >> (2 * (word - 1 - at))) & (words_of(order + 1) - 1)
 
@@ -103,14 +103,14 @@ def unfold_counts(weights, matrices, order, word, transition_counts, emission_co
         # before[at] carries the weights from the state before the word to the one before `at`.
         before[0] = weights[codes + number]
         for at in range(1, word):
-            step = matrices[full + _code_in_word(number, order, word, at - 1)]
+            step = matrices[full + code_in_word(number, order, word, at - 1)]
             _multiply_transposed_left(step, before[at - 1], before[at])
         # outer[b, j] carries them back from the state at the word's end.
         for i in range(states):
             for j in range(states):
                 outer[i, j] = 1.0 if i == j else 0.0
         for at in range(word - 1, -1, -1):
-            code = full + _code_in_word(number, order, word, at)
+            code = full + code_in_word(number, order, word, at)
             _multiply_transposed_right(before[at], outer, scratch)
             _add_step(scratch, matrices[code], code, transition_counts, emission_counts)
             _multiply(matrices[code], outer, scratch)

@@ -4,8 +4,9 @@ import numpy as np
 
 from hmmseg.kernels.compiling import kernel
 from hmmseg.kernels.limits import LOST, SCALE_BITS, VANISHING
+from hmmseg.kernels.tokens import base_codes
 
-__all__ = ["expect", "rescale", "transfer"]
+__all__ = ["add_posteriors", "expect", "rescale", "transfer"]
 
 _SCALE = 2.0**SCALE_BITS
 _LOW = 2.0**-SCALE_BITS
@@ -139,3 +140,72 @@ def expect(
                 for j in range(states):
                     weights[token, i, j] += share * backward[j]
             backward[:] = stepped
+
+
+@kernel
+def add_posteriors(
+    bases, order, closed, edges, blocks, starts, ends, shares, matrices, mirrored, interval,
+    posterior, origin, step,
+):  # fmt: skip
+    """Add the posteriors of blocks between known vectors.
+
+    Parameters
+    ----------
+    bases : uint8[position]
+        A whole contig.
+    order : int
+        Context length.
+    closed : bool
+        Whether contexts reach round the end.
+    edges : int64[block + 1]
+        Base positions of all blocks.
+    blocks, starts, ends, shares
+        Jobs, as for :func:`expect`.
+    matrices, mirrored : float64[code, state, state]
+        Matrices of single bases and their transposes.
+    interval : int
+        Bases between two looks at the scale.
+    posterior : float64[row, state]
+        Added to: the base at ``position`` has row ``origin + step * position``.
+    origin, step : int
+        A step of -1 is for the reverse strand.
+
+    Returns
+    -------
+    bool
+        Whether no value was lost.
+    """
+    states = matrices.shape[1]
+    longest = 0
+    for block in blocks:
+        longest = max(longest, edges[block + 1] - edges[block])
+    codes = np.empty(longest, np.uint32)
+    forward = np.empty((longest + 1, states))
+    stepped = np.empty(states)
+    for job in range(blocks.size):
+        begin, stop = edges[blocks[job]], edges[blocks[job] + 1]
+        length = stop - begin
+        base_codes(bases, order, closed, begin, stop, codes)
+        stepped[:] = starts[job]
+        for left in range(length, 0, -1):
+            if left % interval == 0:
+                rescale(stepped)
+            _vector_times_matrix(stepped, matrices[codes[length - left]], forward[left])
+            stepped[:] = forward[left]
+        backward = ends[job].copy()
+        factor = 0.0
+        for left in range(1, length + 1):
+            if (left - 1) % interval == 0:
+                rescale(backward)
+                total = 0.0
+                for j in range(states):
+                    total += forward[left, j] * backward[j]
+                if total < LOST:
+                    return False
+                factor = shares[job] / total
+            for j in range(states):
+                more = forward[left, j] * (backward[j] * factor)
+                posterior[origin + step * (stop - left), j] += more
+            _vector_times_matrix(backward, mirrored[codes[length - left]], stepped)
+            backward[:] = stepped
+    return True

@@ -14,6 +14,7 @@ Mozes, Weimann & Ziv-Ukelson 2009, Algorithmica 54: 379-399.
 import numpy as np
 
 from hmmseg.kernels.compiling import kernel
+from hmmseg.kernels.vectors import item
 
 __all__ = ["base_codes", "code_total", "token_count", "tokenise", "words_of"]
 
@@ -70,54 +71,74 @@ def base_codes(bases, order, closed, start, stop, codes):
     codes : uint16[stop - start] or uint32[stop - start]
         Filled.
     """
-    contexts = words_of(order)
     missing = code_total(order) - 1
+    full = missing - words_of(order + 1)
+    mask = words_of(order + 1) - 1
     context, known = _context_before(bases, order, closed, start)
-    for position in range(start, stop):
-        base = np.int64(bases[position])
-        if base == _MISSING:
-            codes[position - start] = missing
-            context = 0
-            known = 0
-            continue
-        size = words_of(known)
-        codes[position - start] = (4 * size - 4) // 3 + 4 * (context & (size - 1)) + base
-        context = (4 * context + base) & (contexts - 1)
-        if known < order:
-            known += 1
+    position = start
+    while position < stop:
+        if known == order:
+            while position < stop:
+                base = np.int64(item(bases, position))
+                if base == _MISSING:
+                    break
+                context = (4 * context + base) & mask
+                codes[position - start] = full + context
+                position += 1
+            context &= words_of(order) - 1
+            if position == stop:
+                break
+        code, context, known = _base_step(bases, order, context, known, position)
+        codes[position - start] = code
+        position += 1
 
 
 @kernel
-def _step(bases, order, word, context, known, position, stop):
-    """Return the next token, its length, and the context and known bases behind it."""
-    codes = code_total(order)
-    contexts = words_of(order)
-    if word > 1 and known == order and position + word <= stop:
-        number = 0
-        seen = 0
-        for at in range(position, position + word):
-            number = (number << 2) + bases[at]
-            seen |= bases[at]
-        if seen < _MISSING:
-            number += context << (2 * word)
-            return codes + number, word, number & (contexts - 1), order
+def _base_step(bases, order, context, known, position):
+    """Return the code of one base, and the context and known bases behind it."""
     base = np.int64(bases[position])
     if base == _MISSING:
-        return codes - 1, 1, 0, 0
+        return code_total(order) - 1, 0, 0
     size = words_of(known)
     code = (4 * size - 4) // 3 + 4 * (context & (size - 1)) + base
-    return code, 1, (4 * context + base) & (contexts - 1), min(known + 1, order)
+    return code, (4 * context + base) & (words_of(order) - 1), min(known + 1, order)
+
+
+@kernel
+def _word_number(bases, word, position):
+    """Return the number of the word at a position, -1 if one of its bases is missing."""
+    number = 0
+    seen = 0
+    for at in range(position, position + word):
+        base = np.int64(item(bases, at))
+        number = (number << 2) | base
+        seen |= base
+    return number if seen < _MISSING else -1
 
 
 @kernel
 def token_count(bases, order, word, closed, start, stop):
     """Return how many tokens positions ``start`` to ``stop`` make."""
     context, known = _context_before(bases, order, closed, start)
+    seen = 0
+    for position in range(start, stop):
+        seen |= np.int64(item(bases, position))
+    if seen < _MISSING:
+        # Single bases until the context is known, words as long as one fits, single bases.
+        lead = min(order - known, stop - start) if word > 1 else 0
+        words, rest = divmod(stop - start - lead, word)
+        return lead + words + rest
     count = 0
     position = start
     while position < stop:
-        _, length, context, known = _step(bases, order, word, context, known, position, stop)
-        position += length
+        if word > 1 and known == order:
+            while position + word <= stop and _word_number(bases, word, position) >= 0:
+                position += word
+                count += 1
+            if position == stop:
+                break
+        _, context, known = _base_step(bases, order, context, known, position)
+        position += 1
         count += 1
     return count
 
@@ -139,11 +160,25 @@ def tokenise(bases, order, word, closed, start, stop, tokens):
     tokens : uint16[token] or uint32[token]
         Filled from its beginning.
     """
+    codes = code_total(order)
+    mask = words_of(order) - 1
     context, known = _context_before(bases, order, closed, start)
     count = 0
     position = start
     while position < stop:
-        token, length, context, known = _step(bases, order, word, context, known, position, stop)
-        tokens[count] = token
-        position += length
+        if word > 1 and known == order:
+            while position + word <= stop:
+                number = _word_number(bases, word, position)
+                if number < 0:
+                    break
+                number |= context << (2 * word)
+                tokens[count] = codes + number
+                context = number & mask
+                position += word
+                count += 1
+            if position == stop:
+                break
+        code, context, known = _base_step(bases, order, context, known, position)
+        tokens[count] = code
+        position += 1
         count += 1

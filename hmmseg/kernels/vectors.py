@@ -19,19 +19,21 @@ from hmmseg.kernels.limits import SCALE_BITS, VANISHING
 __all__ = [
     "MOST_STATES",
     "add_outer",
+    "add_to",
     "identity",
     "inner",
     "item",
     "load",
-    "multiplied",
     "plus",
     "product",
     "rescaled",
+    "rescaled_and_counted",
     "rescaled_columns",
     "scaled",
     "step_columns",
     "store",
     "store_columns",
+    "times_row",
 ]
 
 MOST_STATES = 8
@@ -58,9 +60,9 @@ def scaled(vector, factor):
     return vector * factor
 
 
-def multiplied(vector, other):
-    """Return the products of two vectors' elements."""
-    return vector * other
+def times_row(vector, rows, at):
+    """Return the products of a vector's elements with those of row ``at``."""
+    return rows[at] * vector
 
 
 def plus(vector, other):
@@ -88,6 +90,11 @@ def product(vector, matrices, token):
 def add_outer(weights, token, rows, at, vector):
     """Add to the token's matrix of weights: row ``at``, a column, times a vector, a row."""
     weights[token] += rows[at][:, None] * vector
+
+
+def add_to(rows, at, vector):
+    """Add a vector to row ``at`` of float64[row, state]."""
+    rows[at] += vector
 
 
 def identity(size):
@@ -125,6 +132,13 @@ def rescaled(vector):
     return vector * factor
 
 
+def rescaled_and_counted(vector):
+    """Return a rescaled vector, the power's exponent, and whether a value nearly vanished."""
+    factor, count = _scaling(np.full(vector.size, vector.max()))
+    vector = vector * factor
+    return vector, count, bool(((vector > 0) & (vector < VANISHING)).any())
+
+
 def rescaled_columns(columns):
     """Bring every row of a matrix near 1 by a power of 2**64 of its own.
 
@@ -143,17 +157,19 @@ def rescaled_columns(columns):
 if not config.DISABLE_JIT:
     from hmmseg.kernels.instructions import (
         add_outer,
+        add_to,
         identity,
         inner,
         item,
         load,
-        multiplied,
         plus,
         product,
         rescaled,
+        rescaled_and_counted,
         rescaled_columns,
         scaled,
         step_columns,
         store,
         store_columns,
+        times_row,
     )
