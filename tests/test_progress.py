@@ -7,7 +7,7 @@ import sys
 import pytest
 
 from hmmseg import progress
-from hmmseg.progress import Progress
+from hmmseg.progress import Progress, warn
 
 
 class Clock:
@@ -79,7 +79,7 @@ def test_a_job_without_a_known_total(capsys: pytest.CaptureFixture[str]) -> None
     with Progress(0, "a", "b", clock=clock) as job:
         clock.now += 40
         job.advance(7)
-    assert capsys.readouterr().err.splitlines()[0] == "a: 7 of 0 b, 40 s"
+    assert capsys.readouterr().err.splitlines()[0] == "a: 7 b, 40 s"
 
 
 def test_quiet_writes_nothing(
@@ -119,3 +119,8 @@ def test_tqdm_is_not_imported_off_a_terminal() -> None:
         [sys.executable, "-c", code], capture_output=True, text=True, check=True, timeout=60
     )
     assert (done.stdout, done.stderr) == ("False\n", "")
+
+
+def test_a_warning_is_one_line(capsys: pytest.CaptureFixture[str]) -> None:
+    warn("record x holds nothing but N")
+    assert capsys.readouterr() == ("", "hmmseg: warning: record x holds nothing but N\n")

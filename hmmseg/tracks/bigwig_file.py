@@ -234,9 +234,10 @@ class BigWigReader:
         is_leaf, _, count = bbi.NODE.unpack_from(self._content, offset)
         kind = leaf if is_leaf else branch
         start = offset + bbi.NODE.size
-        items = np.frombuffer(self._content[start : start + count * kind.itemsize], dtype=kind)
-        if len(items) != count:
+        content = self._content[start : start + count * kind.itemsize]
+        if len(content) != count * kind.itemsize:
             raise ValueError("the file is cut short")
+        items = np.frombuffer(content, dtype=kind)
         if is_leaf:
             yield items
             return

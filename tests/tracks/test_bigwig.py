@@ -290,6 +290,13 @@ class TestReadBack:
         with pytest.raises(OutputError, match="differs from what was written"):
             self.write_with(tmp_path / "x.bw", monkeypatch, change)
 
+    def test_changed_lengths(self, tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+        names = bbi.write_names
+        other = {**LENGTHS, "a": 41}
+        monkeypatch.setattr(bbi, "write_names", lambda file, _: names(file, other))
+        with pytest.raises(OutputError, match="its records differ from those written"):
+            write(tmp_path / "x.bw", [("a", [(0, 5, 0.25)])])
+
     def test_nothing_is_checked_after_a_failure(self, tmp_path: Path) -> None:
         track = PosteriorTrack(tmp_path / "x.bw", LENGTHS)
         with pytest.raises(ZeroDivisionError), track:
@@ -366,6 +373,53 @@ class TestSummary:
         file.close()
         found = summarize_track(path)
         assert (found.record_lengths, found.bases, found.total) == (LENGTHS, 20, 7.5)
+
+    @pytest.mark.parametrize(
+        ("part", "offset", "new", "message"),
+        [
+            ("names", 0, b"\0", "no names"),
+            ("index", 0, b"\0", "no index"),
+            ("index", 48, b"\0", "broken index"),  # a branch that leads back
+            ("index", 50, b"\xff", "the file is cut short"),  # more items than the file has
+            ("header", 0, b"\0", "not a bigWig file"),
+        ],
+    )
+    def test_names_what_is_damaged(
+        self, tmp_path: Path, part: str, offset: int, new: bytes, message: str
+    ) -> None:
+        path = tmp_path / "x.bw"
+        write(path, [("a", [(0, 5, 0.25)])])
+        content = bytearray(path.read_bytes())
+        # Offsets of names and index: Kent et al. (2010), supplementary table 5.
+        where = {"header": 0, "names": 8, "index": 24}[part]
+        begin = struct.unpack_from("<Q", content, where)[0] if where else 0
+        content[begin + offset : begin + offset + len(new)] = new
+        path.write_bytes(content)
+        with pytest.raises(OutputError, match=message):
+            summarize_track(path)
+
+    @pytest.mark.parametrize(
+        ("at", "new", "message"),
+        [
+            (20, b"\2", "a block that is not one of runs"),
+            (22, b"\7", "a block that is not one of runs"),
+            (28, b"\xff", "values or intervals out of bounds"),
+            (32, b"\0\0\xc0\x7f", "values or intervals out of bounds"),  # NaN
+        ],
+    )
+    def test_names_what_is_wrong_with_runs(
+        self, tmp_path: Path, monkeypatch: pytest.MonkeyPatch, at: int, new: bytes, message: str
+    ) -> None:
+        pack = bbi.pack_section
+
+        def damaged(number: int, runs: NDArray[np.void]) -> bytes:
+            content = bytearray(pack(number, runs))
+            content[at : at + len(new)] = new
+            return bytes(content)
+
+        monkeypatch.setattr(bbi, "pack_section", damaged)
+        with pytest.raises(OutputError, match=message):
+            write(tmp_path / "x.bw", [("a", [(0, 5, 0.25)])])
 
     @given(st.data())
     def test_of_damaged_files(self, data: st.DataObject) -> None:
