@@ -7,7 +7,9 @@ regions that were called, and the truth.
 import sys
 from pathlib import Path
 
-import pyBigWig
+import numpy as np
+
+from hmmseg.tracks.bigwig import read_track
 
 __all__ = ["draw", "main"]
 
@@ -45,17 +47,21 @@ def bars(path: Path, y: float) -> list[str]:
 
 def curve(path: Path, y: float, colour: str) -> list[str]:
     """Highest posterior in each bin, as filled columns; nothing in gaps."""
-    with pyBigWig.open(str(path)) as track:
-        heights = track.stats(RECORD, START, END, type="max", nBins=BINS, exact=True)
-    step = (END - START) / BINS
-    found = [f'<path d="M{LEFT} {y + CURVE}H{WIDTH - RIGHT}" stroke="#bbbbbb"/>']
+    values = np.zeros(END - START)
+    for record, starts, ends, levels in read_track(path):
+        if record == RECORD:
+            for start, end, level in zip(starts, ends, levels, strict=True):
+                values[max(start - START, 0) : max(end - START, 0)] = level
+    edges = np.linspace(0, len(values), BINS + 1).astype(int)
+    heights = np.maximum.reduceat(values, edges[:-1])
     columns = []
-    for number, height in enumerate(heights):
+    for left, right, height in zip(edges[:-1], edges[1:], heights, strict=True):
         if height:
-            x, width = across(START + number * step), across(step) - across(0)
-            tall = height * CURVE
+            x, tall = across(START + left), height * CURVE
+            width = across(START + right) - x
             columns.append(f"M{x:.1f} {y + CURVE:.1f}v{-tall:.1f}h{width:.1f}v{tall:.1f}z")
-    return [*found, f'<path d="{"".join(columns)}" fill="{colour}"/>']
+    line = f'<path d="M{LEFT} {y + CURVE}H{WIDTH - RIGHT}" stroke="#bbbbbb"/>'
+    return [line, f'<path d="{"".join(columns)}" fill="{colour}"/>']
 
 
 def draw(calls: Path) -> str:

@@ -28,7 +28,9 @@ SHEETS = {
     "assembly\tfasta\torder\na\ta.fa\t1\nb\tb.fa\t9\n": (3, "order", "maximum"),
     "assembly\tfasta\tthreshold\na\ta.fa\tnan\n": (2, "threshold", "number"),
     "assembly\tfasta\tdecoder\na\ta.fa\tboth\n": (2, "decoder", "one of"),
-    "assembly\tfasta\tinit\torder\na\ta.fa\tm.json\t1\n": (2, "order", "start model"),
+    "assembly\tfasta\tinit\torder\na\ta.fa\tm.json\t1\n": (2, "order", "comes with the init"),
+    "assembly\tfasta\tpreset\torder\na\ta.fa\tx\t1\n": (2, "order", "comes with the preset"),
+    "assembly\tfasta\tpreset\tinit\na\ta.fa\tx\tm.json\n": (2, "init", "one of the two"),
     "assembly\tfasta\tstart\na\ta.fa\tfree\n": (2, "start", "stranded"),
 }
 CONFIGS = {

@@ -15,8 +15,9 @@ shell.prefix(f"PATH={shlex.quote(str(Path(sys.executable).parent))}:$PATH; ")
 FILES = ("fasta", "records", "exclude", "init")
 # Columns whose cells are words even if they look like numbers.
 WORDS = ("assembly", "circular", *FILES)
-# Settings that a start model brings along, so that a row cannot give them beside `init`.
-FIXED_BY_INIT = ("states", "order", "strands", "start")
+# Ways to say where training starts, and the settings that each of them brings along.
+STARTS = ("preset", "init")
+BROUGHT_ALONG = ("states", "order", "strands", "start")
 
 
 def culprit(problem):
@@ -129,14 +130,32 @@ def check_row(row, cells):
     for column in FILES:
         if column in cells and not Path(cells[column]).is_file():
             raise sheet_error(row, column, f"there is no file {cells[column]}")
-    for column in FIXED_BY_INIT:
-        if column in cells and cells.get("init", config["defaults"]["init"]):
-            raise sheet_error(row, column, "comes with the start model; leave it blank")
-    settings = {**config["defaults"], **cells}
-    if settings["init"] is not None:
-        return
-    if settings["start"] == "free" and settings["strands"] == "symmetric":
+    settings = merged(cells)
+    starts = [key for key in STARTS if settings[key] is not None]
+    if len(starts) > 1:
+        raise sheet_error(row, "init", "does not go with a preset; give one of the two")
+    for column in BROUGHT_ALONG:
+        if column in cells and starts:
+            raise sheet_error(
+                row, column, f"comes with the {starts[0]}; leave it blank"
+            )
+    if (
+        not starts
+        and settings["start"] == "free"
+        and settings["strands"] == "symmetric"
+    ):
         raise sheet_error(row, "start", "free needs strands: stranded")
+
+
+def merged(cells):
+    """Defaults of the configuration with the cells of a row over them."""
+    # A row that says where training starts replaces a default that says otherwise.
+    replaced = STARTS if any(key in cells for key in STARTS) else ()
+    defaults = {
+        key: None if key in replaced else value
+        for key, value in config["defaults"].items()
+    }
+    return {**defaults, **cells}
 
 
 def read_sheet():
@@ -148,7 +167,7 @@ def read_sheet():
         check_row(row, cells)
         if cells["assembly"] in settings:
             raise sheet_error(row, "assembly", "stands in a row above already")
-        settings[cells["assembly"]] = {**config["defaults"], **cells}
+        settings[cells["assembly"]] = merged(cells)
     if not settings:
         raise WorkflowError(
             f"{config['assemblies']} lists no assembly; add a row for each"
@@ -219,12 +238,19 @@ def survey_options(wildcards):
 def train_options(wildcards):
     """Which records to train on, from where, and how long."""
     settings = SETTINGS[wildcards.assembly]
-    if settings.get("init") is None:
+    if all(settings[key] is None for key in STARTS):
         keys = ("states", "order", "start")
         model = f"{options(wildcards, *keys)} --{settings['strands']}"
     else:
-        model = options(wildcards, "init")
-    keys = ("restarts", "seed", "max_iterations", "tolerance", "pseudocount")
+        model = options(wildcards, *STARTS)
+    keys = (
+        "restarts",
+        "seed",
+        "max_iterations",
+        "tolerance",
+        "pseudocount",
+        "soft_mask",
+    )
     return f"{model} {options(wildcards, *keys)} {survey_options(wildcards)}"
 
 
@@ -236,7 +262,15 @@ def batches_options(wildcards):
 
 def decode_options(wildcards):
     """How to call regions; the records come from the batch."""
-    keys = ("exclude", "gap_min", "decoder", "threshold", "min_length", "merge_gap")
+    keys = (
+        "exclude",
+        "gap_min",
+        "soft_mask",
+        "decoder",
+        "threshold",
+        "min_length",
+        "merge_gap",
+    )
     return f"{options(wildcards, *keys)} {circles(wildcards)}".rstrip()
 
 
