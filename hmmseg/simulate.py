@@ -49,12 +49,14 @@ def simulate(model: Model, lengths: Sequence[int], seed: int) -> Iterator[Drawn]
     Drawn
         One for each length.
     """
-    following = np.cumsum(np.vstack([model.transitions, model.start_probabilities]), axis=1)
-    emissions = np.cumsum(model.emissions[:, :-1].reshape(model.states, -1, 4), axis=2)
+    machine = model.machine
+    following = np.cumsum(np.vstack([machine.transitions, machine.start_probabilities]), axis=1)
+    emissions = np.cumsum(machine.emissions[:, :-1].reshape(machine.states, -1, 4), axis=2)
+    owners = machine.owners.astype(np.uint8)
     for number, length in enumerate(lengths):
         random = np.random.Generator(np.random.PCG64(np.random.SeedSequence([seed, number])))
         drawn = Drawn(np.empty(length, np.uint8), np.empty(length, np.uint8))
-        memory = np.array([model.states, 0, 0], dtype=np.int64)
+        memory = np.array([machine.states, 0, 0], dtype=np.int64)
         for begin in range(0, length, _CHUNK):
             piece = slice(begin, min(begin + _CHUNK, length))
             uniforms = random.random((piece.stop - piece.start, 2))
@@ -62,4 +64,4 @@ def simulate(model: Model, lengths: Sequence[int], seed: int) -> Iterator[Drawn]
                 following, emissions, model.order, memory, uniforms,
                 drawn.path[piece], drawn.bases[piece],
             )  # fmt: skip
-        yield drawn
+        yield drawn._replace(path=owners[drawn.path])

@@ -18,9 +18,8 @@ __all__ = ["batches", "decode", "gather", "summary", "verify"]
 @click.option(
     "--decoder",
     type=click.Choice(["path", "posterior"]),
-    default="path",
-    show_default=True,
-    help="Best path, or posterior over a threshold.",
+    default=None,
+    help="Best path, or posterior over a threshold.  [default: path; posterior for stages]",
 )
 @click.option(
     "--threshold",
@@ -50,7 +49,7 @@ __all__ = ["batches", "decode", "gather", "summary", "verify"]
 @options.threads
 @options.force
 def decode(
-    sources: Any, model: str, output: str, decoder: str, threshold: float, min_length: int,
+    sources: Any, model: str, output: str, decoder: str | None, threshold: float, min_length: int,
     merge_gap: int, threads: int, force: bool,
 ) -> None:  # fmt: skip
     """Call regions and write their posterior tracks."""

@@ -67,7 +67,7 @@ def survey(sources: Any, output: str, force: bool) -> None:
     type=click.IntRange(1),
     default=None,
     metavar="R",
-    help="Fits from different starts.  [default: 5; 1 with --init, a preset or specification]",
+    help="Fits from different starts.  [default: 5; 1 with a start or labels]",
 )
 @click.option(
     "--seed",
@@ -99,13 +99,21 @@ def survey(sources: Any, output: str, force: bool) -> None:
     metavar="BASES",
     help="Bases added to each state's word counts, in all.  [default: 0, or as the preset says]",
 )
+@click.option("--labels", metavar="BED", help="Intervals whose state, in column 4, is known.")
+@click.option(
+    "--fix",
+    "fixed",
+    multiple=True,
+    metavar="PARAMETER",
+    help="Keep STATE.emissions, STATE.length, transitions or start; may be given again.",
+)
 @options.train_bases
 @options.sequence_options(soft_mask=True)
 @options.threads
 @options.force
 def train(
     sources: Any, output: str, preset: str | None, spec: str | None, init: str | None,
-    start: str, train_bases: int, threads: int, force: bool, **plan: Any,
+    start: str, labels: str | None, train_bases: int, threads: int, force: bool, **plan: Any,
 ) -> None:  # fmt: skip
     """Fit a model to sequence with Baum-Welch."""
     from hmmseg.jobs import train as job
@@ -113,11 +121,14 @@ def train(
 
     _check_start(preset, spec, init, plan["symmetric"], start)
     origin, proposed = job.origin(preset, spec, init)
+    if labels:
+        proposed["restarts"] = 1
     for key, value in proposed.items():
         plan[key] = value if plan[key] is None else plan[key]
     found = job.train(
         sources, output, Plan(start_kind=start, **plan), origin,
-        threads=threads, force=force, train_bases=train_bases or None,
+        threads=threads, force=force, train_bases=None if labels else train_bases or None,
+        labels=labels,
     )  # fmt: skip
     print_findings(found.findings, found.cautions)
 

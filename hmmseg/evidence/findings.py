@@ -8,8 +8,6 @@ from numpy.typing import NDArray
 from hmmseg.kernels.elementary import LN2, log_array
 from hmmseg.model import Model
 from hmmseg.model.contexts import joint_levels, reverse_complement_words
-from hmmseg.model.parameters import FREE
-from hmmseg.training.starts import long_run_share
 
 __all__ = ["StateFinding", "describe", "expected_lengths", "in_bases", "shares"]
 
@@ -90,13 +88,12 @@ def describe(model: Model) -> list[StateFinding]:
 
 def shares(model: Model) -> NDArray[np.float64]:
     """Return float64[state], the expected share of positions of each state."""
-    return long_run_share(model) if model.start_kind == FREE else model.start_probabilities
+    return model.shares
 
 
 def expected_lengths(model: Model) -> NDArray[np.float64]:
     """Return float64[state], the mean length of a visit in bases; infinity if never left."""
-    leaving = 1 - np.diag(model.transitions)
-    return np.where(leaving > 0, 1 / np.where(leaving > 0, leaving, 1), np.inf)
+    return model.expected_lengths
 
 
 def in_bases(length: float) -> str:

@@ -9,7 +9,7 @@ from hmmseg.errors import SequenceError
 from hmmseg.kernels.elementary import exp, log_array
 from hmmseg.kernels.logspace import first_impossible, log_likelihood, log_pass
 from hmmseg.kernels.scan import log_trace_of_power
-from hmmseg.model import Model
+from hmmseg.model.machine import Machine
 from hmmseg.sequence.contigs import Contig
 
 __all__ = ["ExactPass", "exact_pass", "impossible"]
@@ -40,7 +40,7 @@ class ExactPass(NamedTuple):
 
 
 def exact_pass(
-    model: Model,
+    machine: Machine,
     contig: Contig,
     codes: NDArray[np.unsignedinteger],
     window: tuple[int, int] = (0, 0),
@@ -50,8 +50,8 @@ def exact_pass(
 
     Parameters
     ----------
-    model
-        The model.
+    machine
+        The parameters.
     contig
         Names the record in an error.
     codes
@@ -66,25 +66,25 @@ def exact_pass(
     SequenceError
         The sequence is impossible under the model; names the record and the position.
     """
-    states = model.states
+    states = machine.states
     result = ExactPass(
         0.0,
         np.zeros(states),
         np.zeros((states, states)),
-        np.zeros_like(model.emissions),
+        np.zeros_like(machine.emissions),
         np.zeros((window[1] - window[0], states)),
     )
     head = np.zeros(states)
     if contig.closed:
-        total = _circle(model, codes, window, result, head)
+        total = _circle(machine, codes, window, result, head)
     else:
-        first = log_array(model.start_probabilities * model.emissions[:, codes[0]])
+        first = log_array(machine.start_probabilities * machine.emissions[:, codes[0]])
         total = log_likelihood(
-            model.transitions, model.emissions, codes[1:], first, np.zeros(states)
+            machine.transitions, machine.emissions, codes[1:], first, np.zeros(states)
         )
         if np.isfinite(total):
             log_pass(
-                model.transitions, model.emissions, codes[1:], first, np.zeros(states), 1.0,
+                machine.transitions, machine.emissions, codes[1:], first, np.zeros(states), 1.0,
                 window[0] - 1, window[1] - 1, result.posterior,
                 result.transitions, result.emissions, head,
             )  # fmt: skip
@@ -93,21 +93,22 @@ def exact_pass(
             if window[0] == 0 < window[1]:
                 result.posterior[0] = head
     if not np.isfinite(total):
-        raise impossible(model, contig, codes, reverse)
+        raise impossible(machine, contig, codes, reverse)
     return result._replace(log_likelihood=float(total))
 
 
 def _circle(
-    model: Model,
+    machine: Machine,
     codes: NDArray[np.unsignedinteger],
     window: tuple[int, int],
     result: ExactPass,
     head: NDArray[np.float64],
 ) -> float:
     """Add a pass for each state at the cut; return the circle's log-likelihood in nats."""
-    ends = [np.where(np.arange(model.states) == i, 0.0, -np.inf) for i in range(model.states)]
+    ends = [np.where(np.arange(machine.states) == i, 0.0, -np.inf) for i in range(machine.states)]
     logs = [
-        float(log_likelihood(model.transitions, model.emissions, codes, end, end)) for end in ends
+        float(log_likelihood(machine.transitions, machine.emissions, codes, end, end))
+        for end in ends
     ]
     best = max(logs)
     if best == -np.inf:
@@ -117,31 +118,33 @@ def _circle(
     for weight, end in zip(weights, ends, strict=True):
         if weight > 0:
             log_pass(
-                model.transitions, model.emissions, codes, end, end, weight / total, *window,
+                machine.transitions, machine.emissions, codes, end, end, weight / total, *window,
                 result.posterior, result.transitions, result.emissions, head,
             )  # fmt: skip
-    norm = log_trace_of_power(model.transitions, len(codes))
+    norm = log_trace_of_power(machine.transitions, len(codes))
     return best + float(log_array(np.array([total]))[0]) - float(norm)
 
 
 def impossible(
-    model: Model,
+    machine: Machine,
     contig: Contig,
     codes: NDArray[np.unsignedinteger],
     reverse: bool = False,
 ) -> SequenceError:
     """Return the error for a sequence that the model cannot have made; see :func:`exact_pass`."""
     if contig.closed:
-        starts = [np.where(np.arange(model.states) == i, 0.0, -np.inf) for i in range(model.states)]
-        found = [first_impossible(model.transitions, model.emissions, codes, s) for s in starts]
+        starts = [
+            np.where(np.arange(machine.states) == i, 0.0, -np.inf) for i in range(machine.states)
+        ]
+        found = [first_impossible(machine.transitions, machine.emissions, codes, s) for s in starts]
         position = max(found)
         position = 0 if position == len(codes) else position
     else:
-        first = log_array(model.start_probabilities * model.emissions[:, codes[0]])
+        first = log_array(machine.start_probabilities * machine.emissions[:, codes[0]])
         dead = first.max() == -np.inf
         rest = codes[1:]
         position = (
-            0 if dead else 1 + first_impossible(model.transitions, model.emissions, rest, first)
+            0 if dead else 1 + first_impossible(machine.transitions, machine.emissions, rest, first)
         )
     at = len(codes) - 1 - position if reverse else position
     at = (contig.start + at) % contig.record_length

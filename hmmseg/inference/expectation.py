@@ -1,6 +1,7 @@
 """The expectation step: likelihood and expected counts of a corpus."""
 
 from dataclasses import dataclass
+from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -12,6 +13,7 @@ from hmmseg.inference.tables import Tables, preferred_word, tables_for
 from hmmseg.kernels.blocks import block_kernels
 from hmmseg.kernels.matrices import unfold_counts
 from hmmseg.model import Model
+from hmmseg.model.machine import Machine
 
 __all__ = ["Counts", "expect", "log_likelihoods"]
 
@@ -32,7 +34,9 @@ class Counts:
     start : float64[state]
         Expected first states of open contigs.
     transitions : float64[state, state]
-        Expected transitions.
+        Expected transitions; on the diagonal those within a stage.
+    advances : float64[state]
+        Expected transitions from one stage of a state to the next.
     emissions : float64[state, code]
         Expected emissions.
     """
@@ -40,6 +44,7 @@ class Counts:
     logs: NDArray[np.float64]
     start: NDArray[np.float64]
     transitions: NDArray[np.float64]
+    advances: NDArray[np.float64]
     emissions: NDArray[np.float64]
 
     @property
@@ -48,10 +53,12 @@ class Counts:
         return float(self.logs.sum())
 
 
-def _prepare(model: Model, corpus: Corpus) -> Tables:
+def _prepare(model: Model, corpus: Corpus) -> tuple[Machine, Tables]:
     if corpus.order != model.order or corpus.both_strands != model.both_strands:
         raise ValueError("the corpus was prepared for a model of another order or symmetry")
-    return tables_for(model, preferred_word(model.order, model.states, corpus.bases))
+    machine = model.machine if corpus.labels is None else model.machine.clamped()
+    word = preferred_word(model.order, machine.states, corpus.bases) if not corpus.labels else 1
+    return machine, tables_for(machine, word)
 
 
 def log_likelihoods(model: Model, corpus: Corpus, threads: int = 1) -> NDArray[np.float64]:
@@ -76,13 +83,13 @@ def log_likelihoods(model: Model, corpus: Corpus, threads: int = 1) -> NDArray[n
     SequenceError
         A contig is impossible under the model.
     """
-    tables = _prepare(model, corpus)
+    machine, tables = _prepare(model, corpus)
     results = []
     for stream, reverse in zip(corpus.streams(tables.word), (False, True), strict=False):
-        ends = find_ends(model, tables, stream, threads)
+        ends = find_ends(machine, tables, stream, threads)
         for contig in np.flatnonzero(ends.lost):
             again = exact_pass(
-                model, corpus.contigs[contig], stream.codes(int(contig)), reverse=reverse
+                machine, corpus.contigs[contig], stream.codes(int(contig)), reverse=reverse
             )
             ends.logs[contig] = again.log_likelihood
         results.append(ends.logs)
@@ -111,43 +118,74 @@ def expect(model: Model, corpus: Corpus, threads: int = 1) -> Counts:
     SequenceError
         A contig is impossible under the model.
     """
-    tables = _prepare(model, corpus)
+    machine, tables = _prepare(model, corpus)
     counts = [
-        _expect_strand(model, tables, corpus, stream, reverse, threads)
+        _expect_strand(machine, tables, corpus, stream, reverse, threads)
         for stream, reverse in zip(corpus.streams(tables.word), (False, True), strict=False)
     ]
     if len(counts) == 1:
-        return counts[0]
+        return _folded(model, machine, counts[0])
     one, other = counts
+    mean = _MachineCounts(*((a + b) / 2 for a, b in zip(one, other, strict=True)))
+    return _folded(model, machine, mean)
+
+
+class _MachineCounts(NamedTuple):
+    """Expected counts of a machine: of its stages, and of labelled codes."""
+
+    logs: NDArray[np.float64]
+    start: NDArray[np.float64]
+    transitions: NDArray[np.float64]
+    emissions: NDArray[np.float64]
+
+
+def _folded(model: Model, machine: Machine, counts: _MachineCounts) -> Counts:
+    """Return the counts of states, summed over their stages and over labels."""
+    codes = model.emissions.shape[1]
+    by_label = counts.emissions.reshape(machine.states, -1, codes)
+    emissions = machine.pooled(by_label.sum(axis=1).T).T
+    transitions, advances = counts.transitions, np.zeros(model.states)
+    if machine.states > model.states:
+        within = np.equal.outer(machine.owners, machine.owners) & ~np.eye(
+            len(machine.owners), dtype=bool
+        )
+        steps = np.where(within, transitions, 0.0)
+        advances = machine.pooled(steps.sum(axis=1))
+        transitions = machine.pooled(machine.pooled(transitions - steps).T).T
     return Counts(
-        (one.logs + other.logs) / 2,
-        (one.start + other.start) / 2,
-        (one.transitions + other.transitions) / 2,
-        (one.emissions + other.emissions) / 2,
+        counts.logs,
+        machine.pooled(counts.start),
+        np.ascontiguousarray(transitions),
+        advances,
+        np.ascontiguousarray(emissions),
     )
 
 
 def _expect_strand(
-    model: Model, tables: Tables, corpus: Corpus, stream: Stream, reverse: bool, threads: int
-) -> Counts:
-    ends = find_ends(model, tables, stream, threads)
+    machine: Machine,
+    tables: Tables,
+    corpus: Corpus,
+    stream: Stream,
+    reverse: bool,
+    threads: int,
+) -> _MachineCounts:
+    ends = find_ends(machine, tables, stream, threads)
     weights = _pair_weights(tables, stream, ends, threads)
-    counts = Counts(
+    counts = _MachineCounts(
         ends.logs,
-        np.zeros(model.states),
-        np.zeros_like(model.transitions),
-        np.zeros_like(model.emissions),
+        np.zeros(machine.states),
+        np.zeros_like(machine.transitions),
+        np.zeros_like(machine.emissions),
     )
     unfold_counts(
-        weights, tables.matrices, model.order, tables.word, counts.transitions, counts.emissions
+        weights, tables.matrices, machine.order, tables.word, counts.transitions, counts.emissions
     )
     for contig in np.flatnonzero(~ends.lost & ~stream.closed):
         counts.start[:] += ends.heads[contig]
         counts.emissions[:, stream.heads[contig]] += ends.heads[contig]
     for contig in np.flatnonzero(ends.lost):
-        again = exact_pass(
-            model, corpus.contigs[contig], stream.codes(int(contig)), reverse=reverse
-        )
+        codes = stream.codes(int(contig))
+        again = exact_pass(machine, corpus.contigs[contig], codes, reverse=reverse)
         counts.logs[contig] = again.log_likelihood
         counts.start[:] += again.start
         counts.transitions[:] += again.transitions

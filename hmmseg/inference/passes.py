@@ -15,7 +15,7 @@ from hmmseg.inference.tables import Tables
 from hmmseg.kernels.blocks import block_kernels
 from hmmseg.kernels.chains import chain_kernel, chains_pay
 from hmmseg.kernels.scan import log_scaled, log_trace_of_power, scan_closed, scan_contigs
-from hmmseg.model import Model
+from hmmseg.model.machine import Machine
 
 __all__ = ["BlockEnds", "Jobs", "find_ends"]
 
@@ -77,13 +77,13 @@ class BlockEnds:
     lost: NDArray[np.bool_]
 
 
-def find_ends(model: Model, tables: Tables, stream: Stream, threads: int) -> BlockEnds:
+def find_ends(machine: Machine, tables: Tables, stream: Stream, threads: int) -> BlockEnds:
     """Compute every block's transfer matrix, then the vectors at its ends.
 
     Parameters
     ----------
     model
-        The model.
+        The machine.
     tables
         Its matrices, of the stream's word length.
     stream
@@ -91,13 +91,13 @@ def find_ends(model: Model, tables: Tables, stream: Stream, threads: int) -> Blo
     threads
         Threads to use.
     """
-    states, blocks, contigs = model.states, len(stream.bounds) - 1, len(stream.closed)
+    states, blocks, contigs = machine.states, len(stream.bounds) - 1, len(stream.closed)
     if tables.interval == 0:
         return _everything_lost(states, contigs)
     products = np.empty((blocks, states, states))
     times = np.zeros((blocks, states), np.int64)
     first_vectors = np.ascontiguousarray(
-        model.start_probabilities * model.emissions[:, stream.heads].T
+        machine.start_probabilities * machine.emissions[:, stream.heads].T
     )
     carried = chains_pay(states)
     mine = _in_circles(stream) if carried else np.arange(blocks)
@@ -112,7 +112,7 @@ def find_ends(model: Model, tables: Tables, stream: Stream, threads: int) -> Blo
         _run_through(tables, stream, threads, first_vectors, scan)
     else:
         scan_contigs(products, times, stream.contig_blocks, stream.closed, first_vectors, *scan)
-    circles = _scan_circles(model, stream, products, times, scan.logs, scan.lost)
+    circles = _scan_circles(machine, stream, products, times, scan.logs, scan.lost)
     jobs = _merge_jobs(stream, scan.starts, scan.ends, circles)
     jobs = jobs.without(np.repeat(scan.lost, np.diff(stream.contig_blocks)))
     return BlockEnds(jobs, scan.heads, scan.logs, scan.lost)
@@ -192,7 +192,7 @@ def _any_of_blocks(flags: NDArray[np.bool_], contig_blocks: NDArray[np.int64]) -
 
 
 def _scan_circles(
-    model: Model,
+    machine: Machine,
     stream: Stream,
     products: NDArray[np.float64],
     times: NDArray[np.int64],
@@ -200,7 +200,7 @@ def _scan_circles(
     lost: NDArray[np.bool_],
 ) -> list[Jobs]:
     """Return the jobs of each circle; fill in its likelihood and whether it was lost."""
-    states = model.states
+    states = machine.states
     jobs = []
     for contig in np.flatnonzero(stream.closed):
         first, last = stream.contig_blocks[contig : contig + 2]
@@ -210,7 +210,7 @@ def _scan_circles(
             products[first:last], times[first:last], 0, last - first, ends, shares
         )
         length = len(stream.strands[contig])
-        logs[contig] = log_scaled(value, count) - log_trace_of_power(model.transitions, length)
+        logs[contig] = log_scaled(value, count) - log_trace_of_power(machine.transitions, length)
         lost[contig] |= vanished
         jobs.append(
             Jobs(

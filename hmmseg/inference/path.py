@@ -5,8 +5,9 @@ from typing import NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
+from hmmseg.errors import ModelError
 from hmmseg.inference.exact import impossible
-from hmmseg.inference.streams import BLOCK, build_stream, in_threads, word_tokens
+from hmmseg.inference.streams import BLOCK, build_stream, in_threads
 from hmmseg.inference.tables import preferred_word
 from hmmseg.kernels.elementary import log_array
 from hmmseg.kernels.paths import (
@@ -20,6 +21,7 @@ from hmmseg.kernels.scan import log_trace_of_power
 from hmmseg.kernels.tokens import base_codes, code_total
 from hmmseg.model import Model
 from hmmseg.model.contexts import code_dtype
+from hmmseg.model.machine import Machine
 from hmmseg.sequence.contigs import Contig
 
 __all__ = ["Runs", "best_path", "best_runs", "path_log_probability", "runs_of"]
@@ -92,7 +94,9 @@ def best_runs(model: Model, contig: Contig, threads: int = 1, block: int = BLOCK
     """
     strands = (False, True) if model.both_strands else (False,)
     found = in_threads(
-        lambda reverse: _Decoder(model, contig, reverse, threads, block).best(), strands, threads
+        lambda reverse: _Decoder(model.machine, contig, reverse, threads, block).best(),
+        strands,
+        threads,
     )
     score, runs = found[0]
     if model.both_strands:
@@ -102,8 +106,15 @@ def best_runs(model: Model, contig: Contig, threads: int = 1, block: int = BLOCK
     if score is None:
         codes = np.empty(len(contig), code_dtype(model.order))
         base_codes(contig.bases, model.order, contig.closed, 0, len(contig), codes)
-        raise impossible(model, contig, codes)
-    return runs
+        raise impossible(model.machine, contig, codes)
+    return _of_states(runs, model.machine) if max(model.stages) > 1 else runs
+
+
+def _of_states(runs: Runs, machine: Machine) -> Runs:
+    """Return runs of states from those of their stages."""
+    states = machine.owners[runs.states].astype(np.uint8)
+    kept = np.concatenate(([True], states[1:] != states[:-1]))
+    return Runs(np.append(runs.edges[:-1][kept], runs.edges[-1]), states[kept])
 
 
 def path_log_probability(model: Model, contig: Contig, path: NDArray[np.integer]) -> float:
@@ -118,11 +129,18 @@ def path_log_probability(model: Model, contig: Contig, path: NDArray[np.integer]
     path
         int8[position]: states.
 
+    Raises
+    ------
+    ModelError
+        A state has several stages, between which a path of states does not tell.
+
     Notes
     -----
     A circle has no start; its paths' probabilities are divided by trace(T**n), so that they sum
     to 1 over all sequences and paths.
     """
+    if max(model.stages) > 1:
+        raise ModelError("the probability of one path is not defined for states with stages")
     codes = np.empty(len(contig), code_dtype(model.order))
     base_codes(contig.bases, model.order, contig.closed, 0, len(contig), codes)
     emitted = log_array(model.emissions[path, codes])
@@ -144,26 +162,27 @@ class _Decoder:
     """
 
     def __init__(
-        self, model: Model, contig: Contig, reverse: bool, threads: int, block: int
+        self, machine: Machine, contig: Contig, reverse: bool, threads: int, block: int
     ) -> None:
-        self.model, self.closed, self.threads = model, contig.closed, threads
-        states, order = model.states, model.order
+        self.machine, self.closed, self.threads = machine, contig.closed, threads
+        states, order = machine.states, machine.order
         word = preferred_word(order, states, len(contig))
         self.stream = build_stream([contig], order, word, reverse, threads, block)
-        log_t = fixed_point_logs(model.transitions.ravel()).reshape(states, states)
-        log_e = fixed_point_logs(model.emissions.ravel()).reshape(states, -1)
+        log_t = fixed_point_logs(machine.transitions.ravel()).reshape(states, states)
+        log_e = fixed_point_logs(machine.emissions.ravel()).reshape(states, -1)
         self.first = np.maximum(
-            fixed_point_logs(model.start_probabilities) + log_e[:, self.stream.heads[0]],
+            fixed_point_logs(machine.start_probabilities) + log_e[:, self.stream.heads[0]],
             2 * IMPOSSIBLE,
         )
-        self.ways = np.empty((word_tokens(order, word), states, states), np.int64)
+        self.codes = int(code_total(order))
+        words = 4 ** (order + word) if word > 1 else 0
+        self.ways = np.empty((self.codes + words, states, states), np.int64)
         self.keys = np.empty(self.ways.shape, np.uint32)
         fill_token_ways(log_t, np.ascontiguousarray(log_e.T), order, word, self.ways, self.keys)
-        self.codes = int(code_total(order))
 
     def best(self) -> tuple[int | None, Runs]:
         """Return the best path's score in 2**-32 nats, None if there is no path, and its runs."""
-        states = self.model.states
+        states = self.machine.states
         if not self.closed:
             score, runs, _ = self._decode(self.first, None)
             return score, runs
@@ -183,8 +202,8 @@ class _Decoder:
         """Return score, runs, and state before the first block, given the state at the end."""
         stream = self.stream
         scores = entered.copy()
-        marks = np.empty((len(stream.bounds) - 1, self.model.states), np.int64)
-        advance = path_kernels(self.model.states).score
+        marks = np.empty((len(stream.bounds) - 1, self.machine.states), np.int64)
+        advance = path_kernels(self.machine.states).score
         taken = int(advance(stream.tokens, stream.bounds, self.ways, scores, marks))
         state = int(np.argmax(scores)) if last is None else last
         score = taken + int(scores[state]) if scores[state] > IMPOSSIBLE else None
@@ -223,8 +242,8 @@ class _Decoder:
 
     def _states_before(self, block: int, mark: NDArray[np.int64]) -> NDArray[np.uint8]:
         begin, stop = self.stream.bounds[block : block + 2]
-        back = np.empty((stop - begin, self.model.states), np.uint8)
-        path_kernels(self.model.states).trace(
+        back = np.empty((stop - begin, self.machine.states), np.uint8)
+        path_kernels(self.machine.states).trace(
             self.stream.tokens, begin, stop, self.ways, self.keys, mark, back
         )
         return back

@@ -11,6 +11,7 @@ from hmmseg.inference.streams import BLOCK, Stream, build_stream, in_threads
 from hmmseg.inference.tables import Tables, preferred_word, tables_for
 from hmmseg.kernels.posteriors import posterior_kernel
 from hmmseg.model import Model
+from hmmseg.model.machine import Machine
 from hmmseg.sequence.contigs import Contig
 
 __all__ = ["WINDOW_BLOCKS", "posterior", "posterior_windows"]
@@ -73,33 +74,33 @@ def posterior_windows(
         The contig is impossible under the model.
     """
     strands = [
-        _Strand(model, contig, reverse, threads, block)
+        _Strand(model.machine, contig, reverse, threads, block)
         for reverse in ((False, True) if model.both_strands else (False,))
     ]
     length, size = len(contig), WINDOW_BLOCKS * block
     for begin in range(0, length, size):
-        window = np.zeros((min(size, length - begin), model.states))
+        window = np.zeros((min(size, length - begin), model.machine.states))
         # Where a strand loses a number it changes to logarithms, and the window is done again.
         share = 1 / len(strands)
         while sum(strand.add_to(window, begin, share) for strand in strands) < len(strands):
             window[:] = 0.0
-        yield begin, window
+        yield begin, model.machine.pooled(window)
 
 
 class _Strand:
     """One strand of one contig, ready to give the posterior between any two block edges."""
 
     def __init__(
-        self, model: Model, contig: Contig, reverse: bool, threads: int, block: int
+        self, machine: Machine, contig: Contig, reverse: bool, threads: int, block: int
     ) -> None:
-        word = preferred_word(model.order, model.states, len(contig))
-        tables = tables_for(model, word)
-        self.model, self.contig, self.reverse, self.threads = model, contig, reverse, threads
+        word = preferred_word(machine.order, machine.states, len(contig))
+        tables = tables_for(machine, word)
+        self.machine, self.contig, self.reverse, self.threads = machine, contig, reverse, threads
         self.stream: Stream = build_stream(
-            [contig], model.order, tables.word, reverse, threads, block
+            [contig], machine.order, tables.word, reverse, threads, block
         )
-        self.ends: BlockEnds = find_ends(model, tables, self.stream, threads)
-        self.single: Tables = tables_for(model, 1)
+        self.ends: BlockEnds = find_ends(machine, tables, self.stream, threads)
+        self.single: Tables = tables_for(machine, 1)
 
     def add_to(self, window: NDArray[np.float64], first: int, share: float) -> bool:
         """Add this strand's share of the posterior from a forward position on.
@@ -117,7 +118,7 @@ class _Strand:
         origin, step = (length - 1 - first, -1) if self.reverse else (-first, 1)
         if self.ends.lost[0]:
             exact = exact_pass(
-                self.model, self.contig, self.stream.codes(0), (begin, stop), self.reverse
+                self.machine, self.contig, self.stream.codes(0), (begin, stop), self.reverse
             )
             window += share * exact.posterior[::step]
             return True
@@ -138,14 +139,14 @@ class _Strand:
         """Add what blocks between two edges say; return whether no number was lost."""
         edges, jobs = self.stream.edges[0], self.ends.jobs
         first, last = np.searchsorted(edges, (begin, stop))
-        add_posteriors = posterior_kernel(self.model.states)
+        add_posteriors = posterior_kernel(self.machine.states)
 
         def work(block: int) -> bool:
             mine = jobs.of_blocks(block, min(block + _BLOCKS_AT_ONCE, int(last)))
             piece = slice(mine.start, mine.stop)
             return bool(
                 add_posteriors(
-                    self.stream.strands[0], self.model.order, self.contig.closed, edges,
+                    self.stream.strands[0], self.machine.order, self.contig.closed, edges,
                     jobs.blocks[piece], jobs.starts[piece], jobs.ends[piece],
                     share * jobs.shares[piece], self.single.matrices, self.single.mirrored,
                     self.single.interval, window, origin, step,

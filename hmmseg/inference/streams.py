@@ -6,7 +6,7 @@ same order and results have the same bits on any number of threads.
 
 from collections.abc import Callable, Iterable, Sequence
 from concurrent.futures import ThreadPoolExecutor
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from itertools import pairwise
 from typing import TypeVar
 
@@ -18,7 +18,7 @@ from hmmseg.model.contexts import code_dtype
 from hmmseg.sequence.alphabet import MISSING, reverse_complement
 from hmmseg.sequence.contigs import Contig
 
-__all__ = ["BLOCK", "Corpus", "Stream", "block_edges", "build_stream", "in_threads", "word_tokens"]
+__all__ = ["BLOCK", "Corpus", "Stream", "block_edges", "build_stream", "in_threads"]
 
 BLOCK = 8192
 """Bases in a block."""
@@ -36,11 +36,6 @@ def in_threads(
         return [function(item) for item in items]
     with ThreadPoolExecutor(min(threads, len(items))) as pool:
         return list(pool.map(function, items))
-
-
-def word_tokens(order: int, word: int) -> int:
-    """Return the number of tokens: codes, and words with their contexts."""
-    return int(code_total(order)) + (4 ** (order + word) if word > 1 else 0)
 
 
 def block_edges(
@@ -79,6 +74,9 @@ class Stream:
         Block offsets of the contigs.
     heads : int64[contig]
         Code of the first base of an open contig.
+    labels : list of uint8[position], or None
+        Labels of each contig as this strand reads them: 0 for none, ``s + 1`` for state ``s``.
+        A labelled base's code is that of the base in the label's own copy of the codes.
     """
 
     strands: list[NDArray[np.uint8]]
@@ -90,13 +88,30 @@ class Stream:
     edges: list[NDArray[np.int64]]
     contig_blocks: NDArray[np.int64]
     heads: NDArray[np.int64]
+    labels: list[NDArray[np.uint8]] | None = None
 
     def codes(self, contig: int) -> NDArray[np.unsignedinteger]:
         """Return the codes of all bases of one contig."""
         bases = self.strands[contig]
         codes = np.empty(bases.size, code_dtype(self.order))
         base_codes(bases, self.order, bool(self.closed[contig]), 0, bases.size, codes)
-        return codes
+        if self.labels is None:
+            return codes
+        return codes + self.labels[contig].astype(np.uint32) * np.uint32(code_total(self.order))
+
+    def labelled(self, labels: list[NDArray[np.uint8]]) -> "Stream":
+        """Return the stream with labels, in the direction in which it reads; words must be 1."""
+        if self.word != 1:
+            raise ValueError("labels need tokens of one base")
+        codes = code_total(self.order)
+        behind = [own[int(cuts[0]) :] for own, cuts in zip(labels, self.edges, strict=True)]
+        firsts = np.array([own[0] for own in labels], dtype=np.int64)
+        return replace(
+            self,
+            tokens=self.tokens + np.concatenate(behind).astype(np.uint32) * np.uint32(codes),
+            heads=self.heads + firsts * codes,
+            labels=labels,
+        )
 
 
 def build_stream(
@@ -138,7 +153,8 @@ def build_stream(
     pieces = [slice(at, at + 64) for at in range(0, len(blocks), 64)]
     counts = [n for some in in_threads(count, pieces, threads) for n in some]
     bounds = np.concatenate(([0], np.cumsum(np.array(counts, dtype=np.int64))))
-    small = word_tokens(order, word) <= np.iinfo(np.uint16).max + 1
+    kinds = code_total(order) + (4 ** (order + word) if word > 1 else 0)
+    small = kinds <= np.iinfo(np.uint16).max + 1
     tokens = np.empty(bounds[-1], np.uint16 if small else np.uint32)
 
     def fill(piece: slice) -> None:
@@ -176,6 +192,8 @@ class Corpus:
         Threads to use when tokens are made.
     block
         Bases in a block; another than the default only in tests.
+    labels
+        uint8[position] of each contig: 0, or ``s + 1`` where the state must be ``s``.
     """
 
     def __init__(
@@ -185,8 +203,10 @@ class Corpus:
         both_strands: bool,
         threads: int = 1,
         block: int = BLOCK,
+        labels: Sequence[NDArray[np.uint8]] | None = None,
     ) -> None:
         self.contigs = list(contigs)
+        self.labels = None if labels is None else list(labels)
         self.order = order
         self.both_strands = both_strands
         self.block = block
@@ -210,8 +230,14 @@ class Corpus:
         if word != self._word:
             self._streams = []
             self._streams = [
-                build_stream(self.contigs, self.order, word, reverse, self._threads, self.block)
+                self._stream(word, reverse)
                 for reverse in ((False, True) if self.both_strands else (False,))
             ]
             self._word = word
         return self._streams
+
+    def _stream(self, word: int, reverse: bool) -> Stream:
+        stream = build_stream(self.contigs, self.order, word, reverse, self._threads, self.block)
+        if self.labels is None:
+            return stream
+        return stream.labelled([own[::-1] if reverse else own for own in self.labels])

@@ -1,14 +1,13 @@
-"""A model as the tables that the kernels step by."""
+"""A machine as the tables that the kernels step by."""
 
 from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
 
-from hmmseg.inference.streams import word_tokens
 from hmmseg.kernels.limits import DECAY_BITS
 from hmmseg.kernels.matrices import fill_token_matrices, smallest_entry
-from hmmseg.model import Model
+from hmmseg.model.machine import Machine
 
 __all__ = ["Tables", "preferred_word", "tables_for"]
 
@@ -22,7 +21,7 @@ _BASES_A_TOKEN = 64
 
 
 class Tables(NamedTuple):
-    """Token matrices of a model.
+    """Token matrices of a machine.
 
     Attributes
     ----------
@@ -51,19 +50,20 @@ def preferred_word(order: int, states: int, bases: int) -> int:
     return word
 
 
-def tables_for(model: Model, word: int) -> Tables:
-    """Return the tables of a model; words become single bases where a product could vanish.
+def tables_for(machine: Machine, word: int) -> Tables:
+    """Return the tables of a machine; words become single bases where a product could vanish.
 
     Parameters
     ----------
-    model
-        The model.
+    machine
+        The machine.
     word
         Bases in a word that would be best.
     """
     while True:
-        matrices = np.empty((word_tokens(model.order, word), model.states, model.states))
-        fill_token_matrices(model.transitions, model.emissions, model.order, word, matrices)
+        tokens = machine.emissions.shape[1] + (4 ** (machine.order + word) if word > 1 else 0)
+        matrices = np.empty((tokens, machine.states, machine.states))
+        fill_token_matrices(machine.transitions, machine.emissions, machine.order, word, matrices)
         bits = -float(np.log2(smallest_entry(matrices)))
         interval = DECAY_BITS if bits <= 1 else int(DECAY_BITS / bits)
         if interval > 0 or word == 1:

@@ -16,7 +16,7 @@ from hmmseg.model import Model, load_model
 from hmmseg.outputs import PROVENANCE, check_target, whole_folder, write_json
 from hmmseg.progress import Progress, warn
 from hmmseg.provenance import is_current, write_provenance
-from hmmseg.regions.calling import Caller, Calls
+from hmmseg.regions.calling import PATH, POSTERIOR, Caller, Calls
 from hmmseg.regions.intervals import Filters
 from hmmseg.regions.masking import SOFT_MASKED, soft_masked_fraction
 from hmmseg.regions.table import number_regions, regions_of_record
@@ -90,7 +90,7 @@ def decode(  # noqa: PLR0913 - as many as the command has
     model_path: str,
     output: str,
     *,
-    decoder: str,
+    decoder: str | None,
     threshold: float,
     filters: Filters,
     threads: int,
@@ -108,7 +108,8 @@ def decode(  # noqa: PLR0913 - as many as the command has
     output
         The folder to write.
     decoder, threshold, filters
-        As of :class:`~hmmseg.regions.calling.Caller`.
+        As of :class:`~hmmseg.regions.calling.Caller`. Without a decoder, models with stages are
+        decoded by posterior and all others by path.
     threads
         Threads to use; the result does not depend on it.
     force
@@ -124,6 +125,10 @@ def decode(  # noqa: PLR0913 - as many as the command has
     if not reuse:
         check_target(output, force)
     model = load_model(model_path)
+    staged = max(model.stages) > 1
+    decoder = decoder or (POSTERIOR if staged else PATH)
+    if staged and decoder == PATH:
+        warn("a best path cannot see how long states with stages last; better decode by posterior")
     caller = Caller(model, decoder, threshold, filters, threads)
     if not caller.states:
         raise ModelError(f"{model_path}: no state is reported; set 'reported' of one to true")
@@ -132,7 +137,7 @@ def decode(  # noqa: PLR0913 - as many as the command has
         **sources.parameters(),
         "model": Path(model_path),
         "decoder": decoder,
-        "threshold": threshold if decoder == "posterior" else None,
+        "threshold": threshold if decoder == POSTERIOR else None,
         **filters._asdict(),
     }
     inputs = [*sources.files(), model_path]

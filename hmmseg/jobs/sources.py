@@ -94,6 +94,11 @@ class Sources:
     def _selection(self) -> Selection:
         return Selection.from_options(self.records, self.min_record, self.exclude, self.circular)
 
+    @property
+    def selects(self) -> bool:
+        """Whether some of the records may be left out."""
+        return self.records is not None or self.min_record > 0 or self.exclude is not None
+
     def parameters(self) -> dict[str, Any]:
         """Return what is to stand in the provenance."""
         return {

@@ -1,11 +1,16 @@
 """The command ``train``: fit a model to sequence."""
 
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from math import isfinite
 from pathlib import Path
 from typing import Any
 
+import numpy as np
+from numpy.typing import NDArray
+
 from hmmseg import __version__
+from hmmseg.errors import LabelError
 from hmmseg.evidence.agreement import difference
 from hmmseg.evidence.findings import describe
 from hmmseg.inference.streams import Corpus
@@ -18,9 +23,11 @@ from hmmseg.model.specification import Specification, load_specification
 from hmmseg.outputs import check_target, sha256_of, whole_file, write_json
 from hmmseg.progress import Progress, warn
 from hmmseg.provenance import is_current, write_provenance
+from hmmseg.sequence.contigs import Contig
 from hmmseg.training.baum_welch import Fit
+from hmmseg.training.labels import label_names, labels_of_contigs, read_labels
 from hmmseg.training.restarts import Plan, Restarts, fit_restarts
-from hmmseg.training.starts import word_counts
+from hmmseg.training.starts import labelled_start, word_counts
 
 __all__ = ["Origin", "origin", "train"]
 
@@ -92,6 +99,7 @@ def train(
     force: bool,
     train_bases: int | None = None,
     reuse: bool = False,
+    labels: str | None = None,
 ) -> Explained:
     """Fit a model and write its document.
 
@@ -114,6 +122,9 @@ def train(
         Train on a seeded sample of about so many bases; None for everything.
     reuse
         Return an earlier result if it is what would be made again.
+    labels
+        A BED file of intervals whose state, in column 4, is known. Without another start, its
+        names are those of the states.
     """
     if not reuse:
         check_target(output, force)
@@ -122,7 +133,8 @@ def train(
     if start.wanted is not None:
         sources = sources.with_soft_mask(start.wanted.soft_mask)
     parameters = _parameters(sources, plan, start, train_bases)
-    inputs = [*sources.files(), *start.files()]
+    parameters["labels"] = Path(labels) if labels else None
+    inputs = [*sources.files(), *start.files(), *([labels] if labels else [])]
     if reuse and is_current(output, "train", parameters, plan.seed, inputs):
         return explain(output)
     check_target(output, force)
@@ -130,9 +142,10 @@ def train(
     if start.wanted is not None:
         counts = word_counts(contigs, start.wanted.order)
         plan = replace(plan, init=anchored(start.wanted, counts))
+    plan, known = _with_labels(plan, labels, sources, contigs)
     order = plan.init.order if plan.init else plan.order
     symmetric = plan.init.symmetric if plan.init else plan.symmetric
-    corpus = Corpus(contigs, order, symmetric and order > 0, threads)
+    corpus = Corpus(contigs, order, symmetric and order > 0, threads, labels=known)
     with Progress(plan.restarts * (plan.max_iterations + 1), "training", "iterations") as progress:
 
         def watch(number: int, iteration: int, bits: float) -> None:
@@ -143,7 +156,7 @@ def train(
     _tell(plan, found)
     document = model_to_dict(found.model)
     document["training"] = {
-        **_history(sources, plan, corpus, found, best),
+        **_history(inputs, plan, corpus, found, best),
         **start.parameters(),
         "soft_mask": sources.soft_mask or "use",
         "sampled": sampled,
@@ -152,6 +165,31 @@ def train(
         write_json(temporary, document)
     write_provenance(output, "train", parameters, plan.seed, inputs, [output])
     return explain(output)
+
+
+def _with_labels(
+    plan: Plan, labels: str | None, sources: Sources, contigs: list[Contig]
+) -> tuple[Plan, list[NDArray[np.uint8]] | None]:
+    """Return the plan, started from labels if it has no start, and the labels of positions."""
+    if labels is None:
+        return plan, None
+    lengths = {contig.record: contig.record_length for contig in contigs}
+    lines = read_labels(labels, lengths, others_too=sources.selects)
+    if plan.init is not None:
+        return plan, labels_of_contigs(lines, contigs, plan.init.names)
+    names = label_names(lines)
+    if len(names) > plan.states:
+        raise LabelError(
+            f"{labels}: names {len(names)} states ({', '.join(names)}), but --states is "
+            f"{plan.states}"
+        )
+    free = plan.states - len(names)
+    names += [f"unlabelled-{i + 1}" if free > 1 else "unlabelled" for i in range(free)]
+    found = labels_of_contigs(lines, contigs, names)
+    start = labelled_start(
+        contigs, found, names, plan.order, symmetric=plan.symmetric, start_kind=plan.start_kind
+    )
+    return replace(plan, init=start), found
 
 
 def _tell(plan: Plan, found: Restarts) -> None:
@@ -194,19 +232,20 @@ def _parameters(
         "max_iterations": plan.max_iterations,
         "tolerance": plan.tolerance,
         "pseudocount": plan.pseudocount,
+        "fixed": list(plan.fixed),
         "train_bases": train_bases,
     }
 
 
 def _history(
-    sources: Sources, plan: Plan, corpus: Corpus, found: Restarts, best: Fit
+    inputs: Sequence[str], plan: Plan, corpus: Corpus, found: Restarts, best: Fit
 ) -> dict[str, Any]:
     """Return what a model says of its training."""
     return {
         "software": f"hmmseg {__version__}",
         "inputs": [
             {"name": Path(path).name, "sha256": None if path == "-" else sha256_of(path)}
-            for path in sources.files()
+            for path in inputs
         ],
         "contigs": len(corpus.contigs),
         "bases": corpus.bases,

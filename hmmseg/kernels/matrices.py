@@ -8,7 +8,7 @@ its last base | state i at the base before it, context).
 import numpy as np
 
 from hmmseg.kernels.compiling import kernel
-from hmmseg.kernels.tokens import code_total, words_of
+from hmmseg.kernels.tokens import words_of
 
 __all__ = ["code_in_word", "fill_token_matrices", "smallest_entry", "unfold_counts"]
 
@@ -21,13 +21,13 @@ def fill_token_matrices(transitions, emissions, order, word, matrices):
     ----------
     transitions : float64[state, state]
     emissions : float64[state, code]
+        There may be several copies of the codes, as long as there are no words.
     order, word : int
         Context length, and bases in a word (1: no word tokens).
     matrices : float64[token, state, state]
         Filled.
     """
-    states = transitions.shape[0]
-    codes = code_total(order)
+    states, codes = emissions.shape
     for code in range(codes):
         for i in range(states):
             for j in range(states):
@@ -87,8 +87,7 @@ def unfold_counts(weights, matrices, order, word, transition_counts, emission_co
     emission_counts : float64[state, code]
         Added to.
     """
-    states = matrices.shape[1]
-    codes = code_total(order)
+    states, codes = emission_counts.shape
     full = codes - 1 - words_of(order + 1)
     for code in range(codes):
         _add_step(weights[code], matrices[code], code, transition_counts, emission_counts)

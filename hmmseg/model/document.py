@@ -14,7 +14,9 @@ An example of order 0, complete::
 
 ``joint`` lists the probabilities of all words of ``order + 1`` bases in alphabetical order.
 Instead, ``conditional`` may give one row of four probabilities for each context, alphabetical
-too; the joint table is then that of the stationary chain. ``start`` may be a list.
+too; the joint table is then that of the stationary chain. ``start`` may be a list. A state may
+have ``stages`` in series, which make its length less variable; the diagonal of the transitions
+is then the chance to stay in a stage.
 """
 
 import json
@@ -44,7 +46,7 @@ VERSION = 1
 
 _KEYS = {"format", "version", "order", "symmetric", "start", "states", "transitions", "training"}
 _OPTIONAL = {"training"}
-_STATE_KEYS = {"name", "reported", "joint", "conditional"}
+_STATE_KEYS = {"name", "reported", "stages", "joint", "conditional"}
 _NAME_LIMIT = 64
 _CONDITIONAL_MAX_ORDER = 5
 """Finding the stationary contexts of a larger table would take minutes."""
@@ -110,14 +112,15 @@ def model_from_dict(document: Any) -> Model:
     stationary = start == STATIONARY
     count = len(states)
     return Model(
-        names=tuple(name for name, _, _ in states),
-        reported=tuple(reported for _, reported, _ in states),
+        names=tuple(name for name, _, _, _ in states),
+        reported=tuple(reported for _, reported, _, _ in states),
+        stages=tuple(stages for _, _, stages, _ in states),
         order=order,
         symmetric=symmetric,
         start_kind=STATIONARY if stationary else FREE,
         start=None if stationary else _numbers("start", start, (count,)),
         transitions=_numbers("transitions", document["transitions"], (count, count)),
-        joint=np.array([joint for _, _, joint in states]),
+        joint=np.array([joint for _, _, _, joint in states]),
         training=document.get("training"),
     )
 
@@ -133,8 +136,13 @@ def model_to_dict(model: Model) -> dict[str, Any]:
             STATIONARY if model.start_kind == STATIONARY else model.start_probabilities.tolist()
         ),
         "states": [
-            {"name": name, "reported": reported, "joint": joint.tolist()}
-            for name, reported, joint in zip(model.names, model.reported, model.joint, strict=True)
+            {
+                "name": model.names[state],
+                "reported": model.reported[state],
+                "stages": model.stages[state],
+                "joint": model.joint[state].tolist(),
+            }
+            for state in range(model.states)
         ],
         "transitions": model.transitions.tolist(),
         "training": model.training,
@@ -150,7 +158,7 @@ def _check_keys(where: str, found: Mapping[str, Any], known: set[str], needed: s
             raise ModelError(f"{where}{key}: missing")
 
 
-def _read_state(index: int, state: Any, order: int) -> tuple[str, bool, NDArray[np.float64]]:
+def _read_state(index: int, state: Any, order: int) -> tuple[str, bool, int, NDArray[np.float64]]:
     where = f"states[{index}]"
     if not isinstance(state, dict):
         raise ModelError(f"{where}: must be an object with name, reported and joint")
@@ -162,16 +170,20 @@ def _read_state(index: int, state: Any, order: int) -> tuple[str, bool, NDArray[
         )
     if not isinstance(reported, bool):
         raise ModelError(f"{where}.reported: {reported!r} is neither true nor false")
+    stages = state.get("stages", 1)
+    if not isinstance(stages, int) or isinstance(stages, bool) or stages < 1:
+        raise ModelError(f"{where}.stages: {stages!r} is not a whole number from 1 up")
     if ("joint" in state) == ("conditional" in state):
         raise ModelError(f"{where}: give either joint or conditional")
     if "joint" in state:
-        return name, reported, _numbers(f"{where}.joint", state["joint"], (4 ** (order + 1),))
+        joint = _numbers(f"{where}.joint", state["joint"], (4 ** (order + 1),))
+        return name, reported, stages, joint
     if order > _CONDITIONAL_MAX_ORDER:
         raise ModelError(
             f"{where}.conditional: possible up to order {_CONDITIONAL_MAX_ORDER}; give joint"
         )
     rows = _numbers(f"{where}.conditional", state["conditional"], (4**order, 4))
-    return name, reported, joint_of_chain(f"{where}.conditional", rows)
+    return name, reported, stages, joint_of_chain(f"{where}.conditional", rows)
 
 
 def is_plain_name(name: str) -> bool:

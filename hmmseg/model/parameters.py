@@ -10,9 +10,10 @@ from numpy.typing import ArrayLike, NDArray
 
 from hmmseg.errors import ModelError
 from hmmseg.model.contexts import backed_off_emissions, joint_levels, reverse_complement_words
-from hmmseg.model.stationary import stationary_distribution
+from hmmseg.model.machine import Machine, unfolded_transitions
+from hmmseg.model.stationary import closed_classes, stationary_distribution
 
-__all__ = ["FREE", "MAX_ORDER", "MAX_STATES", "STATIONARY", "Model"]
+__all__ = ["FREE", "MAX_ORDER", "MAX_STATES", "STATIONARY", "Model", "staged_shares"]
 
 MAX_ORDER = 8
 MAX_STATES = 64
@@ -23,6 +24,7 @@ _SUM_TOLERANCE = 1e-6
 """How far a hand-written distribution may be from 1; beyond rounding it is scaled to 1."""
 
 _ROUNDING = 1e-12
+_DOUBLINGS = 60
 _SYMMETRY_TOLERANCE = 1e-6
 
 
@@ -51,6 +53,9 @@ class Model:
     start
         float64[state]: probabilities of the first state of a contig. Computed from the
         transitions when the start is stationary.
+    stages
+        Stages of each state in series, see :mod:`.machine`; one each by default. The diagonal of
+        the transitions is the chance to stay in a stage.
     training
         What the model was trained on, kept as it is.
 
@@ -68,6 +73,7 @@ class Model:
     transitions: NDArray[np.float64]
     joint: NDArray[np.float64]
     start: NDArray[np.float64] | None = None
+    stages: tuple[int, ...] = ()
     training: Mapping[str, Any] | None = field(default=None, repr=False)
 
     def __post_init__(self) -> None:
@@ -78,14 +84,17 @@ class Model:
         joint = _rows("joint", self.joint, (count, 4 ** (self.order + 1)), what="states")
         if self.symmetric:
             joint = _mirrored_tables(joint, self.order)
+        if not self.stages:
+            object.__setattr__(self, "stages", (1,) * count)
+        self._check_stages(transitions)
         if self.start_kind == STATIONARY:
-            start = stationary_distribution(transitions)
+            start = staged_shares(transitions, self.stages)
         elif self.start is None:
             raise ModelError("start: missing; give a list of probabilities or 'stationary'")
         else:
             start = _rows("start", np.asarray(self.start, dtype=float)[None, :], (1, count))[0]
         if self.symmetric:
-            _check_reversible(transitions, start)
+            _check_reversible(transitions, start / np.array(self.stages))
         for name, array in (("transitions", transitions), ("joint", joint), ("start", start)):
             array.flags.writeable = False
             object.__setattr__(self, name, array)
@@ -104,6 +113,17 @@ class Model:
             raise ModelError(f"start: '{self.start_kind}' is neither '{STATIONARY}' nor '{FREE}'")
         if self.symmetric and self.start_kind != STATIONARY:
             raise ModelError("start: a symmetric model starts from its stationary distribution")
+
+    def _check_stages(self, transitions: NDArray[np.float64]) -> None:
+        if len(self.stages) != len(self.names):
+            raise ModelError(f"stages: {len(self.stages)} values for {len(self.names)} states")
+        for state, count in enumerate(self.stages):
+            if count < 1:
+                raise ModelError(f"states[{state}].stages: {count} is not 1 or more")
+            if count > 1 and transitions[state, state] == 1:
+                raise ModelError(f"states[{state}].stages: a state that is never left has one")
+        if sum(self.stages) > MAX_STATES:
+            raise ModelError(f"stages: {sum(self.stages)} in all, but {MAX_STATES} are possible")
 
     @property
     def states(self) -> int:
@@ -124,6 +144,52 @@ class Model:
         return table
 
     @cached_property
+    def machine(self) -> Machine:
+        """The hidden chain that inference runs, with a state for every stage."""
+        stages = np.array(self.stages)
+        owners = np.repeat(np.arange(self.states), stages)
+        start = self.start_probabilities[owners]
+        if self.start_kind == STATIONARY:
+            start = start / stages[owners]
+        else:
+            entered = np.concatenate(([True], owners[1:] != owners[:-1]))
+            start = np.where(entered, start, 0.0)
+        return Machine(
+            order=self.order,
+            both_strands=self.both_strands,
+            transitions=unfolded_transitions(self.transitions, self.stages),
+            emissions=np.ascontiguousarray(self.emissions[owners]),
+            start_probabilities=start,
+            owners=owners,
+        )
+
+    @cached_property
+    def shares(self) -> NDArray[np.float64]:
+        """float64[state]: long-run shares of positions.
+
+        Where states never reach each other the long run depends on the start: then it is where
+        many steps from the start lead.
+        """
+        if len(closed_classes(self.transitions)) == 1:
+            return staged_shares(self.transitions, self.stages)
+        power = self.machine.transitions
+        for _ in range(_DOUBLINGS):
+            product = (power[:, :, None] * power[None, :, :]).sum(axis=1)
+            power = product / product.sum(axis=1, keepdims=True)
+        return self.machine.pooled((self.machine.start_probabilities[:, None] * power).sum(axis=0))
+
+    @property
+    def expected_lengths(self) -> NDArray[np.float64]:
+        """float64[state]: mean length of a visit in bases; infinite if it is never left."""
+        leaving = np.array(
+            [self.transitions[i].sum() - self.transitions[i, i] for i in range(self.states)]
+        )
+        with np.errstate(divide="ignore"):
+            return np.array(self.stages) / np.where(
+                np.diag(self.transitions) == 1, 0.0, np.maximum(leaving, 0.0)
+            )
+
+    @cached_property
     def composition(self) -> NDArray[np.float64]:
         """float64[state, symbol]: each state's probabilities of the four bases."""
         return joint_levels(self.joint)[0]
@@ -142,6 +208,21 @@ class Model:
     def background(self) -> tuple[int, ...]:
         """Indices of the states that are not reported."""
         return tuple(i for i, reported in enumerate(self.reported) if not reported)
+
+
+def staged_shares(transitions: NDArray[np.float64], stages: tuple[int, ...]) -> NDArray[np.float64]:
+    """Return float64[state] stationary shares: a state is as long again for every stage.
+
+    Raises
+    ------
+    ModelError
+        There is no single stationary distribution.
+    """
+    weights = stationary_distribution(transitions)
+    if max(stages) == 1:
+        return weights
+    weights = weights * np.array(stages)
+    return weights / weights.sum()
 
 
 def _rows(

@@ -3,12 +3,10 @@
 import numpy as np
 from numpy.typing import NDArray
 
-from hmmseg.errors import ModelError
 from hmmseg.kernels.elementary import LN2, log_array
 from hmmseg.kernels.tokens import base_codes
 from hmmseg.model import Model
 from hmmseg.model.contexts import code_dtype
-from hmmseg.model.stationary import stationary_distribution
 from hmmseg.sequence.alphabet import reverse_complement
 from hmmseg.sequence.contigs import Contig
 
@@ -41,10 +39,7 @@ class LogOdds:
         others = others or [i for i in range(model.states) if i != state]
         if not others:
             return np.zeros(model.emissions.shape[1])
-        try:
-            shares = stationary_distribution(model.transitions)[others]
-        except ModelError:
-            shares = np.ones(len(others))
+        shares = model.shares[others]
         shares = (
             shares / shares.sum() if shares.sum() > 0 else np.full(len(others), 1 / len(others))
         )

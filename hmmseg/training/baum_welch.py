@@ -10,7 +10,8 @@ from hmmseg.kernels.elementary import LN2
 from hmmseg.model import Model
 from hmmseg.model.parameters import FREE
 from hmmseg.sequence.contigs import Contig
-from hmmseg.training.maximisation import Prior, log_prior, maximise
+from hmmseg.training.constraints import NO_PRIOR, NOTHING_FIXED, Fixed, Prior
+from hmmseg.training.maximisation import log_prior, maximise
 
 __all__ = ["Fit", "fit", "step"]
 
@@ -70,7 +71,7 @@ def step(
     threads
         Threads to use; the result does not depend on it.
     pseudocount
-        See :class:`~hmmseg.training.maximisation.Prior`.
+        As of :meth:`~hmmseg.training.constraints.Prior.even`.
 
     Returns
     -------
@@ -79,7 +80,7 @@ def step(
     """
     corpus = Corpus(contigs, model.order, model.both_strands, threads)
     counts = expect(model, corpus, threads)
-    better = maximise(model, counts, corpus.closed_lengths, Prior(pseudocount))
+    better = maximise(model, counts, corpus.closed_lengths, Prior.even(model, pseudocount))
     return better, counts.log_likelihood
 
 
@@ -89,7 +90,8 @@ def fit(
     *,
     max_iterations: int = 500,
     tolerance: float = 1e-8,
-    prior: Prior | None = None,
+    prior: Prior = NO_PRIOR,
+    fixed: Fixed = NOTHING_FIXED,
     threads: int = 1,
     watch: Callable[[int, float], None] | None = None,
 ) -> Fit:
@@ -107,6 +109,8 @@ def fit(
         In bits per base.
     prior
         Pseudo-counts; none by default.
+    fixed
+        Parameters that stay; none by default.
     threads
         Threads to use; the result does not depend on it.
     watch
@@ -119,7 +123,6 @@ def fit(
     SequenceError
         A contig is impossible under the model.
     """
-    prior = prior or Prior()
     bases = corpus.bases
     if bases == 0:
         raise TrainingError("there is no known base to train on; check the selection of records")
@@ -139,10 +142,12 @@ def fit(
                 "not happen; please report it with the model and the sequence"
             )
         objective = reached
-        converged = gain < tolerance * LN2 * bases and not _start_still_moves(model, counts)
+        converged = gain < tolerance * LN2 * bases and (
+            fixed.start or not _start_still_moves(model, counts)
+        )
         if converged or len(trace) > max_iterations:
             return Fit(model, tuple(trace), objective, converged, bases)
-        model = maximise(model, counts, corpus.closed_lengths, prior)
+        model = maximise(model, counts, corpus.closed_lengths, prior, fixed)
 
 
 def _start_still_moves(model: Model, counts: Counts) -> bool:

@@ -9,7 +9,7 @@ from hmmseg.errors import TrainingError
 from hmmseg.inference.streams import Corpus
 from hmmseg.model import Model
 from hmmseg.training.baum_welch import Fit, fit
-from hmmseg.training.maximisation import Prior
+from hmmseg.training.constraints import Fixed, Prior
 from hmmseg.training.starts import named_by_gc, perturbed, placed_start
 
 __all__ = ["Plan", "Restarts", "fit_restarts"]
@@ -33,7 +33,12 @@ class Plan:
     max_iterations, tolerance
         As for :func:`~hmmseg.training.baum_welch.fit`.
     pseudocount
-        As for :class:`~hmmseg.training.maximisation.Prior`.
+        As of :meth:`~hmmseg.training.constraints.Prior.even`.
+    prior
+        Pseudo-counts of another kind, instead of ``pseudocount``.
+    fixed
+        Names of parameters that stay as they are in ``init``, as for
+        :meth:`~hmmseg.training.constraints.Fixed.named`.
     """
 
     init: Model | None = None
@@ -46,6 +51,8 @@ class Plan:
     max_iterations: int = 500
     tolerance: float = 1e-8
     pseudocount: float = 0.0
+    prior: Prior | None = None
+    fixed: tuple[str, ...] = ()
 
     def start(self, number: int, corpus: Corpus) -> Model:
         """Return the model from which one fit starts."""
@@ -107,17 +114,20 @@ def fit_restarts(
     """
     if not corpus.contigs:
         raise TrainingError("there is no sequence to train on; check the selection of records")
+    starts = [plan.start(number, corpus) for number in range(plan.restarts)]
+    prior = plan.prior or Prior.even(starts[0], plan.pseudocount)
     fits: Sequence[Fit] = [
         fit(
-            plan.start(number, corpus),
+            start,
             corpus,
             max_iterations=plan.max_iterations,
             tolerance=plan.tolerance,
-            prior=Prior(plan.pseudocount),
+            prior=prior,
+            fixed=Fixed.named(start, plan.fixed),
             threads=threads,
             watch=None if watch is None else _numbered(watch, number),
         )
-        for number in range(plan.restarts)
+        for number, start in enumerate(starts)
     ]
     best = int(np.argmax([found.objective for found in fits]))
     return Restarts(tuple(fits), best, plan.finish(fits[best].model))

@@ -18,7 +18,7 @@ from hmmseg.model.parameters import FREE, STATIONARY
 from hmmseg.sequence.alphabet import MISSING
 from hmmseg.sequence.contigs import Contig
 
-__all__ = ["long_run_share", "named_by_gc", "perturbed", "placed_start", "word_counts"]
+__all__ = ["labelled_start", "named_by_gc", "perturbed", "placed_start", "word_counts"]
 
 _WINDOW = 500
 """Bases in a window whose GC is looked at."""
@@ -27,6 +27,9 @@ _MOST_WINDOWS = 1 << 16
 
 _SHORTEST, _LOG_SPREAD = 100.0, 3.4
 """Expected lengths of a random start lie between 100 and 100 exp(3.4), about 3,000 bases."""
+
+_SHORTEST_LABEL = 2.0
+"""An expected length taken from labels is at least this many bases."""
 
 _JITTER = 0.5
 """A perturbed word probability is multiplied by up to exp(0.5) either way."""
@@ -152,7 +155,9 @@ def perturbed(model: Model, random: np.random.Generator, words_only: bool = Fals
     if model.symmetric:
         joint = (joint + joint[:, reverse_complement_words(model.order + 1)]) / 2
     if not words_only and model.states > 1:
-        flow = start[:, None] * transitions if model.symmetric else transitions
+        # A flow that is symmetric but for its diagonal keeps the chances to stay reversible.
+        visits = model.shares / np.array(model.stages)
+        flow = visits[:, None] * transitions if model.symmetric else transitions
         leaving = factors(flow.shape)
         leaving = (leaving + leaving.T) / 2 if model.symmetric else leaving
         np.fill_diagonal(leaving, 1.0)
@@ -167,6 +172,7 @@ def perturbed(model: Model, random: np.random.Generator, words_only: bool = Fals
         transitions=transitions,
         joint=joint / joint.sum(axis=1, keepdims=True),
         start=start,
+        stages=model.stages,
     )
 
 
@@ -187,6 +193,69 @@ def _with(model: Model, symmetric: bool, start_kind: str) -> Model:
     )
 
 
+def labelled_start(
+    contigs: Sequence[Contig],
+    labels: Sequence[NDArray[np.uint8]],
+    names: Sequence[str],
+    order: int,
+    symmetric: bool,
+    start_kind: str,
+) -> Model:
+    """Return a starting model taken from labelled positions.
+
+    Parameters
+    ----------
+    contigs, labels
+        The sequence, and as from :func:`~hmmseg.training.labels.labels_of_contigs`.
+    names
+        The states' names; those without a label take what is unlabelled.
+    order, symmetric, start_kind
+        As of :class:`~hmmseg.model.parameters.Model`.
+
+    Returns
+    -------
+    Model
+        The largest state is background, all others are reported.
+    """
+    states = len(names)
+    sizes = np.zeros(states + 1, np.int64)
+    runs = np.zeros(states + 1, np.int64)
+    words = np.zeros((states + 1, 4 ** (order + 1)))
+    for contig, own in zip(contigs, labels, strict=True):
+        sizes += np.bincount(own, minlength=states + 1)
+        first = np.concatenate(([True], own[1:] != own[:-1]))
+        runs += np.bincount(own[first], minlength=states + 1)
+        for label in np.unique(own):
+            words[label] += _words_where(contig, own == label, order)
+    labelled = sizes[1:] > 0
+    # A state without labels begins from everything that has none.
+    sizes = np.where(labelled, sizes[1:], max(sizes[0], 1))
+    runs = np.maximum(np.where(labelled, runs[1:], max(runs[0], 1)), 1)
+    joint = np.where(labelled[:, None], words[1:], words[0]) + 1 / words.shape[1]
+    if symmetric:
+        joint = (joint + joint[:, reverse_complement_words(order + 1)]) / 2
+    lengths = np.maximum(sizes / runs, _SHORTEST_LABEL)
+    background = int(np.argmax(sizes))
+    return Model(
+        names=tuple(names),
+        reported=tuple(state != background for state in range(states)),
+        order=order,
+        symmetric=symmetric,
+        start_kind=start_kind,
+        transitions=_switching(lengths),
+        joint=joint / joint.sum(axis=1, keepdims=True),
+        start=np.full(states, 1 / states) if start_kind == FREE else None,
+    )
+
+
+def _words_where(contig: Contig, chosen: NDArray[np.bool_], order: int) -> NDArray[np.float64]:
+    """Return float64[word] counts of the words that end at the chosen positions."""
+    codes = np.empty(len(contig), code_dtype(order))
+    base_codes(contig.bases, order, contig.closed, 0, len(contig), codes)
+    counts = np.bincount(codes[chosen], minlength=missing_code(order) + 1)
+    return counts[code_offset(order) : missing_code(order)].astype(float)
+
+
 def named_by_gc(model: Model) -> Model:
     """Return a model whose states are ordered and named by GC.
 
@@ -197,10 +266,7 @@ def named_by_gc(model: Model) -> Model:
     count = model.states
     known = {1: ("chain",), 2: ("low-gc", "high-gc"), 3: ("low-gc", "mid-gc", "high-gc")}
     names = known.get(count, tuple(f"gc-{i + 1}" for i in range(count)))
-    share = model.start_probabilities
-    if model.start_kind == FREE:
-        share = long_run_share(model)
-    background = int(np.argmax(share[order]))
+    background = int(np.argmax(model.shares[order]))
     return Model(
         names=names,
         reported=tuple(i != background for i in range(count)),
@@ -210,13 +276,5 @@ def named_by_gc(model: Model) -> Model:
         transitions=model.transitions[np.ix_(order, order)],
         joint=model.joint[order],
         start=model.start_probabilities[order],
+        stages=tuple(model.stages[i] for i in order),
     )
-
-
-def long_run_share(model: Model) -> NDArray[np.float64]:
-    """Return the share of each state after many steps from the start."""
-    power = model.transitions
-    for _ in range(40):
-        product = (power[:, :, None] * power[None, :, :]).sum(axis=1)
-        power = product / product.sum(axis=1, keepdims=True)
-    return (model.start_probabilities[:, None] * power).sum(axis=0)
