@@ -131,7 +131,13 @@ def impossible(
     codes: NDArray[np.unsignedinteger],
     reverse: bool = False,
 ) -> SequenceError:
-    """Return the error for a sequence that the model cannot have made; see :func:`exact_pass`."""
+    """Return the error for a sequence that the model cannot have made.
+
+    Parameters
+    ----------
+    machine, contig, codes, reverse
+        As for :func:`exact_pass`.
+    """
     if contig.closed:
         starts = [
             np.where(np.arange(machine.states) == i, 0.0, -np.inf) for i in range(machine.states)

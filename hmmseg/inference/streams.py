@@ -45,6 +45,17 @@ def block_edges(
 
     An open contig's first base has no predecessor and belongs to no block, so its edges begin
     at 1. Edges of the reverse strand mirror those of the forward strand.
+
+    Parameters
+    ----------
+    length
+        Of the contig in bases.
+    closed
+        Whether it is a circle.
+    reverse
+        Whether the reverse strand is read.
+    block
+        Bases in a block.
     """
     first = 0 if closed else 1
     inner = np.arange(length % block if reverse else block, length, block, dtype=np.int64)

@@ -93,7 +93,11 @@ def better_transitions(
 def _aimed_stay(model: Model, objective: _Objective, fixed: Fixed) -> _Matrix:
     """Return float64[state] chances to stay; a state that nothing was counted for keeps its own."""
     stays, old = np.diag(objective.steps), np.diag(model.transitions)
-    total = objective.steps.sum(axis=1) + objective.advances
+    leaves = objective.steps.sum(axis=1) - stays
+    if model.symmetric:
+        # What leaves a state on one strand enters it on the other.
+        leaves = (leaves + (objective.steps.sum(axis=0) - stays)) / 2
+    total = stays + leaves + objective.advances
     stay = np.where(total > 0, stays / np.where(total > 0, total, 1.0), old)
     kept = np.isin(np.arange(model.states), list(fixed.lengths))
     return np.where(kept, old, stay)

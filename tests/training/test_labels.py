@@ -59,7 +59,8 @@ def test_command_names_states_by_labels(tmp_path: Path, monkeypatch: pytest.Monk
     tables = {state["name"]: state["joint"] for state in document["states"]}
     assert tables["rich"] == pytest.approx([0.15, 0.35, 0.35, 0.15], abs=0.02)
     assert tables["unlabelled"] == pytest.approx([0.35, 0.15, 0.15, 0.35], abs=0.02)
-    assert main([*train, "--states", "1", "--init", "model.json", "--output", "two.json"]) == 0
+    assert main([*train, "--init", "model.json", "--output", "two.json"]) == 0
+    assert main([*train, "--states", "1", "--order", "1", "--output", "one.json"]) == 0
     Path("far.bed").write_text("simulated_1\t0\t99999\trich\n")
     far = ["train", "drawn/sequence.fa.gz", "--labels", "far.bed", "--output", "three.json"]
     assert main(far) == 1
