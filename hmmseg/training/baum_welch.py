@@ -136,7 +136,7 @@ def fit(
         if watch is not None:
             watch(len(trace) - 1, -counts.log_likelihood / LN2 / bases)
         gain = reached - objective
-        if gain < -_ROUNDING * bases:
+        if gain < -_ROUNDING * (bases + prior.bases):
             raise TrainingError(
                 f"iteration {len(trace) - 1}: the likelihood fell by {-gain:.3g} nats, which must "
                 "not happen; please report it with the model and the sequence"

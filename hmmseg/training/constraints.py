@@ -26,6 +26,11 @@ class Prior:
     words: NDArray[np.float64] | None = None
     steps: NDArray[np.float64] | None = None
 
+    @property
+    def bases(self) -> float:
+        """All pseudo-counts together."""
+        return sum(float(counts.sum()) for counts in (self.words, self.steps) if counts is not None)
+
     @classmethod
     def even(cls, model: Model, bases: float) -> "Prior":
         """Return pseudo-counts spread evenly over the words of each state.
