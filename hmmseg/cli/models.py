@@ -120,15 +120,12 @@ def train(
     from hmmseg.training.restarts import Plan
 
     _check_start(preset, spec, init, plan["symmetric"], start)
-    origin, proposed = job.origin(preset, spec, init)
-    if labels:
-        proposed["restarts"] = 1
+    origin, proposed = job.origin(preset, spec, init, labels)
     for key, value in proposed.items():
         plan[key] = value if plan[key] is None else plan[key]
     found = job.train(
         sources, output, Plan(start_kind=start, **plan), origin,
         threads=threads, force=force, train_bases=None if labels else train_bases or None,
-        labels=labels,
     )  # fmt: skip
     print_findings(found.findings, found.cautions)
 

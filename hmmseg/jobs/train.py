@@ -37,7 +37,7 @@ _ITERATIONS = 500
 
 @dataclass(frozen=True)
 class Origin:
-    """Where training starts, if not at random.
+    """Where training starts, if not at random, and what is known beforehand.
 
     Parameters
     ----------
@@ -47,26 +47,33 @@ class Origin:
         A specification, which is anchored to the sequence.
     file
         The file it was read from; None for a preset.
+    labels
+        A BED file of intervals whose state, in column 4, is known. Without another start, its
+        names are those of the states.
     """
 
     init: str | None = None
     wanted: Specification | None = None
     file: str | None = None
+    labels: str | None = None
 
     def parameters(self) -> dict[str, Any]:
         """Return what is to stand in the provenance."""
+        labels = {"labels": Path(self.labels).name} if self.labels else {}
         if self.file is not None:
-            return {"spec": Path(self.file).name}
+            return {"spec": Path(self.file).name, **labels}
         if self.wanted is not None:
-            return {"preset": self.wanted.name}
-        return {"init": Path(self.init).name if self.init else None}
+            return {"preset": self.wanted.name, **labels}
+        return {"init": Path(self.init).name if self.init else None, **labels}
 
     def files(self) -> list[str]:
         """Return the files that bear on the result."""
-        return [path for path in (self.init, self.file) if path]
+        return [path for path in (self.init, self.file, self.labels) if path]
 
 
-def origin(preset: str | None, spec: str | None, init: str | None) -> tuple[Origin, dict[str, Any]]:
+def origin(
+    preset: str | None, spec: str | None, init: str | None, labels: str | None = None
+) -> tuple[Origin, dict[str, Any]]:
     """Return where training starts, and the settings of a plan that it proposes.
 
     Parameters
@@ -77,12 +84,15 @@ def origin(preset: str | None, spec: str | None, init: str | None) -> tuple[Orig
         File of a specification.
     init
         File of a model.
+    labels
+        File of intervals whose state is known.
     """
-    proposed = {"restarts": 1 if init else 5, "max_iterations": _ITERATIONS, "pseudocount": 0.0}
+    settled = bool(init or labels)
+    proposed = {"restarts": 1 if settled else 5, "max_iterations": _ITERATIONS, "pseudocount": 0.0}
     if not preset and not spec:
-        return Origin(init), proposed
+        return Origin(init, labels=labels), proposed
     wanted = load_preset(preset) if preset else load_specification(spec or "")
-    return Origin(None, wanted, spec), {
+    return Origin(None, wanted, spec, labels), {
         "restarts": wanted.restarts,
         "max_iterations": _ITERATIONS if wanted.trained else 0,
         "pseudocount": wanted.pseudocount,
@@ -99,7 +109,6 @@ def train(
     force: bool,
     train_bases: int | None = None,
     reuse: bool = False,
-    labels: str | None = None,
 ) -> Explained:
     """Fit a model and write its document.
 
@@ -122,9 +131,6 @@ def train(
         Train on a seeded sample of about so many bases; None for everything.
     reuse
         Return an earlier result if it is what would be made again.
-    labels
-        A BED file of intervals whose state, in column 4, is known. Without another start, its
-        names are those of the states.
     """
     if not reuse:
         check_target(output, force)
@@ -133,8 +139,7 @@ def train(
     if start.wanted is not None:
         sources = sources.with_soft_mask(start.wanted.soft_mask)
     parameters = _parameters(sources, plan, start, train_bases)
-    parameters["labels"] = Path(labels) if labels else None
-    inputs = [*sources.files(), *start.files(), *([labels] if labels else [])]
+    inputs = [*sources.files(), *start.files()]
     if reuse and is_current(output, "train", parameters, plan.seed, inputs):
         return explain(output)
     check_target(output, force)
@@ -142,7 +147,7 @@ def train(
     if start.wanted is not None:
         counts = word_counts(contigs, start.wanted.order)
         plan = replace(plan, init=anchored(start.wanted, counts))
-    plan, known = _with_labels(plan, labels, sources, contigs)
+    plan, known = _with_labels(plan, start.labels, sources, contigs)
     order = plan.init.order if plan.init else plan.order
     symmetric = plan.init.symmetric if plan.init else plan.symmetric
     corpus = Corpus(contigs, order, symmetric and order > 0, threads, labels=known)
