@@ -2,6 +2,9 @@
 
 import gzip
 import json
+import subprocess
+import sys
+import time
 from collections.abc import Callable
 from pathlib import Path
 from typing import Any
@@ -11,9 +14,9 @@ import pytest
 
 from hmmseg.cli import main
 
-COMMANDS = (
-    "annotate", "survey", "presets", "train", "explain", "decode", "score", "simulate", "verify", "batches", "gather", "summary",
-)  # fmt: skip
+COMMANDS = tuple(
+    "annotate survey presets train explain decode score simulate verify batches gather summary".split()
+)
 
 MODEL: dict[str, Any] = {
     "format": "hmmseg-model",
@@ -295,3 +298,19 @@ def test_impossible_sequence_names_record_and_base(
     for command in (["score", "one.fa"], ["decode", "one.fa", "--output", "new"]):
         line = fails_with_one_line([*command, "--model", "bad.json"], 1, capsys)
         assert "record one, base 10" in line
+
+
+def test_cancelled_job_leaves_nothing_behind(here: Path) -> None:
+    """A cluster cancels by SIGTERM; here the job waits for sequence that never comes."""
+    call = [sys.executable, "-m", "hmmseg", "decode", "-", "--model", "model.json"]
+    with subprocess.Popen(
+        [*call, "--output", "new"], stdin=subprocess.PIPE, stderr=subprocess.PIPE, text=True
+    ) as job:
+        while not list(here.glob(".*new*")):
+            assert job.poll() is None
+            time.sleep(0.05)
+        job.terminate()
+        assert job.stderr is not None
+        assert job.stderr.read().strip() == "hmmseg: interrupted; nothing was written"
+        assert job.wait() == 1
+    assert not list(here.glob("*new*")) + list(here.glob(".*new*"))

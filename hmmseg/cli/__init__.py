@@ -1,8 +1,10 @@
 """The command line: parse, call one function, print, exit."""
 
 import os
+import signal
 import sys
 from collections.abc import Sequence
+from typing import NoReturn
 
 import click
 
@@ -62,6 +64,9 @@ def main(arguments: Sequence[str] | None = None) -> int:
     int
         0 done, 1 the data or a file is at fault, 2 the call is.
     """
+    if arguments is None:
+        # A cancelled cluster job must remove what it has half written, too.
+        signal.signal(signal.SIGTERM, _interrupt)
     given = list(sys.argv[1:] if arguments is None else arguments)
     debug = "--debug" in given
     # A flag of the whole program may stand anywhere.
@@ -79,6 +84,10 @@ def main(arguments: Sequence[str] | None = None) -> int:
         click.echo(f"hmmseg: {_printable(message)}", err=True)
         return code
     return 0
+
+
+def _interrupt(number: int, frame: object) -> NoReturn:
+    raise KeyboardInterrupt
 
 
 def _explained(error: BaseException) -> tuple[str, int]:

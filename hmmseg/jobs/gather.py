@@ -1,27 +1,20 @@
 """The command ``gather``: put the calls of several batches together."""
 
 import json
-from collections.abc import Iterator, Mapping, Sequence
+from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import Any
-
-import numpy as np
-from numpy.typing import NDArray
 
 from hmmseg.errors import OutputError
 from hmmseg.jobs.decode import Summary, track_name, write_result
 from hmmseg.outputs import PROVENANCE, check_target, whole_folder
 from hmmseg.provenance import read_provenance, write_provenance
 from hmmseg.regions.table import number_regions
-from hmmseg.sequence.intervals import flag_runs
-from hmmseg.tracks.bigwig import PosteriorTrack, rounded_runs
+from hmmseg.tracks.bigwig import PosteriorTrack, read_track
 from hmmseg.tracks.sizes import read_chrom_sizes
 from hmmseg.tracks.table import read_regions_table
 
 __all__ = ["gather", "read_summary"]
-
-_AT_ONCE = 1 << 22
-"""Bases of a track that are read at a time."""
 
 
 def gather(parts: Sequence[str], output: str, force: bool) -> dict[str, Any]:
@@ -66,9 +59,8 @@ def gather(parts: Sequence[str], output: str, force: bool) -> dict[str, Any]:
         for state in states:
             with PosteriorTrack(folder / track_name(state), lengths) as track:
                 for part in folders:
-                    for record, start, values in _posteriors(part, track_name(state)):
-                        starts, ends, levels = rounded_runs(values)
-                        track.add(record, starts + start, ends + start, levels)
+                    for record, starts, ends, values in read_track(part / track_name(state)):
+                        track.add(record, starts, ends, values)
         summary = write_result(folder, result, table)
         written = sorted(path for path in folder.iterdir() if path.name != PROVENANCE)
         inputs = [part / PROVENANCE for part in folders]
@@ -124,18 +116,3 @@ def _record_lengths(folders: Sequence[Path]) -> dict[str, int]:
                 raise OutputError(f"{folder}: record {record} is in an earlier folder, too")
             lengths[record] = length
     return lengths
-
-
-def _posteriors(part: Path, name: str) -> Iterator[tuple[str, int, NDArray[np.float64]]]:
-    """Yield record, first position and values of every stretch of a track without gaps."""
-    import pyBigWig  # noqa: PLC0415 - start-up time
-
-    file = pyBigWig.open(str(part / name))
-    try:
-        for record, length in read_chrom_sizes(part / "chrom.sizes").items():
-            for begin in range(0, length, _AT_ONCE):
-                dense = file.values(record, begin, min(begin + _AT_ONCE, length), numpy=True)
-                for start, end in flag_runs(~np.isnan(dense)):
-                    yield record, begin + int(start), dense[start:end].astype(np.float64)
-    finally:
-        file.close()

@@ -59,7 +59,7 @@ class SpooledTrack:
         runs["start"], runs["end"] = starts + start, ends + start
         runs["level"] = np.rint(values * LEVELS)
         with self._spool.open("ab") as file:
-            runs.tofile(file)
+            file.write(runs.tobytes())
         self._segments.append(_Segment(record, start, self._written, len(runs)))
         self._written += len(runs)
 
