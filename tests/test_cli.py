@@ -12,11 +12,7 @@ from typing import Any
 import numpy as np
 import pytest
 
-from hmmseg.cli import main
-
-COMMANDS = tuple(
-    "annotate survey presets train explain decode score simulate verify batches gather summary".split()
-)
+from hmmseg.cli import cli, main
 
 MODEL: dict[str, Any] = {
     "format": "hmmseg-model",
@@ -53,7 +49,7 @@ def lines_of(capsys: pytest.CaptureFixture[str]) -> tuple[list[str], list[str]]:
     return captured.out.splitlines(), captured.err.splitlines()
 
 
-@pytest.mark.parametrize("command", COMMANDS)
+@pytest.mark.parametrize("command", list(cli.commands))
 def test_help(command: str, capsys: pytest.CaptureFixture[str]) -> None:
     assert main([command, "--help"]) == 0
     out, err = lines_of(capsys)
