@@ -11,6 +11,7 @@ from typing import Any
 
 import numpy as np
 
+from hmmseg.kernels.arrays import fill
 from hmmseg.kernels.compiling import kernel
 from hmmseg.kernels.limits import LOST
 from hmmseg.kernels.scan import log_scaled
@@ -45,7 +46,7 @@ def chain_kernel(states: int) -> Callable[..., Any]:
     ):  # fmt: skip
         """Do as :func:`hmmseg.kernels.scan.scan_contigs` for int64[...] numbers of contigs."""
         rows = np.zeros((3, states))
-        rows[2] = 1.0
+        fill(rows[2], 1.0)
         for contig in contigs:
             first, last = contig_blocks[contig], contig_blocks[contig + 1]
             # The two ways are independent: while one waits for a result, the other goes on.

@@ -142,7 +142,10 @@ def item(typing, values, at):
 
     def code(context, builder, signature, arguments):
         array = context.make_array(values)(context, builder, arguments[0])
-        return builder.load(builder.gep(array.data, [arguments[1]]))
+        pointer = cgutils.get_item_pointer(
+            context, builder, values, array, [arguments[1]], wraparound=False
+        )
+        return builder.load(pointer)
 
     return values.dtype(values, types.intp), code
 

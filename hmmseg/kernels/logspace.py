@@ -6,8 +6,9 @@ probabilities of 1e-300, or where a sequence may be impossible.
 
 import numpy as np
 
+from hmmseg.kernels.arrays import copy, largest
 from hmmseg.kernels.compiling import kernel
-from hmmseg.kernels.elementary import exp, log_array
+from hmmseg.kernels.elementary import exp, log, log_array
 
 __all__ = ["first_impossible", "log_likelihood", "log_pass"]
 
@@ -17,13 +18,13 @@ _BLOCK = 4096
 @kernel
 def _log_sum(terms):
     """Return the logarithm of a sum of exponentials of float64[term]."""
-    largest = terms.max()
-    if largest == -np.inf:
+    most = largest(terms)
+    if most == -np.inf:
         return -np.inf
     total = 0.0
     for term in terms:
-        total += exp(term - largest)
-    return largest + log_array(np.array([total]))[0]
+        total += exp(term - most)
+    return most + log(total)
 
 
 @kernel
@@ -41,12 +42,12 @@ def _rebase(vector):
 
     Entries then stay near 0, where differences of logarithms are exact to the last digits.
     """
-    largest = vector.max()
-    if largest == -np.inf:
+    most = largest(vector)
+    if most == -np.inf:
         return 0.0
     for j in range(vector.size):
-        vector[j] -= largest
-    return largest
+        vector[j] -= most
+    return most
 
 
 @kernel
@@ -88,7 +89,7 @@ def log_likelihood(transitions, emissions, codes, start, end):
     taken = 0.0
     for code in codes:
         taken += _forward(log_t, log_e, code, vector, following, terms)
-        vector[:] = following
+        copy(following, vector)
     return taken + _log_sum(vector + end)
 
 
@@ -101,8 +102,8 @@ def first_impossible(transitions, emissions, codes, start):
     terms = np.empty_like(vector)
     for position in range(codes.size):
         _forward(log_t, log_e, codes[position], vector, following, terms)
-        vector[:] = following
-        if vector.max() == -np.inf:
+        copy(following, vector)
+        if largest(vector) == -np.inf:
             return position
     return codes.size
 
@@ -142,14 +143,14 @@ def log_pass(
     following = np.empty(states)
     for position in range(codes.size):
         if position % _BLOCK == 0:
-            marks[position // _BLOCK] = vector
+            copy(vector, marks[position // _BLOCK])
         _forward(log_t, log_e, codes[position], vector, following, terms)
-        vector[:] = following
+        copy(following, vector)
     backward = end.copy()
     for block in range(blocks - 1, -1, -1):
         offset = block * _BLOCK
         length = min(_BLOCK, codes.size - offset)
-        forward[0] = marks[block]
+        copy(marks[block], forward[0])
         for at in range(length):
             taken[at] = _forward(
                 log_t, log_e, codes[offset + at], forward[at], forward[at + 1], terms
@@ -166,7 +167,7 @@ def log_pass(
                     pair = forward[at, i] + log_t[i, j] + log_e[j, code] + backward[j]
                     transition_counts[i, j] += share * exp(pair - taken[at] - total)
             _backward(log_t, log_e, code, backward, following, terms)
-            backward[:] = following
+            copy(following, backward)
     total = _log_sum(start + backward)
     for j in range(states):
         head[j] += share * exp(start[j] + backward[j] - total)

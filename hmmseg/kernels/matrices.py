@@ -7,6 +7,7 @@ its last base | state i at the base before it, context).
 
 import numpy as np
 
+from hmmseg.kernels.arrays import all_zero, copy_matrix
 from hmmseg.kernels.compiling import kernel
 from hmmseg.kernels.tokens import words_of
 
@@ -37,11 +38,12 @@ def fill_token_matrices(transitions, emissions, order, word, matrices):
     full = codes - 1 - words_of(order + 1)
     product = np.empty((states, states))
     for number in range(words_of(order + word)):
-        matrices[codes + number] = matrices[full + code_in_word(number, order, word, 0)]
+        first = full + code_in_word(number, order, word, 0)
+        copy_matrix(matrices[first], matrices[codes + number])
         for at in range(1, word):
             step = matrices[full + code_in_word(number, order, word, at)]
             _multiply(matrices[codes + number], step, product)
-            matrices[codes + number] = product
+            copy_matrix(product, matrices[codes + number])
 
 
 @kernel
@@ -64,9 +66,11 @@ def _multiply(a, b, out):
 def smallest_entry(matrices):
     """Return the smallest entry above zero of float64[token, state, state]."""
     smallest = np.inf
-    for value in matrices.flat:
-        if 0.0 < value < smallest:
-            smallest = value
+    for token in range(matrices.shape[0]):
+        for i in range(matrices.shape[1]):
+            for j in range(matrices.shape[2]):
+                if 0.0 < matrices[token, i, j] < smallest:
+                    smallest = matrices[token, i, j]
     return smallest
 
 
@@ -97,10 +101,10 @@ def unfold_counts(weights, matrices, order, word, transition_counts, emission_co
     outer = np.empty((states, states))
     scratch = np.empty((states, states))
     for number in range(words_of(order + word)):
-        if not weights[codes + number].any():
+        if all_zero(weights[codes + number]):
             continue
         # before[at] carries the weights from the state before the word to the one before `at`.
-        before[0] = weights[codes + number]
+        copy_matrix(weights[codes + number], before[0])
         for at in range(1, word):
             step = matrices[full + code_in_word(number, order, word, at - 1)]
             _multiply_transposed_left(step, before[at - 1], before[at])
@@ -113,7 +117,7 @@ def unfold_counts(weights, matrices, order, word, transition_counts, emission_co
             _multiply_transposed_right(before[at], outer, scratch)
             _add_step(scratch, matrices[code], code, transition_counts, emission_counts)
             _multiply(matrices[code], outer, scratch)
-            outer[:] = scratch
+            copy_matrix(scratch, outer)
 
 
 @kernel

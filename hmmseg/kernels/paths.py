@@ -21,6 +21,7 @@ from typing import Any, NamedTuple
 
 import numpy as np
 
+from hmmseg.kernels.arrays import copy, copy_matrix, largest
 from hmmseg.kernels.compiling import helper, kernel
 from hmmseg.kernels.elementary import log
 from hmmseg.kernels.matrices import code_in_word
@@ -95,8 +96,8 @@ def fill_token_ways(log_t, log_e, order, word, ways, keys):
     for number in range(words_of(order + word)):
         token = codes + number
         first = full + code_in_word(number, order, word, 0)
-        ways[token] = ways[first]
-        keys[token] = keys[first]
+        copy_matrix(ways[first], ways[token])
+        copy_matrix(keys[first], keys[token])
         for at in range(1, word):
             code = full + code_in_word(number, order, word, at)
             for i in range(states):
@@ -121,7 +122,7 @@ def _extend(scores, keys, step, length):
 @kernel
 def _rebase(scores):
     """Count scores from the best one, which is returned; 0 if all are impossible."""
-    best = scores.max()
+    best = largest(scores)
     if best <= IMPOSSIBLE:
         return 0
     for j in range(scores.size):
@@ -147,7 +148,7 @@ def path_kernels(states: int) -> PathKernels:
         following = np.empty(states, np.int64)
         taken = 0
         for block in range(bounds.size - 1):
-            marks[block] = scores
+            copy(scores, marks[block])
             for at in range(bounds[block], bounds[block + 1]):
                 token = np.int64(item(tokens, at))
                 for j in range(states):
@@ -206,9 +207,9 @@ def _score_two(tokens, bounds, ways, scores, marks):
         What was counted off the scores.
     """
     taken = 0
-    flat = ways.ravel()
+    flat = ways.reshape(ways.size)
     for block in range(bounds.size - 1):
-        marks[block] = scores
+        copy(scores, marks[block])
         p, q = scores[0], scores[1]
         at = bounds[block]
         while at < bounds[block + 1]:
@@ -244,7 +245,7 @@ def _trace_two(tokens, begin, stop, ways, keys, mark, back):
     """
     scores = mark.copy()
     p, q = scores[0], scores[1]
-    flat = ways.ravel()
+    flat = ways.reshape(ways.size)
     at = begin
     while at < stop:
         pause = min(at + REBASE, stop)

@@ -2,6 +2,7 @@
 
 import numpy as np
 
+from hmmseg.kernels.arrays import copy, fill
 from hmmseg.kernels.compiling import kernel
 from hmmseg.kernels.limits import LOST, SCALE_BITS, VANISHING
 from hmmseg.kernels.tokens import base_codes
@@ -64,13 +65,13 @@ def transfer(tokens, bounds, blocks, matrices, interval, products, exponents, fl
     row = np.empty(matrices.shape[1])
     for block in blocks:
         rows = products[block]
-        rows[:] = 0.0
-        exponents[block] = 0.0
+        fill(exponents[block], 0.0)
         for i in range(row.size):
+            fill(rows[i], 0.0)
             rows[i, i] = 1.0
             for at in range(bounds[block], bounds[block + 1]):
                 _vector_times_matrix(rows[i], matrices[tokens[at]], row)
-                rows[i] = row
+                copy(row, rows[i])
                 if (at - bounds[block]) % interval == interval - 1 or at == bounds[block + 1] - 1:
                     count, vanishing = rescale(rows[i])
                     exponents[block, i] += count
@@ -114,7 +115,7 @@ def expect(
         stop = bounds[block + 1]
         length = stop - bounds[block]
         # Row ``left`` is the vector before the token behind which ``left - 1`` follow.
-        forward[length] = starts[job]
+        copy(starts[job], forward[length])
         for left in range(length, 0, -1):
             if left % interval == 0:
                 rescale(forward[left])
@@ -139,7 +140,7 @@ def expect(
                 share = forward[left, i] * factor
                 for j in range(states):
                     weights[token, i, j] += share * backward[j]
-            backward[:] = stepped
+            copy(stepped, backward)
 
 
 @kernel
@@ -186,12 +187,12 @@ def add_posteriors(
         begin, stop = edges[blocks[job]], edges[blocks[job] + 1]
         length = stop - begin
         base_codes(bases, order, closed, begin, stop, codes)
-        stepped[:] = starts[job]
+        copy(starts[job], stepped)
         for left in range(length, 0, -1):
             if left % interval == 0:
                 rescale(stepped)
             _vector_times_matrix(stepped, matrices[codes[length - left]], forward[left])
-            stepped[:] = forward[left]
+            copy(forward[left], stepped)
         backward = ends[job].copy()
         factor = 0.0
         for left in range(1, length + 1):
@@ -207,5 +208,5 @@ def add_posteriors(
                 more = forward[left, j] * (backward[j] * factor)
                 posterior[origin + step * (stop - left), j] += more
             _vector_times_matrix(backward, mirrored[codes[length - left]], stepped)
-            backward[:] = stepped
+            copy(stepped, backward)
     return True

@@ -7,6 +7,7 @@ function tells whether a value was lost; its contig is then done again with loga
 
 import numpy as np
 
+from hmmseg.kernels.arrays import copy, copy_matrix, fill, largest
 from hmmseg.kernels.compiling import kernel
 from hmmseg.kernels.elementary import log, power_of_two
 from hmmseg.kernels.limits import LOST, SCALE_BITS
@@ -36,7 +37,7 @@ def _lowest_count(vector, times):
 def _row_times_matrix(row, values, times, out):
     """Fill out = row (a vector) times a scaled matrix; return its count and whether it lost."""
     lowest = _lowest_count(row, times)
-    out[:] = 0.0
+    fill(out, 0.0)
     lost = False
     for k in range(row.size):
         if row[k] == 0.0:
@@ -47,7 +48,7 @@ def _row_times_matrix(row, values, times, out):
             lost |= term == 0.0 and values[k, j] > 0.0
             out[j] += term
     count, vanishing = rescale(out)
-    if out.max() == 0.0:
+    if largest(out) == 0.0:
         return 0, True
     return lowest + count, lost or vanishing
 
@@ -107,19 +108,19 @@ def scan_linear(products, times, first, last, start, starts, ends, head):
     following = np.empty_like(start)
     count, lost = rescale(current)
     for block in range(first, last):
-        starts[block] = current
+        copy(current, starts[block])
         more, vanished = _row_times_matrix(current, products[block], times[block], following)
         count += more
         lost |= vanished
-        current[:] = following
+        copy(following, current)
     total = 0.0
     for value in current:
         total += value
-    head[:] = 1.0
+    fill(head, 1.0)
     for block in range(last - 1, first - 1, -1):
-        ends[block] = head
+        copy(head, ends[block])
         lost |= _matrix_times_column(products[block], times[block], head, following)
-        head[:] = following
+        copy(following, head)
     return total, count, lost or total == 0.0
 
 
@@ -128,12 +129,12 @@ def _multiply_scaled(a, a_times, b, b_times, out, out_times):
     """Fill out = a b for scaled matrices; return whether a value was lost."""
     lost = False
     for i in range(a.shape[0]):
-        if a[i].max() == 0.0:
-            out[i] = 0.0
+        if largest(a[i]) == 0.0:
+            fill(out[i], 0.0)
             out_times[i] = 0
             continue
         count, vanished = _row_times_matrix(a[i], b, b_times, out[i])
-        lost |= vanished and out[i].max() > 0.0
+        lost |= vanished and largest(out[i]) > 0.0
         out_times[i] = a_times[i] + count
     return lost
 
@@ -206,8 +207,8 @@ def scan_closed(products, times, first, last, ends, shares):
         for i in range(states):
             for j in range(states):
                 column[j] = around[j, i]
-            lost |= _align(column, around_times) and column.max() > 0.0
-            ends[block, i] = column
+            lost |= _align(column, around_times) and largest(column) > 0.0
+            copy(column, ends[block, i])
             shares[block, i] = 0.0
             if whole[i, i] > 0.0:
                 scale = power_of_two(-SCALE_BITS * (whole_times[i] - count))
@@ -215,8 +216,8 @@ def scan_closed(products, times, first, last, ends, shares):
         lost |= _multiply_scaled(
             products[block], times[block], behind, behind_times, whole, whole_times
         )
-        behind[:] = whole
-        behind_times[:] = whole_times
+        copy_matrix(whole, behind)
+        copy(whole_times, behind_times)
     return trace, trace_count, lost or trace == 0.0
 
 
@@ -235,11 +236,11 @@ def log_trace_of_power(transitions, exponent):
     while exponent > 0:
         if exponent & 1:
             _multiply_scaled(result, result_times, square, square_times, product, product_times)
-            result[:] = product
-            result_times[:] = product_times
+            copy_matrix(product, result)
+            copy(product_times, result_times)
         _multiply_scaled(square, square_times, square, square_times, product, product_times)
-        square[:] = product
-        square_times[:] = product_times
+        copy_matrix(product, square)
+        copy(product_times, square_times)
         exponent >>= 1
     total, count = _scaled_trace(result, result_times)
     return log_scaled(total, count)
