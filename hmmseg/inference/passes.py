@@ -82,8 +82,8 @@ def find_ends(machine: Machine, tables: Tables, stream: Stream, threads: int) ->
 
     Parameters
     ----------
-    model
-        The machine.
+    machine
+        The parameters.
     tables
         Its matrices, of the stream's word length.
     stream
