@@ -9,7 +9,7 @@ from typing import NoReturn
 import click
 
 from hmmseg import __version__
-from hmmseg.cli import calls, models, whole
+from hmmseg.cli import calls, chains, models, whole
 from hmmseg.errors import HmmsegError
 
 __all__ = ["main"]
@@ -47,6 +47,10 @@ for _command in (
     calls.batches,
     calls.gather,
     calls.summary,
+    chains.chains,
+    chains.classify,
+    chains.orders,
+    chains.machine,
 ):
     cli.add_command(_command)
 

@@ -4,7 +4,7 @@ import json
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from pathlib import Path
-from typing import Any
+from typing import Any, Protocol
 
 import numpy as np
 import pandas as pd
@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from hmmseg.errors import ModelError
 from hmmseg.jobs.sources import Sources
-from hmmseg.model import Model, load_model
+from hmmseg.model import load_model
 from hmmseg.outputs import PROVENANCE, check_target, whole_folder, write_json
 from hmmseg.progress import Progress, warn
 from hmmseg.provenance import is_current, write_provenance
@@ -28,7 +28,9 @@ from hmmseg.tracks.sizes import write_chrom_sizes
 from hmmseg.tracks.spool import SpooledTrack
 from hmmseg.tracks.table import write_regions_table
 
-__all__ = ["Summary", "decode", "track_name", "write_result"]
+__all__ = ["Run", "Summary", "decode", "track_name", "write_result"]
+
+Watch = Callable[[int, NDArray[np.float64]], None]
 
 
 @dataclass(frozen=True)
@@ -146,7 +148,7 @@ def decode(  # noqa: PLR0913 - as many as the command has
         return earlier
     check_target(output, force)
     with whole_folder(output, force=force) as folder:
-        result, table = _Run(caller, folder).over(sources)
+        result, table = Run(caller, folder).over(sources)
         summary = write_result(folder, result, table)
         written = sorted(path for path in folder.iterdir() if path.name != PROVENANCE)
         write_provenance(folder, "decode", parameters, None, inputs, written)
@@ -170,15 +172,36 @@ def write_result(folder: Path, result: Summary, table: pd.DataFrame) -> dict[str
     return summary
 
 
-class _Run:
-    """One run over all records, which collects what the result needs."""
+class RegionCaller(Protocol):
+    """Whatever calls the regions of a contig."""
 
-    def __init__(self, caller: Caller, folder: Path) -> None:
+    @property
+    def names(self) -> tuple[str, ...]:
+        """Names of the states."""
+
+    @property
+    def states(self) -> list[int]:
+        """Indices of the reported states."""
+
+    def call(self, contig: Contig, watch: Watch) -> Calls | None:
+        """Call regions, and hand posteriors to ``watch``; None if the contig cannot be called."""
+
+
+class Run:
+    """One run over all records, which collects what the result needs.
+
+    Parameters
+    ----------
+    caller
+        Calls the regions.
+    folder
+        Where the tracks are to stand.
+    """
+
+    def __init__(self, caller: RegionCaller, folder: Path) -> None:
         self._caller = caller
-        self._model: Model = caller.model
         self._tracks = {
-            state: SpooledTrack(folder / track_name(self._model.names[state]))
-            for state in caller.states
+            state: SpooledTrack(folder / track_name(caller.names[state])) for state in caller.states
         }
         self._lengths: dict[str, int] = {}
         self._circular: list[str] = []
@@ -186,6 +209,8 @@ class _Run:
         self._contigs = 0
         self._decoded = 0
         self._tables: list[pd.DataFrame] = []
+        self.not_called = 0
+        """Contigs that the caller could not call."""
 
     def over(self, sources: Sources) -> tuple[Summary, pd.DataFrame]:
         """Call all records; write the tracks; return what was found."""
@@ -201,9 +226,9 @@ class _Run:
             skipped=tuple(self._skipped),
             contigs=self._contigs,
             decoded_bases=self._decoded,
-            states=tuple(self._model.names[state] for state in self._caller.states),
+            states=tuple(self._caller.names[state] for state in self._caller.states),
         )
-        return result, number_regions(self._tables)
+        return result, number_regions(self._tables) if self._tables else pd.DataFrame()
 
     def _record(self, record: Record, contigs: list[Contig]) -> None:
         self._lengths[record.name] = len(record)
@@ -214,14 +239,19 @@ class _Run:
             return
         calls: list[tuple[Contig, Calls]] = []
         for contig in contigs:
-            calls.append((contig, self._caller.call(contig, self._follower(contig))))
+            found = self._caller.call(contig, self._follower(contig))
+            if found is None:
+                self.not_called += 1
+                continue
+            calls.append((contig, found))
             self._contigs += 1
             self._decoded += len(contig)
-        table = regions_of_record(calls, self._model.names)
-        table[SOFT_MASKED] = soft_masked_fraction(table, record)
-        self._tables.append(table)
+        if calls:
+            table = regions_of_record(calls, self._caller.names)
+            table[SOFT_MASKED] = soft_masked_fraction(table, record)
+            self._tables.append(table)
 
-    def _follower(self, contig: Contig) -> Callable[[int, NDArray[np.float64]], None]:
+    def _follower(self, contig: Contig) -> Watch:
         """Return what takes the posteriors of a contig to the tracks."""
 
         def follow(begin: int, posterior: NDArray[np.float64]) -> None:

@@ -1,8 +1,9 @@
 """Calling the regions of one contig."""
 
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from functools import cached_property
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -14,7 +15,7 @@ from hmmseg.regions.intervals import NO_FILTERS, Filters, StateIntervals, filter
 from hmmseg.regions.odds import LogOdds
 from hmmseg.sequence.contigs import Contig
 
-__all__ = ["PATH", "POSTERIOR", "Caller", "Calls"]
+__all__ = ["PATH", "POSTERIOR", "Caller", "Calls", "RunningSums", "scored"]
 
 PATH = "path"
 POSTERIOR = "posterior"
@@ -67,6 +68,11 @@ class Caller:
     threads: int = 1
 
     @property
+    def names(self) -> tuple[str, ...]:
+        """Names of the states."""
+        return self.model.names
+
+    @property
     def states(self) -> list[int]:
         """Indices of the reported states."""
         return [i for i, reported in enumerate(self.model.reported) if reported]
@@ -91,7 +97,7 @@ class Caller:
             The contig is impossible under the model.
         """
         found = self._path_intervals(contig) if self.decoder == PATH else None
-        sums = {state: _Sums(found, state) for state in self.states}
+        sums = {state: RunningSums(found, state) for state in self.states}
         for begin, posterior in posterior_windows(self.model, contig, self.threads):
             bits = self._odds.window(contig, begin, begin + len(posterior))
             for state, running in sums.items():
@@ -99,29 +105,49 @@ class Caller:
                     running.grow(*over_threshold(posterior[:, state], self.threshold, begin))
                 running.add(begin, posterior[:, state], bits[:, state])
             watch(begin, posterior)
-        return self._score(contig, sums)
+        return scored(contig, sums, self.filters)
 
     def _path_intervals(self, contig: Contig) -> StateIntervals:
         runs = best_runs(self.model, contig, self.threads)
         everything = StateIntervals(runs.edges[:-1], runs.edges[1:], runs.states.astype(np.int64))
         return everything.taken(np.isin(everything.states, self.states))
 
-    def _score(self, contig: Contig, sums: dict[int, "_Sums"]) -> Calls:
-        parts = [running.intervals() for running in sums.values()]
-        found = StateIntervals(*(np.concatenate(column) for column in zip(*parts, strict=True)))
-        found = found.taken(np.lexsort((found.states, found.starts)))
-        found = filtered(found, self.filters, len(contig), contig.closed)
-        totals = np.array(
-            [
-                sums[int(state)].between(int(start), int(end), len(contig))
-                for start, end, state in zip(*found, strict=True)
-            ]
-        ).reshape(-1, 2)
-        return Calls(found, totals[:, 0] / (found.ends - found.starts), totals[:, 1])
+
+def scored(contig: Contig, sums: Mapping[int, "RunningSums"], filters: Filters) -> Calls:
+    """Return the filtered intervals of a contig with their means and totals.
+
+    Parameters
+    ----------
+    contig
+        The sequence.
+    sums
+        Of each reported state.
+    filters
+        Merging and shortest length.
+    """
+    parts = [running.intervals() for running in sums.values()]
+    found = StateIntervals(*(np.concatenate(column) for column in zip(*parts, strict=True)))
+    found = found.taken(np.lexsort((found.states, found.starts)))
+    found = filtered(found, filters, len(contig), contig.closed)
+    totals = np.array(
+        [
+            sums[int(state)].between(int(start), int(end), len(contig))
+            for start, end, state in zip(*found, strict=True)
+        ]
+    ).reshape(-1, 2)
+    return Calls(found, totals[:, 0] / (found.ends - found.starts), totals[:, 1])
 
 
-class _Sums:
-    """Running sums of one state's posterior and log-odds, kept at the edges of its intervals."""
+class RunningSums:
+    """Running sums of one state's posterior and log-odds, kept at the edges of its intervals.
+
+    Parameters
+    ----------
+    found
+        Intervals of all states; None: they come window by window.
+    state
+        The state.
+    """
 
     def __init__(self, found: StateIntervals | None, state: int) -> None:
         self._state = state
@@ -141,22 +167,24 @@ class _Sums:
             self._ends.pop()
         self._starts += begin
         self._ends += stop
-        self._edges = np.concatenate((starts, ends))
+        self._edges = np.sort(np.concatenate((starts, ends)))
 
-    def add(self, begin: int, posterior: NDArray[np.float64], bits: NDArray[np.float64]) -> None:
+    def add(self, begin: int, posterior: NDArray[np.float64], bits: NDArray[Any]) -> None:
         """Add a window's values, and note the sums at the edges within it."""
         stop = begin + len(posterior)
         edges = self._edges
         if self._known:
             edges = edges[np.searchsorted(edges, begin) : np.searchsorted(edges, stop, "right")]
+        edges = edges[(edges > begin) & (edges < stop)]
+        # Sums from one edge to the next: the positions between need none of their own.
+        pieces = np.concatenate(([0], edges - begin))
         sums = [
-            np.concatenate(([total], total + np.cumsum(values)))
+            total + np.concatenate(([0.0], np.cumsum(np.add.reduceat(values, pieces))))
             for total, values in zip(self._total, (posterior, bits), strict=True)
         ]
-        for edge in edges.tolist():
-            self._at[edge] = (float(sums[0][edge - begin]), float(sums[1][edge - begin]))
+        for edge, *both in zip([begin, *edges.tolist(), stop], *sums, strict=True):
+            self._at[edge] = (float(both[0]), float(both[1]))
         self._total = (float(sums[0][-1]), float(sums[1][-1]))
-        self._at[stop] = self._total
 
     def intervals(self) -> StateIntervals:
         """Return the state's intervals."""

@@ -9,6 +9,7 @@ from hmmseg.errors import TrainingError
 from hmmseg.inference.streams import Corpus
 from hmmseg.model import Model
 from hmmseg.training.baum_welch import Fit, fit
+from hmmseg.training.chains import fit_chain
 from hmmseg.training.constraints import Fixed, Prior
 from hmmseg.training.starts import named_by_gc, perturbed, placed_start
 
@@ -114,6 +115,10 @@ def fit_restarts(
     """
     if not corpus.contigs:
         raise TrainingError("there is no sequence to train on; check the selection of records")
+    if plan.init is None and plan.states == 1 and plan.prior is None:
+        # Counting gives the maximum, so there is nothing to start from and nothing to repeat.
+        counted = fit_chain(corpus.contigs, plan.order, plan.symmetric, plan.pseudocount)
+        return Restarts((counted,), 0, plan.finish(counted.model))
     starts = [plan.start(number, corpus) for number in range(plan.restarts)]
     prior = plan.prior or Prior.even(starts[0], plan.pseudocount)
     fits: Sequence[Fit] = [
