@@ -21,7 +21,19 @@ _NEVER = np.iinfo(np.int64).max
 
 @kernel
 def add_levels(codes, table, backwards, levels):
-    """Add each code's level from ``table`` to ``levels``, in reverse order if ``backwards``."""
+    """Add each code's level.
+
+    Parameters
+    ----------
+    codes : uint16[position] or uint32[position]
+        Codes of consecutive positions.
+    table : int64[code]
+        Level of each code.
+    backwards : bool
+        The last code belongs to the first position.
+    levels : int64[position]
+        Added to.
+    """
     last = codes.size - 1
     if backwards:
         for at in range(codes.size):
@@ -103,7 +115,17 @@ def best_of_windows(sums, first, window, step, length, closed, begin, stop, best
 
 @kernel
 def shares_of(best, threshold, shares):
-    """Fill ``shares`` with 1 / (1 + 2**(threshold - best)), both in levels."""
+    """Fill shares with 1 / (1 + 2**(threshold - best)).
+
+    Parameters
+    ----------
+    best : int64[position]
+        In levels.
+    threshold : int
+        In levels.
+    shares : float64[position]
+        Filled.
+    """
     last = best[0]
     share = 1.0 / (1.0 + exp(float(threshold - last) * (LN2 / 2.0**LEVEL_BITS)))
     for at in range(best.size):

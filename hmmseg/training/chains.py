@@ -130,7 +130,7 @@ def fit_chain(
         strands.append(code_counts(contigs, order, reverse=True))
     words = strands[0][code_offset(order) : missing_code(order)].astype(np.float64)
     model = chain_of_words(words, order, symmetric, pseudocount)
-    if _give_beginnings(words, order, strands, model):
+    while _give_beginnings(words, order, strands, model):
         model = chain_of_words(words, order, symmetric, pseudocount)
     logs = [log_probability_of_counts(model, counts) for counts in strands]
     reached = sum(logs) / len(logs)
