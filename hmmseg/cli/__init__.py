@@ -51,6 +51,7 @@ for _command in (
     chains.classify,
     chains.orders,
     chains.machine,
+    chains.compare,
 ):
     cli.add_command(_command)
 

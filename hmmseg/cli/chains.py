@@ -7,7 +7,7 @@ import click
 from hmmseg.cli import options
 from hmmseg.cli.calls import print_regions
 
-__all__ = ["chains", "classify", "machine", "orders"]
+__all__ = ["chains", "classify", "compare", "machine", "orders"]
 
 # Rooms are imported inside the commands, so that --help need not wait for compilers and plots.
 
@@ -202,3 +202,103 @@ def orders(
     click.echo(job.orders_table([OrderRow(**row) for row in found["orders"]]), nl=False)
     click.echo(f"best by BIC\t{found['best_by_bic']}")
     click.echo(f"best by held-out bits\t{found['best_by_heldout']}")
+
+
+@click.command()
+@options.fasta
+@options.output
+@click.option("--labels", metavar="BED", help="Known regions; without them bits are compared.")
+@_label
+@click.option(
+    "--order",
+    type=click.IntRange(0, 8),
+    default=None,
+    metavar="N",
+    help="Order of both, with labels.  [default: the one that predicts held-out sequence best]",
+)
+@click.option(
+    "--split",
+    type=click.Choice(["contigs", "blocks"]),
+    default=None,
+    help="What is held out.  [default: contigs, or blocks where a contig outweighs a fold]",
+)
+@_folds
+@_block
+@_strands
+@click.option(
+    "--max-order",
+    type=click.IntRange(0, 8),
+    default=8,
+    show_default=True,
+    metavar="N",
+    help="Highest order of chains, without labels.",
+)
+@click.option(
+    "--max-hmm-order",
+    type=click.IntRange(0, 6),
+    default=3,
+    show_default=True,
+    metavar="N",
+    help="Highest order of HMMs.",
+)
+@click.option(
+    "--states",
+    type=click.IntRange(2, 8),
+    default=2,
+    show_default=True,
+    metavar="K",
+    help="States of HMMs, without labels.",
+)
+@click.option(
+    "--restarts",
+    type=click.IntRange(1),
+    default=3,
+    show_default=True,
+    metavar="R",
+    help="Fits of each HMM from different starts, without labels.",
+)
+@click.option(
+    "--decoder",
+    type=click.Choice(["path", "posterior"]),
+    default="path",
+    show_default=True,
+    help="How the HMM calls: best path, or posterior over 0.5.",
+)
+@click.option(
+    "--replicates",
+    type=click.IntRange(10),
+    default=1000,
+    show_default=True,
+    metavar="B",
+    help="Bootstrap replicates.",
+)
+@click.option(
+    "--seed",
+    type=click.IntRange(0),
+    default=1,
+    show_default=True,
+    metavar="S",
+    help="Of all random draws.",
+)
+@options.sequence_options()
+@options.threads
+@options.force
+def compare(
+    sources: Any, output: str, labels: str | None, label: str | None, order: int | None,
+    split: str | None, block: int | None, force: bool, **settings: Any,
+) -> None:  # fmt: skip
+    """Compare an HMM with Markov chains on sequence that neither has seen.
+
+    With labels both are trained and tested in folds, and measured base by base and region by
+    region. Without, their bits per held-out base are compared, their calls, and their accuracy
+    on sequence drawn from the fitted HMM. Ends with a verdict, which may be that the two do not
+    differ, or that the chain is better.
+    """
+    from hmmseg.evidence.comparison import Settings
+    from hmmseg.jobs import compare as job
+    from hmmseg.jobs.comparison_files import printed
+
+    truth = job.Truth(labels, label, order, split, block)
+    found = job.compare(sources, output, truth, Settings(**settings), force)
+    for line in printed(found):
+        click.echo(line)

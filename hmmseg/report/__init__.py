@@ -1,0 +1,3 @@
+"""Results as figures and pages for people to look at."""
+
+__all__: list[str] = []
