@@ -9,7 +9,7 @@ from typing import NoReturn
 import click
 
 from hmmseg import __version__
-from hmmseg.cli import calls, chains, models, whole
+from hmmseg.cli import calls, chains, models, selection, whole
 from hmmseg.errors import HmmsegError
 
 __all__ = ["main"]
@@ -40,6 +40,8 @@ for _command in (
     models.presets,
     models.train,
     models.explain,
+    selection.select,
+    selection.recommend,
     calls.decode,
     models.score,
     models.simulate,

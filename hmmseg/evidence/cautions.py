@@ -7,9 +7,10 @@ import numpy as np
 from hmmseg.evidence.findings import expected_lengths, in_bases, shares
 from hmmseg.kernels.elementary import LN2, log_array
 from hmmseg.model import Model
-from hmmseg.model.contexts import code_offset, missing_code, reverse_complement_words
+from hmmseg.model.contexts import code_offset, missing_code
+from hmmseg.model.dimension import chain_parameters
 
-__all__ = ["bits_apart", "cautions", "free_emission_parameters"]
+__all__ = ["bits_apart", "cautions"]
 
 _FEWEST_VISITS = 3.0
 _SHORTEST = 10.0
@@ -41,7 +42,7 @@ def cautions(model: Model, bases: int | None) -> list[str]:
 def _about_visits(model: Model, bases: int) -> list[str]:
     lines = []
     share, lengths = shares(model), expected_lengths(model)
-    parameters = free_emission_parameters(model)
+    parameters = chain_parameters(model.order, model.symmetric)
     for state, name in enumerate(model.names):
         held = float(share[state]) * bases
         visits = held / float(lengths[state]) if np.isfinite(lengths[state]) else np.inf
@@ -133,15 +134,3 @@ def bits_apart(model: Model, one: int, other: int) -> float:
             return float("inf")
         total += float((model.joint[p][used] * log_array(own[used] / rest[used])).sum())
     return total / (2 * LN2)
-
-
-def free_emission_parameters(model: Model) -> int:
-    """Return the number of free parameters of one state's composition.
-
-    A stranded state has three for each context; a symmetric one has its classes of words and
-    their reverse complements, less one.
-    """
-    if not model.symmetric:
-        return int(3 * 4**model.order)
-    mirror = reverse_complement_words(model.order + 1)
-    return int(np.count_nonzero(np.arange(mirror.size) <= mirror)) - 1

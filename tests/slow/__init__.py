@@ -1,0 +1,1 @@
+"""Statistical checks that take minutes: ``pytest tests/slow --slow``."""
