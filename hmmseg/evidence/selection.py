@@ -28,7 +28,7 @@ from hmmseg.model.dimension import free_parameters
 from hmmseg.sequence.alphabet import MISSING
 from hmmseg.sequence.contigs import Contig
 from hmmseg.training.baum_welch import fit
-from hmmseg.training.maximisation import Prior
+from hmmseg.training.constraints import Prior
 from hmmseg.training.restarts import Plan, fit_restarts
 
 __all__ = [
@@ -222,12 +222,13 @@ def assess(
         problem = f"not assessable: {left:,.0f} bases for {parameters:,} parameters"
     for fold in () if problem else folds:
         rest = Corpus([b.contig for b in blocks if b.fold != fold], plan.order, both, threads)
+        start = plan.start(found.best, rest)
         model = fit(
-            plan.start(found.best, rest),
+            start,
             rest,
             max_iterations=plan.max_iterations,
             tolerance=plan.tolerance,
-            prior=Prior(plan.pseudocount),
+            prior=Prior.even(start, plan.pseudocount),
             threads=threads,
         ).model
         own = [i for i, block in enumerate(blocks) if block.fold == fold]

@@ -19,12 +19,14 @@ from hmmseg.jobs.sources import Sources
 from hmmseg.model import load_model, model_to_dict
 from hmmseg.model.anchoring import anchored
 from hmmseg.model.presets import load_preset
-from hmmseg.model.specification import Specification, load_specification
+from hmmseg.model.specification import Specification
+from hmmseg.model.specification_file import load_specification
 from hmmseg.outputs import check_target, sha256_of, whole_file, write_json
 from hmmseg.progress import Progress, warn
 from hmmseg.provenance import is_current, write_provenance
 from hmmseg.sequence.contigs import Contig
 from hmmseg.training.baum_welch import Fit
+from hmmseg.training.constraints import Prior
 from hmmseg.training.labels import label_names, labels_of_contigs, read_labels
 from hmmseg.training.restarts import Plan, Restarts, fit_restarts
 from hmmseg.training.starts import labelled_start, word_counts
@@ -145,8 +147,7 @@ def train(
     check_target(output, force)
     contigs, sampled = sources.read_sample(train_bases, plan.seed)
     if start.wanted is not None:
-        counts = word_counts(contigs, start.wanted.order)
-        plan = replace(plan, init=anchored(start.wanted, counts))
+        plan = _placed(plan, start.wanted, contigs)
     plan, known = _with_labels(plan, start.labels, sources, contigs)
     order = plan.init.order if plan.init else plan.order
     symmetric = plan.init.symmetric if plan.init else plan.symmetric
@@ -170,6 +171,24 @@ def train(
         write_json(temporary, document)
     write_provenance(output, "train", parameters, plan.seed, inputs, [output])
     return explain(output)
+
+
+def _placed(plan: Plan, wanted: Specification, contigs: list[Contig]) -> Plan:
+    """Return the plan with what a specification says, anchored to the sequence."""
+    model = anchored(wanted, word_counts(contigs, wanted.order))
+    strengths = [
+        np.array([getattr(wish, key) for wish in wanted.states])
+        for key in ("pseudocount", "length_pseudocount")
+    ]
+    prior = None
+    if any(strength.any() for strength in strengths):
+        around = Prior.around(model, *strengths)
+        even = Prior.even(model, plan.pseudocount)
+        words = around.words
+        if words is not None and even.words is not None:
+            words = words + even.words
+        prior = Prior(words, around.steps)
+    return replace(plan, init=model, prior=prior, fixed=(*wanted.fixed, *plan.fixed))
 
 
 def _with_labels(

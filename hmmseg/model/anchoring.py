@@ -50,8 +50,9 @@ def anchored(wanted: Specification, counts: NDArray[np.float64]) -> Model:
         order=wanted.order,
         symmetric=wanted.symmetric,
         start_kind=STATIONARY,
-        transitions=even_switching(np.array([wish.expected_length for wish in wanted.states])),
+        transitions=_transitions(wanted),
         joint=joint,
+        stages=tuple(wish.stages for wish in wanted.states),
     )
 
 
@@ -149,23 +150,42 @@ def tilted(table: NDArray[np.float64], gc: float, order: int) -> NDArray[np.floa
     return table
 
 
-def even_switching(lengths: NDArray[np.float64]) -> NDArray[np.float64]:
-    """Return transitions that leave every state for all others alike.
+def _transitions(wanted: Specification) -> NDArray[np.float64]:
+    """Return transitions with the wanted lengths, among the states that may follow each other."""
+    names = [wish.name for wish in wanted.states]
+    allowed = ~np.eye(len(names), dtype=bool)
+    for one, other in wanted.never:
+        allowed[names.index(one), names.index(other)] = False
+        if wanted.symmetric:
+            allowed[names.index(other), names.index(one)] = False
+    # Of a state with stages, the diagonal is the chance to stay in one of them.
+    lengths = np.array([wish.expected_length / wish.stages for wish in wanted.states])
+    if len(names) > 1 and not allowed.any(axis=1).all():
+        alone = names[int(np.argmin(allowed.any(axis=1)))]
+        raise ModelError(f"never: nothing may follow state {alone}")
+    return even_switching(lengths, allowed)
 
-    All flows between states are then equal, so the chain is reversible.
+
+def even_switching(lengths: NDArray[np.float64], allowed: NDArray[np.bool_]) -> NDArray[np.float64]:
+    """Return transitions that leave every state for all that may follow alike.
+
+    All flows between states are then equal, so the chain is reversible if what may follow is
+    mutual.
 
     Parameters
     ----------
     lengths
         float64[state]: expected lengths of visits, in bases.
+    allowed
+        bool[state, state]: what may follow; False on the diagonal.
 
     Returns
     -------
     float64[state, state]
     """
-    states = len(lengths)
-    if states == 1:
+    if len(lengths) == 1:
         return np.ones((1, 1))
-    transitions = np.repeat((1 / (lengths * (states - 1)))[:, None], states, axis=1)
+    leaving = 1 / (lengths * allowed.sum(axis=1))
+    transitions = np.where(allowed, leaving[:, None], 0.0)
     np.fill_diagonal(transitions, 1 - 1 / lengths)
     return transitions

@@ -3,7 +3,8 @@
 from importlib import resources
 
 from hmmseg.errors import UsageError
-from hmmseg.model.specification import Specification, read_specification
+from hmmseg.model.specification import Specification
+from hmmseg.model.specification_file import read_specification
 
 __all__ = ["PRESETS", "load_preset", "preset_text"]
 

@@ -7,6 +7,7 @@ import numpy as np
 import pytest
 
 from hmmseg.cli import main
+from hmmseg.model import load_model
 from hmmseg.model.presets import PRESETS
 
 SPEC = """
@@ -168,3 +169,29 @@ def test_bad_specification_is_named(here: Path, capsys: pytest.CaptureFixture[st
         err
         == "hmmseg: spec.yaml: states[0].expected_length: missing; give a mean length in bases\n"
     )
+
+
+def test_what_a_specification_fixes_forbids_and_expects(here: Path) -> None:
+    """Fixed and forbidden stay to the bit; strong pseudo-counts hold what weak ones let go."""
+    states = """
+  - {name: plain, reported: false, expected_length: 400, gc_odds: 0.5}
+  - {name: rich, expected_length: 300, stages: 2, gc: 0.6, pseudocount: %s}
+  - {name: other, reported: false, expected_length: 100, gc: 0.5}
+"""
+    found = {}
+    for strength in ("0", "1.0e+9"):
+        text = "fixed: [other.emissions, plain.length]\nnever: [[rich, other]]\nstates:" + states
+        (here / "spec.yaml").write_text(text % strength)
+        train = ["train", "some.fa", "--spec", "spec.yaml", "--output", f"{strength}.json"]
+        assert main(train) == 0
+        model = load_model(here / f"{strength}.json")
+        assert model.training is not None
+        assert model.training["iterations"] > 2
+        assert model.gc[2] == pytest.approx(0.5, abs=1e-12)
+        assert model.expected_lengths[0] == pytest.approx(400, rel=1e-9)
+        assert model.transitions[1, 2] == 0
+        assert model.transitions[2, 1] == 0
+        assert model.stages == (1, 2, 1)
+        found[strength] = float(model.gc[1])
+    assert abs(found["0"] - 0.65) < 0.02
+    assert found["1.0e+9"] == pytest.approx(0.6, abs=1e-4)

@@ -5,10 +5,10 @@ from collections import Counter
 import numpy as np
 import pytest
 
-from hmmseg.errors import UsageError
+from hmmseg.errors import ModelError, UsageError
 from hmmseg.model.anchoring import anchored, gc_of_words, tilted
 from hmmseg.model.presets import PRESETS, load_preset, preset_text
-from hmmseg.model.specification import read_specification
+from hmmseg.model.specification_file import read_specification
 from tests.published.test_cpg_chains import ISLAND, OCEAN
 
 
@@ -114,3 +114,32 @@ def test_independent_keeps_bases_and_drops_words() -> None:
     bases = counts.reshape(-1, 4).sum(axis=0) / counts.sum()
     expected = bases[:, None, None] * bases[None, :, None] * bases[None, None, :]
     assert model.joint[1] == pytest.approx(expected.reshape(-1), rel=0.05, abs=1e-3)
+
+
+THREE = """
+states:
+  - {name: a, expected_length: 1000}
+  - {name: b, expected_length: 400, stages: 4, gc: 0.6}
+  - {name: c, expected_length: 50, gc: 0.3}
+"""
+
+
+def test_stages_keep_the_expected_length() -> None:
+    model = anchored(read_specification(THREE, "x", "x"), words_of(genome(0.4, 5000), 1))
+    assert model.stages == (1, 4, 1)
+    assert model.expected_lengths == pytest.approx([1000, 400, 50])
+    assert model.transitions[1, 1] == pytest.approx(1 - 4 / 400)
+
+
+@pytest.mark.parametrize("symmetric", [True, False])
+def test_states_that_never_follow(symmetric: bool) -> None:
+    text = f"symmetric: {str(symmetric).lower()}\nnever: [[a, c]]\n{THREE}"
+    model = anchored(read_specification(text, "x", "x"), words_of(genome(0.4, 5000), 1))
+    assert model.transitions[0, 2] == 0
+    assert (model.transitions[2, 0] == 0) == symmetric
+    assert model.expected_lengths == pytest.approx([1000, 400, 50])
+    with pytest.raises(ModelError, match="nothing may follow state a"):
+        anchored(
+            read_specification(f"never: [[a, b], [a, c]]\n{THREE}", "x", "x"),
+            words_of(genome(0.4, 5000), 1),
+        )

@@ -5,7 +5,7 @@ from pathlib import Path
 import pytest
 
 from hmmseg.errors import ModelError
-from hmmseg.model.specification import load_specification, read_specification
+from hmmseg.model.specification_file import load_specification, read_specification
 
 GOOD = """
 order: 1
@@ -52,6 +52,15 @@ def test_what_is_said_is_kept_and_the_rest_has_defaults() -> None:
             "conditional: [[0.5, 0.5, 0.5, 0], [1, 0, 0, 0], [1, 0, 0, 0], [1, 0, 0, 0]]",
             r"states\[1\].conditional\[0\]",
         ),
+        ("gc_odds: 2", "stages: 0", r"states\[1\].stages:"),
+        ("gc_odds: 2", "stages: 900", r"states\[1\].stages:"),
+        ("expected_length: 5000", "expected_length: 3, stages: 4", "expected_length: 3"),
+        ("gc_odds: 2", "length_pseudocount: -1", r"states\[1\].length_pseudocount:"),
+        ("pseudocount: 16", "fixed: plain.length", "fixed: must be a list"),
+        ("pseudocount: 16", "fixed: [plain.gc]", "fixed: 'plain.gc' is no parameter"),
+        ("pseudocount: 16", "never: [[plain, poor]]", r"never\[0\]: 'poor' is no state"),
+        ("pseudocount: 16", "never: [[plain, plain]]", r"never\[0\]: must be two"),
+        ("pseudocount: 16", "never: 3", "never: must be a list"),
         ("states:", "states: []\nx:", "unknown key"),
         ("order: 1", "order: [1", "line"),
     ],

@@ -21,7 +21,7 @@ from hmmseg.sequence.contigs import Contig, split
 from hmmseg.sequence.intervals import BedLine, read_bed
 from hmmseg.sequence.reading import read_records
 from hmmseg.training.baum_welch import fit
-from hmmseg.training.maximisation import Prior
+from hmmseg.training.constraints import Prior
 from hmmseg.training.starts import word_counts
 
 ROOT = Path(__file__).resolve().parents[2]
@@ -37,7 +37,7 @@ def fitted(name: str, contigs: list[Contig]) -> Model:
     wanted = load_preset(name)
     start = anchored(wanted, word_counts(contigs, wanted.order))
     corpus = Corpus(contigs, wanted.order, start.both_strands)
-    found = fit(start, corpus, prior=Prior(wanted.pseudocount))
+    found = fit(start, corpus, prior=Prior.even(start, wanted.pseudocount))
     assert found.converged
     return found.model
 
