@@ -51,6 +51,9 @@ SHORTEST_BLOCK = 2_500
 _PIECES = 40
 _LARGEST_SHARE = 0.1
 _BASES_PER_PARAMETER = 10
+_NO_DIFFERENCE = 1e-5
+"""Bits per base, ten bits in a megabase: models nearer than that are equally good. Fits that
+differ in nothing but where they stopped differ by about a third of it."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -116,7 +119,7 @@ class Comparison:
     standard_error : float
         Of ``lost``, from paired differences block by block.
     recommended : bool
-        The smallest model that loses no more than one standard error.
+        The smallest model that loses no more than one standard error, or next to nothing.
     """
 
     cell: Cell
@@ -275,7 +278,7 @@ def compare(cells: Sequence[Cell], bases: Sequence[int]) -> list[Comparison]:
         mean = float(apart.sum() / total)
         lost.append(mean)
         errors.append(_standard_error(apart - mean * weights, float(total)))
-    close = [i for i in range(len(assessed)) if lost[i] <= errors[i]]
+    close = [i for i in range(len(assessed)) if lost[i] <= max(errors[i], _NO_DIFFERENCE)]
     chosen = min(close, key=lambda i: (assessed[i].parameters, lost[i]))
     return [
         Comparison(cell, float(bits[i].sum() / total), lost[i], errors[i], i == chosen)

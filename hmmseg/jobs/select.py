@@ -227,9 +227,9 @@ def _recommendation(compared: Sequence[Comparison], cells: Sequence[Cell]) -> di
     because = f"the best of {len(compared)} models by held-out bits per base"
     if chosen is not best:
         because = (
-            f"the smallest model within one standard error ({chosen.standard_error:.2g}) of the "
-            f"best, {best.cell.states} states of order {best.cell.order}; it loses "
-            f"{chosen.lost:.2g} bits per base"
+            f"the smallest model that is as good as the best, {best.cell.states} states of order "
+            f"{best.cell.order}; it loses {chosen.lost:.2g} bits per base, standard error "
+            f"{chosen.standard_error:.2g}"
         )
     tried = {cell.states for cell in cells}, {cell.order for cell in cells}
     edges = [

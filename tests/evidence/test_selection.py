@@ -88,6 +88,15 @@ def test_smallest_within_one_standard_error_is_recommended() -> None:
     assert [c.recommended for c in found] == [False, True, False]
 
 
+def test_next_to_nothing_is_no_difference() -> None:
+    """Ten bits in a megabase, however sure: eight blocks of 1 Mb, each of which loses 8 bits."""
+    best, other = cell(3, 9, [2e6] * 8), cell(2, 4, [2e6 + 8] * 8)
+    worse = cell(1, 1, [2e6 + 12] * 8)
+    found = compare([worse, other, best], [10**6] * 8)
+    assert found[1].standard_error == pytest.approx(0, abs=1e-12)
+    assert [c.recommended for c in found] == [False, True, False]
+
+
 def test_blocks_of_unequal_size_count_by_their_bases() -> None:
     best, other = cell(2, 9, [200, 20]), cell(1, 3, [220, 22])
     found = compare([best, other], [100, 10])

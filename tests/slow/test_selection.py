@@ -57,7 +57,7 @@ MODELS = {
     "two levels": (levels([0.35, 0.55], [2000, 1000]), 2, 0, True),
     "three levels": (levels([0.25, 0.42, 0.60], [800, 2000, 1000]), 3, 0, True),
     "islands": (islands(), 2, 1, True),
-    "hardly different": (levels([0.42, 0.44], [600, 600]), 2, 0, False),
+    "hardly different": (levels([0.40, 0.47], [600, 600]), 2, 0, False),
 }
 
 
