@@ -11,16 +11,16 @@ from hmmseg.inference.passes import BlockEnds, find_ends
 from hmmseg.inference.streams import Corpus, Stream, in_threads
 from hmmseg.inference.tables import Tables, preferred_word, tables_for
 from hmmseg.kernels.blocks import block_kernels
-from hmmseg.kernels.matrices import unfold_counts
+from hmmseg.kernels.matrices import unfold_kernel
 from hmmseg.model import Model
 from hmmseg.model.machine import Machine
 
 __all__ = ["Counts", "expect", "log_likelihoods"]
 
-_MOST_GROUPS = 32
+_MOST_GROUPS = 1024
 _FEWEST_GROUPS = 4
 _GROUP_BYTES = 1 << 26
-_GROUP_JOBS = 64
+_GROUP_JOBS = 128
 
 
 @dataclass(frozen=True, eq=False)
@@ -177,7 +177,7 @@ def _expect_strand(
         np.zeros_like(machine.transitions),
         np.zeros_like(machine.emissions),
     )
-    unfold_counts(
+    unfold_kernel(machine.states)(
         weights, tables.matrices, machine.order, tables.word, counts.transitions, counts.emissions
     )
     for contig in np.flatnonzero(~ends.lost & ~stream.closed):
