@@ -215,15 +215,37 @@ def presets(name: str | None) -> None:
 @click.command()
 @options.fasta
 @options.model
+@click.option("--per-base", metavar="FILE.bw", help="Write the bits of every base as bigWig.")
+@click.option("--path", metavar="BED", help="Tell the probability of this path of states, too.")
+@click.option(
+    "--chain-start",
+    type=click.Choice(["counted", "stationary", "free"]),
+    default=None,
+    help="Of a chain: whether a contig's first bases count by the model's words, by the "
+    "stationary distribution, or not at all.",
+)
 @options.sequence_options()
 @options.threads
-def score(sources: Any, model: str, threads: int) -> None:
-    """Print the log-likelihood (nats) and bits per base of each record."""
+@options.force
+def score(
+    sources: Any, model: str, per_base: str | None, path: str | None, chain_start: str | None,
+    threads: int, force: bool,
+) -> None:  # fmt: skip
+    """Print the log-likelihood (nats) and bits per base of each record.
+
+    Bits of a base are -log2 P(base | all bases before it); under a symmetric model of order 1
+    or more the mean of both strands, each read in its own direction.
+
+    The columns of --path are log P(sequence, path), its parts, and log P(path | sequence).
+    Positions in no interval are in the background state.
+    """
     from hmmseg.jobs import score as job
 
-    click.echo("record\tbases\tlog_likelihood\tbits_per_base")
-    for row in job.score(sources, model, threads):
-        click.echo(f"{row.record}\t{row.bases}\t{row.log_likelihood!r}\t{row.bits_per_base!r}")
+    extras = job.Extras(chain_start, path, per_base, force)
+    click.echo("\t".join(["record", "bases", "log_likelihood", "bits_per_base", *extras.columns]))
+    for row in job.score(sources, model, threads, extras):
+        numbers = (row.log_likelihood, row.bits_per_base, *row.more)
+        click.echo("\t".join([row.record, str(row.bases), *map(repr, numbers)]))
 
 
 @click.command()

@@ -2,7 +2,7 @@
 
 import time
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
@@ -129,7 +129,6 @@ def trained_pair(
     return WindowCaller(pair, tuned.windows, tuned.threshold, threads=threads), tuned
 
 
-@dataclass(eq=False)
 class Rivals:
     """Both ways of calling, trained and tested in folds on labelled pieces.
 
@@ -149,14 +148,22 @@ class Rivals:
         Of the HMM.
     """
 
-    pieces: Sequence[Piece]
-    folds: NDArray[np.int64]
-    order: int
-    symmetric: bool
-    threads: int = 1
-    decoder: str = PATH
-    tuned: list[Tuned] = field(default_factory=list, init=False)
-    seconds: dict[str, float] = field(default_factory=dict, init=False)
+    def __init__(
+        self,
+        pieces: Sequence[Piece],
+        folds: NDArray[np.int64],
+        order: int,
+        symmetric: bool,
+        threads: int = 1,
+        decoder: str = PATH,
+    ) -> None:
+        self.pieces, self.folds = pieces, folds
+        self.order, self.symmetric = order, symmetric
+        self.threads, self.decoder = threads, decoder
+        self.tuned: list[Tuned] = []
+        """Window and threshold of the chains in each turn."""
+        self.seconds: dict[str, float] = {}
+        """Time that each way of calling took."""
 
     def run(self, told: Callable[[int], None] = lambda _: None) -> dict[str, Tally]:
         """Train on all folds but one and call that one, in turn.

@@ -7,7 +7,7 @@ from typing import Any
 from hmmseg.errors import ModelError
 from hmmseg.kernels.elementary import LN2, log_array
 from hmmseg.model import load_model
-from hmmseg.model.chain import Machine, machine_of
+from hmmseg.model.chain import ChainMachine, chain_machine
 from hmmseg.outputs import check_target, whole_folder, write_json
 from hmmseg.provenance import write_provenance
 
@@ -39,7 +39,7 @@ def machine(model_path: str, output: str, force: bool) -> dict[str, Any]:
     check_target(output, force)
     model = load_model(model_path)
     try:
-        chain = machine_of(model)
+        chain = chain_machine(model)
         document = _description(chain)
     except ModelError as error:
         raise ModelError(f"{model_path}: {error}") from None
@@ -54,7 +54,7 @@ def machine(model_path: str, output: str, force: bool) -> dict[str, Any]:
     return document
 
 
-def _description(chain: Machine) -> dict[str, Any]:
+def _description(chain: ChainMachine) -> dict[str, Any]:
     rows = chain.transitions()
     logs = log_array(rows.values)
     weights = chain.stationary.repeat(rows.offsets[1:] - rows.offsets[:-1])
@@ -71,13 +71,13 @@ def _description(chain: Machine) -> dict[str, Any]:
     }
 
 
-def _shares(chain: Machine) -> Iterator[str]:
+def _shares(chain: ChainMachine) -> Iterator[str]:
     yield "history\tprobability\n"
     for history, share in enumerate(chain.stationary.tolist()):
         yield f"{chain.word(history) or '-'}\t{share!r}\n"
 
 
-def _steps(chain: Machine) -> Iterator[str]:
+def _steps(chain: ChainMachine) -> Iterator[str]:
     yield "history\tbase\tnext_history\tprobability\n"
     rows = chain.transitions()
     counts = rows.offsets[1:] - rows.offsets[:-1]

@@ -20,7 +20,7 @@ from hmmseg.model.contexts import code_offset, missing_code
 from hmmseg.model.parameters import Model
 from hmmseg.model.stationary import stationary_distribution
 
-__all__ = ["Machine", "SparseRows", "machine_of", "with_stationary_start"]
+__all__ = ["ChainMachine", "SparseRows", "chain_machine", "with_stationary_start"]
 
 _DENSE_HISTORIES = 256
 """So many histories are solved by elimination; more of them step by step."""
@@ -52,7 +52,7 @@ class SparseRows:
 
 
 @dataclass(frozen=True, eq=False)
-class Machine:
+class ChainMachine:
     """A chain as a machine.
 
     Parameters
@@ -175,7 +175,7 @@ class Machine:
         return "".join("ACGT"[(history >> (2 * place)) & 3] for place in places)
 
 
-def machine_of(model: Model) -> Machine:
+def chain_machine(model: Model) -> ChainMachine:
     """Return a chain as a machine.
 
     Parameters
@@ -197,7 +197,7 @@ def machine_of(model: Model) -> Machine:
     rows = model.emissions[0, code_offset(order) : missing_code(order)].reshape(-1, 4)
     counted = model.joint[0].reshape(-1, 4)
     guess = (counted[:, 0] + counted[:, 1]) + (counted[:, 2] + counted[:, 3])
-    return Machine(order, rows, guess)
+    return ChainMachine(order, rows, guess)
 
 
 def with_stationary_start(model: Model) -> Model:
@@ -211,7 +211,7 @@ def with_stationary_start(model: Model) -> Model:
     model
         A model with one state.
     """
-    machine = machine_of(model)
+    machine = chain_machine(model)
     joint = machine.stationary[:, None] * machine.table
     return Model(
         names=model.names,

@@ -15,7 +15,7 @@ from hmmseg.tracks.bigwig import LEVELS, PosteriorTrack, rounded_runs
 
 __all__ = ["SpooledTrack"]
 
-_RUN = np.dtype([("start", "<i8"), ("end", "<i8"), ("level", "<u2")])
+_RUN = np.dtype([("start", "<i8"), ("end", "<i8"), ("level", "<u4")])
 _AT_ONCE = 1 << 20
 
 

@@ -7,7 +7,7 @@ import pytest
 from numpy.typing import NDArray
 
 from hmmseg.errors import ModelError
-from hmmseg.model.chain import Machine, machine_of, with_stationary_start
+from hmmseg.model.chain import ChainMachine, chain_machine, with_stationary_start
 from hmmseg.model.dimension import chain_parameters, free_parameters
 from hmmseg.model.parameters import Model
 from hmmseg.training.chains import chain_of_words, fit_chain
@@ -29,7 +29,7 @@ def frequencies(text: str, size: int, closed: bool) -> dict[str, float]:
     return {word: count / len(words) for word, count in Counter(words).items()}
 
 
-def differences(machine: Machine, wanted: dict[str, float]) -> NDArray[np.float64]:
+def differences(machine: ChainMachine, wanted: dict[str, float]) -> NDArray[np.float64]:
     shares = [wanted.get(machine.word(h), 0.0) for h in range(machine.histories)]
     return np.abs(machine.stationary - shares)
 
@@ -39,14 +39,14 @@ def differences(machine: Machine, wanted: dict[str, float]) -> NDArray[np.float6
 def test_circle_has_its_words_frequencies(order: int, length: int) -> None:
     """Every word of a circle ends as often as it begins, so its frequencies are stationary."""
     model, text = counted(order, length, closed=True)
-    assert differences(machine_of(model), frequencies(text, order, True)).max() < 1e-12
+    assert differences(chain_machine(model), frequencies(text, order, True)).max() < 1e-12
 
 
 @pytest.mark.parametrize("order", range(1, 9))
 @pytest.mark.parametrize("length", [5_000, 50_000])
 def test_line_has_nearly_its_words_frequencies(order: int, length: int) -> None:
     model, text = counted(order, length, closed=False)
-    largest = differences(machine_of(model), frequencies(text, order, False)).max()
+    largest = differences(chain_machine(model), frequencies(text, order, False)).max()
     assert largest < 2 * order / length
 
 
@@ -55,7 +55,7 @@ def test_stationary_distribution_stays(order: int) -> None:
     """Against the linear equations, solved by another method."""
     rng = np.random.default_rng(order)
     model = chain_of_words(rng.random(4 ** (order + 1)) ** 3, order, symmetric=False)
-    machine = machine_of(model)
+    machine = chain_machine(model)
     dense = np.zeros((machine.histories, machine.histories))
     rows = machine.transitions()
     for history in range(machine.histories):
@@ -70,7 +70,7 @@ def test_stationary_distribution_stays(order: int) -> None:
 def test_transitions_are_sparse_and_shift_the_history() -> None:
     words = np.zeros(64)
     words[[0b000001, 0b000111, 0b011110, 0b111001, 0b100100]] = [2, 1, 1, 1, 1]
-    machine = machine_of(chain_of_words(words, 2, symmetric=False))
+    machine = chain_machine(chain_of_words(words, 2, symmetric=False))
     rows = machine.transitions()
     at = slice(rows.offsets[0], rows.offsets[1])
     # AA was followed by C twice and never by another base; the next history is AC.
@@ -85,13 +85,13 @@ def test_two_halves_have_no_single_stationary_distribution() -> None:
     words[[0, 15]] = 1  # A after A, T after T
     words[[5, 10]] = 1
     with pytest.raises(ModelError, match="never both recur"):
-        _ = machine_of(chain_of_words(words, 1, symmetric=False)).stationary
+        _ = chain_machine(chain_of_words(words, 1, symmetric=False)).stationary
 
 
 def test_a_machine_that_cycles_is_settled() -> None:
     """ACGTACGT... at order 5: four of 1,024 histories, visited in turn."""
     bases = np.tile(np.arange(4, dtype=np.uint8), 50)
-    machine = machine_of(fit_chain([contig_of(Piece(bases, True))], 5, False).model)
+    machine = chain_machine(fit_chain([contig_of(Piece(bases, True))], 5, False).model)
     used = machine.stationary[machine.stationary > 1e-9]
     assert used == pytest.approx([0.25] * 4, abs=1e-12)
 
@@ -99,7 +99,7 @@ def test_a_machine_that_cycles_is_settled() -> None:
 def test_stationary_start_keeps_the_conditionals() -> None:
     model, _ = counted(2, 300, closed=False)
     started = with_stationary_start(model)
-    machine, other = machine_of(model), machine_of(started)
+    machine, other = chain_machine(model), chain_machine(started)
     visited = machine.stationary > 0
     assert other.table[visited] == pytest.approx(machine.table[visited], abs=1e-12)
     words = started.joint.reshape(4, 4, 4)
@@ -110,7 +110,7 @@ def test_stationary_start_keeps_the_conditionals() -> None:
 def test_a_model_of_two_states_is_no_chain() -> None:
     model = model_of(random_parameters(np.random.default_rng(1), 2, 1))
     with pytest.raises(ModelError, match="2 states"):
-        machine_of(model)
+        chain_machine(model)
 
 
 @pytest.mark.parametrize("order", range(4))
