@@ -101,11 +101,12 @@ def labelled_chains(
         Everything is labelled, or nothing.
     """
     within, outside = labelled_words(contigs, truth, order)
+    unit = "known base" if order == 0 else f"stretch of {order + 1} known bases"
     for words, what in ((within, "inside"), (outside, "outside of")):
         if not words.any():
             raise LabelError(
-                f"the labels leave one class only: no {order + 1} known bases in a row stand "
-                f"{what} the labelled regions; two chains need both, check the labels"
+                f"the labels leave one class only: no {unit} stands {what} the labelled regions; "
+                "two chains need both, check the labels"
             )
     return (
         chain_of_words(within, order, symmetric, pseudocount, REGION, True),

@@ -84,7 +84,7 @@ def test_the_same_bytes_again(here: Path) -> None:
     ("arguments", "code", "message"),
     [
         ("--order 1", 2, "--order and --label belong to --labels"),
-        ("--labels all.bed", 1, "all.bed: with fold 1 held out, the labels leave one class only"),
+        ("--labels all.bed", 1, "all.bed: the labels leave one class only"),
         ("--labels truth.bed --split contigs --folds 7", 1, "6 contigs cannot make 7 folds"),
         ("--labels truth.bed --label lake", 1, "no interval named lake"),
         ("--labels missing.bed", 1, "missing.bed"),
