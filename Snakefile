@@ -14,9 +14,11 @@ rule all:
         summary=f"{RESULTS}/summary.tsv",
         models=expand(f"{RESULTS}/{{assembly}}/model.json", assembly=ASSEMBLIES),
         surveys=expand(f"{RESULTS}/{{assembly}}/survey", assembly=ASSEMBLIES),
+        comparisons=expand(f"{RESULTS}/{{assembly}}/comparison", assembly=COMPARED),
 
 
 include: "workflow/rules/survey.smk"
 include: "workflow/rules/train.smk"
 include: "workflow/rules/decode.smk"
 include: "workflow/rules/summary.smk"
+include: "workflow/rules/compare.smk"

@@ -12,7 +12,7 @@ from snakemake.utils import validate
 shell.prefix(f"PATH={shlex.quote(str(Path(sys.executable).parent))}:$PATH; ")
 
 # Columns of the sample sheet that name a file.
-FILES = ("fasta", "records", "exclude", "init")
+FILES = ("fasta", "records", "exclude", "init", "labels")
 # Columns whose cells are words even if they look like numbers.
 WORDS = ("assembly", "circular", *FILES)
 # Ways to say where training starts, and the settings that each of them brings along.
@@ -131,6 +131,8 @@ def check_row(row, cells):
         if column in cells and not Path(cells[column]).is_file():
             raise sheet_error(row, column, f"there is no file {cells[column]}")
     settings = merged(cells)
+    if "labels" in cells and settings["compare"] == "skip":
+        raise sheet_error(row, "labels", "only compare reads them; set compare to run")
     starts = [key for key in STARTS if settings[key] is not None]
     if len(starts) > 1:
         raise sheet_error(row, "init", "does not go with a preset; give one of the two")
@@ -180,6 +182,7 @@ COLUMNS = ("assembly", *FILES, "circular", *config["defaults"])
 SETTINGS = read_sheet()
 ASSEMBLIES = list(SETTINGS)
 RESULTS = config["output"].rstrip("/")
+COMPARED = [name for name in ASSEMBLIES if SETTINGS[name]["compare"] == "run"]
 
 
 wildcard_constraints:
@@ -211,6 +214,11 @@ def exclude_of(wildcards):
 def init_of(wildcards):
     """Model to start from."""
     return files(wildcards, "init")
+
+
+def labels_of(wildcards):
+    """Known regions."""
+    return files(wildcards, "labels")
 
 
 def options(wildcards, *keys):
@@ -272,6 +280,16 @@ def decode_options(wildcards):
         "merge_gap",
     )
     return f"{options(wildcards, *keys)} {circles(wildcards)}".rstrip()
+
+
+def compare_options(wildcards):
+    """How the model is compared with chains."""
+    settings = SETTINGS[wildcards.assembly]
+    keys = ["labels", "seed", "decoder"]
+    if settings["states"] > 1 and all(settings[key] is None for key in STARTS):
+        keys.append("states")
+    strands = f"--{settings['strands']}"
+    return f"{strands} {options(wildcards, *keys)} {survey_options(wildcards)}"
 
 
 def parts_of(wildcards):
