@@ -106,6 +106,17 @@ def test_batches_gathered_equal_whole(here: Path) -> None:
     assert whole == gathered
 
 
+def test_batch_is_never_nothing_but_gaps(here: Path) -> None:
+    """Such a batch would be refused, as an assembly of gaps is."""
+    gaps = "N" * 100
+    sequence = "ACGTTGCA" * 500
+    names = {"gaps_1": gaps, "one": sequence, "two": sequence, "gaps_2": gaps}
+    (here / "mixed.fa").write_text("".join(f">{name}\n{text}\n" for name, text in names.items()))
+    assert main(["batches", "mixed.fa", "--batch-bases", "10", "--output", "batches"]) == 0
+    lists = [p.read_text().split() for p in sorted((here / "batches").glob("batch-*.txt"))]
+    assert lists == [["gaps_1", "one"], ["two", "gaps_2"]]
+
+
 def test_simulated_truth_is_recovered(here: Path) -> None:
     simulate = ["simulate", "--model", "model.json", "--records", "2", "--length", "30000"]
     assert main([*simulate, "--seed", "3", "--output", "drawn"]) == 0

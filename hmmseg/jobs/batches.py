@@ -1,8 +1,11 @@
 """The command ``batches``: share records out to jobs of about equal size."""
 
+import numpy as np
+
 from hmmseg.jobs.sources import Sources
 from hmmseg.outputs import check_target, whole_folder
 from hmmseg.provenance import write_provenance
+from hmmseg.sequence.alphabet import MISSING
 
 __all__ = ["batches"]
 
@@ -20,8 +23,8 @@ def batches(sources: Sources, output: str, batch_bases: int, force: bool) -> int
     output
         The folder to write.
     batch_bases
-        A batch is full when another record would take it beyond this many bases; a longer
-        record is a batch of its own.
+        A batch is full when another record would take it beyond this many known bases; a longer
+        record is a batch of its own. A record without known bases joins the batch before it.
     force
         Replace an earlier result.
 
@@ -34,14 +37,16 @@ def batches(sources: Sources, output: str, batch_bases: int, force: bool) -> int
     filled: list[list[str]] = []
     sizes: list[int] = []
     for record in sources.read():
-        if not filled or sizes[-1] + len(record) > batch_bases:
+        # Known bases count: a batch of nothing but gaps would be refused as an assembly is.
+        known = int(np.count_nonzero(record.bases != MISSING))
+        if not filled or (sizes[-1] and known and sizes[-1] + known > batch_bases):
             filled.append([])
             sizes.append(0)
         filled[-1].append(record.name)
-        sizes[-1] += len(record)
+        sizes[-1] += known
     with whole_folder(output, force=force) as folder:
         written = [folder / "batches.tsv"]
-        rows = ["batch\trecords\tbases\n"]
+        rows = ["batch\trecords\tknown_bases\n"]
         for number, (names, bases) in enumerate(zip(filled, sizes, strict=True), start=1):
             path = folder / f"batch-{number:04d}.txt"
             path.write_text("".join(f"{name}\n" for name in names), encoding="utf-8")

@@ -139,7 +139,7 @@ def test_rubbish_behind_gzip(tmp_path: Path) -> None:
     assert "damaged" in failure(path)
 
 
-@pytest.mark.parametrize("content", [b"", gzip.compress(GOOD)[:-9]])
+@pytest.mark.parametrize("content", [b"", gzip.compress(GOOD)[:-9]], ids=["empty", "cut"])
 def test_standard_input_is_called_so(monkeypatch: pytest.MonkeyPatch, content: bytes) -> None:
     monkeypatch.setattr(sys, "stdin", SimpleNamespace(buffer=io.BytesIO(content)))
     with pytest.raises(SequenceError, match=r"^standard input: "):

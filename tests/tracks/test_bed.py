@@ -229,6 +229,7 @@ class TestReadBed:
             (gzip.compress(b"chr1\t0\t5\n")[:2] + b"xx", "broken gzip file"),
             (bytes(range(128, 256)), "not a text file"),
         ],
+        ids=["cut", "damaged", "binary"],
     )
     def test_of_broken_files(self, tmp_path: Path, content: bytes, message: str) -> None:
         with pytest.raises(LabelError, match=message):
