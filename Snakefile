@@ -15,9 +15,11 @@ rule all:
         models=expand(f"{RESULTS}/{{assembly}}/model.json", assembly=ASSEMBLIES),
         surveys=expand(f"{RESULTS}/{{assembly}}/survey", assembly=ASSEMBLIES),
         comparisons=expand(f"{RESULTS}/{{assembly}}/comparison", assembly=COMPARED),
+        selections=selections(),
 
 
 include: "workflow/rules/survey.smk"
+include: "workflow/rules/select.smk"
 include: "workflow/rules/train.smk"
 include: "workflow/rules/decode.smk"
 include: "workflow/rules/summary.smk"

@@ -1,6 +1,7 @@
 """What a second run does, and what it does after a change."""
 
 import os
+import shutil
 from collections.abc import Iterator
 from contextlib import contextmanager
 from pathlib import Path
@@ -56,3 +57,27 @@ def test_a_changed_setting_of_the_calls_does_not_train_again(finished: Project) 
 
 def test_batches_leave_nothing_behind(finished: Project) -> None:
     assert not list(finished.folder.glob("results/*/parts"))
+
+
+def test_a_grid_is_selected_from_one_job_a_model(finished: Project) -> None:
+    config = finished.folder / "config.yaml"
+    before = config.read_text()
+    config.write_text(before + "select_states: [1, 2]\nselect_orders: [0, 1]\n")
+    try:
+        planned = finished.planned()
+        assert {rule for rule, _ in planned} == {"select", "recommend"}
+        assert planned.count(("select", "lambda")) == 4
+        assert planned.count(("recommend", "lambda")) == 1
+        finished.snakemake("results/lambda/selection")
+        table = (finished.folder / "results/lambda/selection/selection.tsv").read_text()
+        assert [line.split("\t")[:2] for line in table.splitlines()[1:]] == [
+            ["1", "0"],
+            ["1", "1"],
+            ["2", "0"],
+            ["2", "1"],
+        ]
+        finished.hmmseg("verify", "results/lambda/selection")
+        assert not list(finished.folder.glob("results/lambda/grid/*"))
+    finally:
+        config.write_text(before)
+        shutil.rmtree(finished.folder / "results/lambda/selection", ignore_errors=True)

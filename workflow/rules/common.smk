@@ -188,6 +188,8 @@ COMPARED = [name for name in ASSEMBLIES if SETTINGS[name]["compare"] == "run"]
 wildcard_constraints:
     assembly=r"[A-Za-z0-9][A-Za-z0-9._-]*",
     batch=r"batch-\d+",
+    states=r"[1-8]",
+    order=r"[0-8]",
 
 
 def files(wildcards, column):
@@ -241,6 +243,29 @@ def survey_options(wildcards):
     """Which records a survey counts."""
     chosen = options(wildcards, "records", "min_record", "exclude", "gap_min")
     return f"{chosen} {circles(wildcards)}".rstrip()
+
+
+def select_options(wildcards):
+    """Which records to select a model on, and how."""
+    strands = SETTINGS[wildcards.assembly]["strands"]
+    chosen = f"{options(wildcards, 'seed', 'soft_mask')} {survey_options(wildcards)}"
+    return f"--{strands} {chosen}".rstrip()
+
+
+def grid_of(wildcards):
+    """A folder for each model of the grid."""
+    return expand(
+        f"{RESULTS}/{wildcards.assembly}/grid/{{states}}-{{order}}",
+        states=config["select_states"],
+        order=config["select_orders"],
+    )
+
+
+def selections():
+    """Folder of each assembly's selection; none if no grid is given."""
+    if not config["select_states"] or not config["select_orders"]:
+        return []
+    return [f"{RESULTS}/{assembly}/selection" for assembly in ASSEMBLIES]
 
 
 def train_options(wildcards):
