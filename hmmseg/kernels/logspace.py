@@ -95,7 +95,13 @@ def log_likelihood(transitions, emissions, codes, start, end):
 
 @kernel
 def first_impossible(transitions, emissions, codes, start):
-    """Return the first position at which no path is left; the number of codes if there is one."""
+    """Return the first position at which no path is left; the number of codes if there is one.
+
+    Parameters
+    ----------
+    transitions, emissions, codes, start
+        As for :func:`log_likelihood`.
+    """
     log_t, log_e = _tables(transitions, emissions)
     vector = start.copy()
     following = np.empty_like(vector)

@@ -52,7 +52,17 @@ def fill_token_matrices(transitions, emissions, order, word, matrices):
 
 @kernel
 def code_in_word(number, order, word, at):
-    """Return the (order + 1)-mer that ends at one base of a word with its context."""
+    """Return the (order + 1)-mer that ends at one base of a word with its context.
+
+    Parameters
+    ----------
+    number : int
+        The word behind its context, as a number in base four.
+    order, word : int
+        Bases of the context, and of the word.
+    at : int
+        The base, counted from the word's first.
+    """
     return (number >> (2 * (word - 1 - at))) & (words_of(order + 1) - 1)
 
 

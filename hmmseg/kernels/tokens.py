@@ -118,7 +118,13 @@ def _word_number(bases, word, position):
 
 @kernel
 def token_count(bases, order, word, closed, start, stop):
-    """Return how many tokens positions ``start`` to ``stop`` make."""
+    """Return how many tokens positions ``start`` to ``stop`` make.
+
+    Parameters
+    ----------
+    bases, order, word, closed, start, stop
+        As for :func:`tokenise`.
+    """
     context, known = _context_before(bases, order, closed, start)
     seen = 0
     for position in range(start, stop):

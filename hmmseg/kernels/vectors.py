@@ -88,7 +88,21 @@ def product(vector, matrices, token):
 
 
 def add_outer(weights, token, rows, at, vector):
-    """Add to the token's matrix of weights: row ``at``, a column, times a vector, a row."""
+    """Add a column times a row to a matrix.
+
+    Parameters
+    ----------
+    weights : float64[token, state, state]
+        Added to.
+    token : int
+        Which of the matrices.
+    rows : float64[row, state]
+        One of them is the column.
+    at : int
+        Which.
+    vector
+        The row.
+    """
     weights[token] += rows[at][:, None] * vector
 
 
