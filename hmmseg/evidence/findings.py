@@ -42,8 +42,9 @@ class StateFinding:
     share : float
         Expected share of positions.
     words : tuple of (str, float)
-        The words most over-represented against the background, and how many times. A word and
-        its reverse complement are one where the model is symmetric.
+        The words most over-represented against the background, and how many times; for a state
+        that is background itself, or where all are reported, against the whole sequence. A word
+        and its reverse complement are one where the model is symmetric.
     text : str
         The same in words.
     """
@@ -120,11 +121,14 @@ def _cpg(model: Model, state: int) -> float | None:
 
 
 def _words(model: Model, state: int, share: NDArray[np.float64]) -> tuple[tuple[str, float], ...]:
-    """Return the words that tell most for a state and against the background."""
-    others = [i for i in model.background if i != state]
-    others = others or [i for i in range(model.states) if i != state]
-    if not others:
+    """Return the words that tell most for a state and against the background.
+
+    A state that is background itself is compared with the whole sequence.
+    """
+    if model.states == 1:
         return ()
+    others = list(model.background) if model.reported[state] else []
+    others = others or list(range(model.states))
     weights = share[others] if share[others].sum() > 0 else np.ones(len(others))
     rest = (weights[:, None] * model.joint[others]).sum(axis=0) / weights.sum()
     own = model.joint[state].copy()
