@@ -335,13 +335,13 @@ def _agreement(
         known = [pieces[i] for i in np.flatnonzero(folds != fold).tolist()]
         calls = [call_hmm(model, piece.contig, threads, decoder).intervals for piece in known]
         try:
-            caller, _ = trained_pair(known, calls, model.order, settings.symmetric, threads)
+            caller, tuned = trained_pair(known, calls, model.order, settings.symmetric, threads)
         except HmmsegError:
             return None
         for number in np.flatnonzero(folds == fold).tolist():
             contig = pieces[number].contig
             theirs = call_hmm(model, contig, threads, decoder).intervals
-            blocks.append(call_windows(caller, contig).against(theirs, len(contig)))
+            blocks.append(call_windows(caller, contig, tuned.scale).against(theirs, len(contig)))
     tally = Tally(blocks)
     both, classifier_only, hmm_only, _ = tally.bases.sum(axis=0).tolist()
     called = both + classifier_only + hmm_only

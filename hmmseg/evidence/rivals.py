@@ -8,6 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hmmseg.errors import HmmsegError
+from hmmseg.evidence.calibration import Scale
 from hmmseg.evidence.pieces import Piece
 from hmmseg.evidence.tallies import BlockTally, Tally, log_odds_of
 from hmmseg.evidence.tuning import Tuned, tune
@@ -84,7 +85,7 @@ def call_hmm(model: Model, contig: Contig, threads: int = 1, decoder: str = PATH
     return Called(merge(np.column_stack((found.starts, found.ends))), scores)
 
 
-def call_windows(caller: WindowCaller, contig: Contig) -> Called:
+def call_windows(caller: WindowCaller, contig: Contig, scale: Scale) -> Called:
     """Call the regions of two chains; a contig shorter than the window has none.
 
     Parameters
@@ -93,13 +94,16 @@ def call_windows(caller: WindowCaller, contig: Contig) -> Called:
         Chains, window and threshold.
     contig
         The sequence.
+    scale
+        From a window's bits to the log-odds that are told.
     """
     calls = caller.call(contig, lambda *_: None)
     if calls is None:
         lowest = np.full(len(contig), -np.inf)
         return Called(np.empty((0, 2), np.int64), [lowest])
     found = calls.intervals
-    scores = [part.best / LEVEL - caller.threshold for part in caller.stretches(contig)]
+    slope, offset = scale
+    scores = [slope * (part.best / LEVEL) + offset for part in caller.stretches(contig)]
     return Called(np.column_stack((found.starts, found.ends)), scores)
 
 
@@ -185,7 +189,9 @@ class Rivals:
                 contig, _, truth = self.pieces[number]
                 ways: dict[str, Callable[[], Called]] = {
                     HMM: lambda c=contig, m=model: call_hmm(m, c, self.threads, self.decoder),  # type: ignore[misc]
-                    CLASSIFIER: lambda c=contig, w=caller: call_windows(w, c),  # type: ignore[misc]
+                    CLASSIFIER: lambda c=contig, w=caller, s=self.tuned[-1].scale: call_windows(
+                        w, c, s
+                    ),  # type: ignore[misc]
                 }
                 for way, call in ways.items():
                     found = self._timed(way, call)

@@ -7,6 +7,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hmmseg.errors import LabelError
+from hmmseg.evidence.calibration import Scale, fitted_scale
 from hmmseg.evidence.metrics import matthews_correlation
 from hmmseg.regions.labels import inside
 from hmmseg.regions.windows import LEVEL, ChainPair, WindowCaller, Windows
@@ -34,11 +35,14 @@ class Tuned(NamedTuple):
         In bits of a window.
     mcc : float
         The correlation reached with it.
+    scale : Scale
+        From scores to log-odds that can be believed.
     """
 
     windows: Windows
     threshold: float
     mcc: float
+    scale: Scale
 
 
 class ScoreCounts:
@@ -102,7 +106,9 @@ class ScoreCounts:
         best = np.flatnonzero(values == values.max())
         edge = int(best[len(best) // 2]) + 1
         threshold = (edge - _BINS // 2) * self._width
-        return Tuned(self._caller.windows, float(threshold), float(values.max()))
+        middles = np.arange(0.5 - _BINS // 2, _BINS // 2, dtype=np.float64) * self._width
+        scale = fitted_scale(middles, self._counts[1], self._counts[0])
+        return Tuned(self._caller.windows, float(threshold), float(values.max()), scale)
 
 
 def tune(

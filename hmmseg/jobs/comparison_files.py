@@ -162,7 +162,12 @@ def _accuracy(found: Accuracy) -> dict[str, Any]:
         "bases": found.bases,
         "true_regions": found.true_regions,
         "classifier_tuned": [
-            {**tuned.windows._asdict(), "threshold_bits": tuned.threshold, "mcc": tuned.mcc}
+            {
+                **tuned.windows._asdict(),
+                "threshold_bits": tuned.threshold,
+                "mcc": tuned.mcc,
+                "calibration": tuned.scale._asdict(),
+            }
             for tuned in found.tuned
         ],
         "measures": {

@@ -4,9 +4,11 @@ import numpy as np
 import pytest
 from sklearn import calibration
 from sklearn import metrics as peer
+from sklearn.linear_model import LogisticRegression
 
 from hmmseg.evidence import metrics
 from hmmseg.evidence.bootstrap import interval_of, resampled
+from hmmseg.evidence.calibration import fitted_scale
 from hmmseg.evidence.matching import match_regions
 from hmmseg.evidence.tallies import (
     LEVEL_COUNT,
@@ -159,3 +161,18 @@ def test_interval_covers_the_mean_as_often_as_it_says() -> None:
         found = interval_of(values.mean(), weights @ values / 50)
         covered += found.low <= 0 <= found.high
     assert 0.89 * 300 <= covered <= 0.98 * 300
+
+
+def test_calibration_against_scikit_learn() -> None:
+    """Scores that say three times too much, beside an offset; and classes that do not overlap."""
+    rng = np.random.default_rng(9)
+    bits = np.round(rng.normal(0, 3, 20_000), 1)
+    truth = rng.random(20_000) < 1 / (1 + 2.0 ** -(bits - 2))
+    positives, negatives, values = metrics.level_counts(truth, 3 * bits)
+    found = fitted_scale(values, positives, negatives)
+    peer_fit = LogisticRegression(C=np.inf, tol=1e-10).fit(3 * bits[:, None], truth)
+    assert found.slope == pytest.approx(peer_fit.coef_[0, 0] / np.log(2), rel=1e-3)
+    assert found.offset == pytest.approx(peer_fit.intercept_[0] / np.log(2), rel=5e-3)
+    apart = fitted_scale(np.array([-5.0, 5.0]), np.array([0, 50]), np.array([100, 0]))
+    assert np.isfinite(apart).all()
+    assert apart.slope > 0
