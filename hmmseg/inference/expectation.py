@@ -180,9 +180,9 @@ def _expect_strand(
     unfold_kernel(machine.states)(
         weights, tables.matrices, machine.order, tables.word, counts.transitions, counts.emissions
     )
-    for contig in np.flatnonzero(~ends.lost & ~stream.closed):
-        counts.start[:] += ends.heads[contig]
-        counts.emissions[:, stream.heads[contig]] += ends.heads[contig]
+    kept = ~ends.lost & ~stream.closed
+    np.add.at(counts.start[None, :], np.zeros(kept.sum(), np.int64), ends.heads[kept])
+    np.add.at(counts.emissions.T, stream.heads[kept], ends.heads[kept])
     for contig in np.flatnonzero(ends.lost):
         codes = stream.codes(int(contig))
         again = exact_pass(machine, corpus.contigs[contig], codes, reverse=reverse)

@@ -1,5 +1,6 @@
 """Most probable paths as runs of states."""
 
+from functools import lru_cache
 from typing import NamedTuple
 
 import numpy as np
@@ -154,6 +155,23 @@ def path_log_probability(model: Model, contig: Contig, path: NDArray[np.integer]
     return first + float(steps.sum()) + float(emitted.sum())
 
 
+# Kept for the contigs of one model that are decoded one after the other.
+@lru_cache(maxsize=4)
+def _ways(
+    machine: Machine, word: int
+) -> tuple[NDArray[np.int64], NDArray[np.int64], NDArray[np.uint32]]:
+    """Return int64[code, state] scores of first bases, and the best ways through tokens."""
+    states, order = machine.states, machine.order
+    log_t = fixed_point_logs(machine.transitions.ravel()).reshape(states, states)
+    log_e = fixed_point_logs(np.ascontiguousarray(machine.emissions.T).ravel()).reshape(-1, states)
+    first = np.maximum(fixed_point_logs(machine.start_probabilities) + log_e, 2 * IMPOSSIBLE)
+    tokens = int(code_total(order)) + (4 ** (order + word) if word > 1 else 0)
+    ways = np.empty((tokens, states, states), np.int64)
+    keys = np.empty(ways.shape, np.uint32)
+    fill_token_ways(log_t, log_e, order, word, ways, keys)
+    return first, ways, keys
+
+
 class _Decoder:
     """Best path of one strand.
 
@@ -168,17 +186,9 @@ class _Decoder:
         states, order = machine.states, machine.order
         word = preferred_word(order, states, len(contig))
         self.stream = build_stream([contig], order, word, reverse, threads, block)
-        log_t = fixed_point_logs(machine.transitions.ravel()).reshape(states, states)
-        log_e = fixed_point_logs(machine.emissions.ravel()).reshape(states, -1)
-        self.first = np.maximum(
-            fixed_point_logs(machine.start_probabilities) + log_e[:, self.stream.heads[0]],
-            2 * IMPOSSIBLE,
-        )
+        self.first, self.ways, self.keys = _ways(machine, word)
+        self.first = self.first[self.stream.heads[0]]
         self.codes = int(code_total(order))
-        words = 4 ** (order + word) if word > 1 else 0
-        self.ways = np.empty((self.codes + words, states, states), np.int64)
-        self.keys = np.empty(self.ways.shape, np.uint32)
-        fill_token_ways(log_t, np.ascontiguousarray(log_e.T), order, word, self.ways, self.keys)
 
     def best(self) -> tuple[int | None, Runs]:
         """Return the best path's score in 2**-32 nats, None if there is no path, and its runs."""

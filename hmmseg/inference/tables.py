@@ -1,5 +1,6 @@
 """A machine as the tables that the kernels step by."""
 
+from functools import lru_cache
 from typing import NamedTuple
 
 import numpy as np
@@ -50,6 +51,8 @@ def preferred_word(order: int, states: int, bases: int) -> int:
     return word
 
 
+# Kept for the contigs of one model that are decoded one after the other.
+@lru_cache(maxsize=4)
 def tables_for(machine: Machine, word: int) -> Tables:
     """Return the tables of a machine; words become single bases where a product could vanish.
 

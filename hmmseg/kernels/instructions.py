@@ -24,23 +24,8 @@ from hmmseg.kernels.registers import (
 )
 
 __all__ = [
-    "add_outer",
-    "add_to",
-    "identity",
-    "inner",
-    "item",
-    "load",
-    "plus",
-    "product",
-    "rescaled",
-    "rescaled_and_counted",
-    "rescaled_columns",
-    "scaled",
-    "step_columns",
-    "store",
-    "store_columns",
-    "times_row",
-]
+    "Vector"
+]  # the functions are for use through hmmseg.kernels.vectors, which explains them
 
 _SCALE_SHIFT = SCALE_BITS.bit_length() - 1
 _MANTISSA_BITS = 52

@@ -41,7 +41,7 @@ __all__ = [
 
 FRACTION_BITS = 32
 IMPOSSIBLE = -(1 << 61)
-KEY_BITS = 6
+KEY_BITS = 8
 REBASE = 1024
 
 _FLOOR = -(1 << 62)

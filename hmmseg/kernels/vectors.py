@@ -46,12 +46,30 @@ def item(values, at):
 
 
 def load(rows, at, size):
-    """Return row ``at`` of float64[row, state] as a vector; ``size`` is a constant."""
+    """Return row ``at`` of float64[row, state] as a vector; ``size`` is a constant.
+
+    Parameters
+    ----------
+    rows : float64[row, state]
+    at : int
+        The row.
+    size : int
+        Number of states, a constant.
+    """
     return rows[at, :size].copy()
 
 
 def store(rows, at, vector):
-    """Fill row ``at`` of float64[row, state]."""
+    """Fill row ``at`` of float64[row, state].
+
+    Parameters
+    ----------
+    rows : float64[row, state]
+        Filled there.
+    at : int
+        The row.
+    vector : float64[state]
+    """
     rows[at] = vector
 
 
@@ -61,7 +79,15 @@ def scaled(vector, factor):
 
 
 def times_row(vector, rows, at):
-    """Return the products of a vector's elements with those of row ``at``."""
+    """Return the products of a vector's elements with those of row ``at``.
+
+    Parameters
+    ----------
+    vector : float64[state]
+    rows : float64[row, state]
+    at : int
+        The row.
+    """
     return rows[at] * vector
 
 
@@ -71,7 +97,15 @@ def plus(vector, other):
 
 
 def inner(rows, at, vector):
-    """Return the sum over states of row ``at`` times a vector, from the first state on."""
+    """Return the sum over states of row ``at`` times a vector, from the first state on.
+
+    Parameters
+    ----------
+    rows : float64[row, state]
+    at : int
+        The row.
+    vector : float64[state]
+    """
     total = 0.0
     for term in rows[at] * vector:
         total += term
@@ -79,7 +113,14 @@ def inner(rows, at, vector):
 
 
 def product(vector, matrices, token):
-    """Return the vector times the token's matrix."""
+    """Return the vector times the token's matrix.
+
+    Parameters
+    ----------
+    vector : float64[state]
+    matrices : float64[token, state, state]
+    token : int
+    """
     matrix = matrices[token]
     out = vector[0] * matrix[0]
     for k in range(1, vector.size):
@@ -102,12 +143,31 @@ def add_outer(weights, token, rows, at, vector):
         Which.
     vector
         The row.
+
+    Parameters
+    ----------
+    weights : float64[token, state, state]
+        Added to.
+    token : int
+    rows : float64[row, state]
+    at : int
+        The row.
+    vector : float64[state]
     """
     weights[token] += rows[at][:, None] * vector
 
 
 def add_to(rows, at, vector):
-    """Add a vector to row ``at`` of float64[row, state]."""
+    """Add a vector to row ``at`` of float64[row, state].
+
+    Parameters
+    ----------
+    rows : float64[row, state]
+        Added to.
+    at : int
+        The row.
+    vector : float64[state]
+    """
     rows[at] += vector
 
 
@@ -117,7 +177,14 @@ def identity(size):
 
 
 def step_columns(columns, matrices, token):
-    """Return the columns of a matrix times the token's matrix."""
+    """Return the columns of a matrix times the token's matrix.
+
+    Parameters
+    ----------
+    columns : tuple of float64[state]
+    matrices : float64[token, state, state]
+    token : int
+    """
     matrix = matrices[token]
     out = []
     for j in range(len(columns)):
@@ -129,7 +196,16 @@ def step_columns(columns, matrices, token):
 
 
 def store_columns(matrices, at, columns):
-    """Fill matrix ``at`` of float64[matrix, state, state]."""
+    """Fill matrix ``at`` of float64[matrix, state, state].
+
+    Parameters
+    ----------
+    matrices : float64[matrix, state, state]
+        Filled there.
+    at : int
+        The matrix.
+    columns : tuple of float64[state]
+    """
     matrices[at] = np.stack(columns, axis=1)
 
 

@@ -1,0 +1,1 @@
+"""How fast the kernels are, beside named peers; see ``__main__``."""
