@@ -32,7 +32,7 @@ def power_of_two(exponent):
         return 0.0
     if exponent > _LARGEST_EXPONENT:
         return np.inf
-    return math.ldexp(1.0, exponent)
+    return math.ldexp(1.0, int(exponent))
 
 
 @kernel

@@ -1,6 +1,7 @@
 """Everything inference gives, as text in which every bit shows.
 
-``python -m tests.kernels.fingerprint THREADS`` prints it, so that it can be compared between
+``python -m tests.kernels.fingerprint THREADS BASES`` prints it for a longest contig of so many
+bases, so that it can be compared between
 processes that run with another processor, another C library or other numbers of threads.
 """
 
@@ -18,7 +19,7 @@ from hmmseg.training.baum_welch import step
 from tests.reference import Piece
 from tests.strategies import Texture, contigs_of, model_of, random_parameters, segmented_bases
 
-__all__ = ["fingerprint"]
+__all__ = ["LONGEST", "fingerprint"]
 
 CASES = [(2, 1, "symmetric"), (3, 0, "stationary"), (5, 0, "free")]
 """States (one case for each way of finding block ends), order, kind of model."""
@@ -26,17 +27,20 @@ CASES = [(2, 1, "symmetric"), (3, 0, "stationary"), (5, 0, "free")]
 STEPS = 2
 
 
-def fingerprint(threads: int) -> list[str]:
+LONGEST = 5 * BLOCK + 77
+
+
+def fingerprint(threads: int, longest: int = LONGEST) -> list[str]:
     """Return one line for each result: what it is, and its floats in hexadecimal or digest."""
-    return [f"{name}: {value}" for name, value in _results(threads)]
+    return [f"{name}: {value}" for name, value in _results(threads, longest)]
 
 
-def _results(threads: int) -> Iterator[tuple[str, str]]:
+def _results(threads: int, longest: int) -> Iterator[tuple[str, str]]:
     for states, order, kind in CASES:
         rng = np.random.default_rng([states, order])
         pieces = [
-            Piece(segmented_bases(rng, 5 * BLOCK + 77, missing=0.001)),
-            Piece(segmented_bases(rng, 3001), closed=True),
+            Piece(segmented_bases(rng, longest, missing=0.001)),
+            Piece(segmented_bases(rng, min(3001, longest // 2)), closed=True),
             Piece(segmented_bases(rng, 400)),
         ]
         contigs = contigs_of(pieces)
@@ -59,4 +63,4 @@ def _digest(array: np.ndarray) -> str:
 
 
 if __name__ == "__main__":
-    print("\n".join(fingerprint(int(sys.argv[1]))))
+    print("\n".join(fingerprint(int(sys.argv[1]), int(sys.argv[2]))))

@@ -8,7 +8,7 @@ from pathlib import Path
 
 import pytest
 
-from tests.kernels.fingerprint import fingerprint
+from tests.kernels.fingerprint import LONGEST, fingerprint
 
 ROOT = Path(__file__).resolve().parents[2]
 
@@ -41,9 +41,9 @@ def test_threads() -> None:
     assert fingerprint(2) == _here()
 
 
-def _run(threads: int, changes: dict[str, str]) -> list[str]:
+def _run(threads: int, changes: dict[str, str], longest: int = LONGEST) -> list[str]:
     done = subprocess.run(
-        [sys.executable, "-m", "tests.kernels.fingerprint", str(threads)],
+        [sys.executable, "-m", "tests.kernels.fingerprint", str(threads), str(longest)],
         cwd=ROOT,
         env=os.environ | changes,
         capture_output=True,
@@ -60,3 +60,13 @@ def _run(threads: int, changes: dict[str, str]) -> list[str]:
 def test_environments(name: str) -> None:
     """A process in another environment gives what this one gives."""
     assert _run(2, ENVIRONMENTS[name]) == _here()
+
+
+def test_plain_functions() -> None:
+    """Without the compiler, the functions in NumPy give what the instructions give.
+
+    NumPy warns of overflow where scores that stand for impossible are added; compiled code is
+    silent.
+    """
+    changes = {"NUMBA_DISABLE_JIT": "1", "PYTHONWARNINGS": "ignore"}
+    assert _run(1, changes, longest=500) == fingerprint(1, longest=500)
