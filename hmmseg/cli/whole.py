@@ -18,12 +18,19 @@ __all__ = ["annotate"]
 @options.output
 @click.option("--preset", metavar="NAME", help="What to look for; see hmmseg presets.")
 @click.option("--decisions", metavar="FILE.yaml", help="Obey these decisions.")
+@click.option(
+    "--features",
+    multiple=True,
+    metavar="FILE",
+    help="BED or GFF3 of known features to compare with the regions; may be given again.",
+)
 @options.sequence_options(soft_mask=True)
 @options.threads
 @options.force
 def annotate(
-    sources: Any, output: str, preset: str | None, decisions: str | None, threads: int, force: bool
-) -> None:
+    sources: Any, output: str, preset: str | None, decisions: str | None,
+    features: tuple[str, ...], threads: int, force: bool,
+) -> None:  # fmt: skip
     """Do the whole job: survey, decide, train, call regions.
 
     Decisions are written to DIR/decisions.yaml with their reasons. What is already done is not
@@ -31,12 +38,17 @@ def annotate(
     """
     from hmmseg.errors import UsageError
     from hmmseg.jobs import annotate as job
+    from hmmseg.jobs.features import COLUMNS
 
     if preset and decisions:
         raise UsageError("--preset and --decisions do not go together; give one")
     found = job.annotate(
-        sources, output, preset=preset, decisions_file=decisions, threads=threads, force=force,
-        say=click.echo,
+        sources, output, preset=preset, decisions_file=decisions, features=features,
+        threads=threads, force=force, say=click.echo,
     )  # fmt: skip
     print_findings(found.model.findings, found.model.cautions)
     print_regions(found.calls)
+    if found.features:
+        click.echo("\t".join(COLUMNS))
+        for row in found.features:
+            click.echo("\t".join(row))

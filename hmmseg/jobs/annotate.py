@@ -4,7 +4,7 @@ Every stage is that of the command of its name, with what was decided as its opt
 whose result is there, and would come out the same, is not done again.
 """
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any
@@ -14,6 +14,7 @@ from hmmseg.jobs.decide import decide
 from hmmseg.jobs.decisions import Decisions, read_decisions, to_yaml
 from hmmseg.jobs.decode import decode
 from hmmseg.jobs.explain import Explained
+from hmmseg.jobs.features import measure_features
 from hmmseg.jobs.sources import Sources
 from hmmseg.jobs.survey import survey
 from hmmseg.jobs.train import Origin, train
@@ -25,6 +26,7 @@ from hmmseg.training.restarts import Plan
 __all__ = ["Annotation", "annotate"]
 
 DECISIONS = "decisions.yaml"
+FEATURES = "features.tsv"
 _RESULTS = {"survey": "survey", "train": "model.json", "decode": "calls"}
 
 _Say = Callable[[str], None]
@@ -40,10 +42,14 @@ class Annotation:
         The model in words.
     calls : dict
         The document ``summary.json`` of the calls.
+    features : list of list of str
+        How regions and known features overlap, as of
+        :func:`~hmmseg.jobs.features.measure_features`.
     """
 
     model: Explained
     calls: dict[str, Any]
+    features: list[list[str]]
 
 
 def annotate(
@@ -52,6 +58,7 @@ def annotate(
     *,
     preset: str | None,
     decisions_file: str | None,
+    features: Sequence[str] = (),
     threads: int,
     force: bool,
     say: _Say,
@@ -68,6 +75,8 @@ def annotate(
         A preset to use; None leaves the choice open.
     decisions_file
         Decisions to obey instead of deciding.
+    features
+        BED or GFF3 files of known features, with which the regions are compared in the end.
     threads
         Threads to use; the result does not depend on it.
     force
@@ -93,7 +102,12 @@ def annotate(
     )
     decisions = _decisions(job, surveyed, sources, preset, decisions_file)
     model, calls = job.model(sources, decisions), job.calls(sources, decisions)
-    return Annotation(model, calls)
+    rows: list[list[str]] = []
+    if features:
+        table = folder / FEATURES
+        rows = measure_features(folder / _RESULTS["decode"], features, table)
+        say(f"features: done, {table}")
+    return Annotation(model, calls, rows)
 
 
 def _decisions(
