@@ -8,6 +8,7 @@ from collections.abc import Callable, Iterable, Sequence
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass, replace
 from itertools import pairwise
+from threading import Lock
 from typing import TypeVar
 
 import numpy as np
@@ -222,8 +223,8 @@ class Corpus:
         self.both_strands = both_strands
         self.block = block
         self._threads = threads
-        self._word = 0
-        self._streams: list[Stream] = []
+        self._lock = Lock()
+        self._streams: dict[int, list[Stream]] = {}
         self.known = [int(np.count_nonzero(c.bases != MISSING)) for c in self.contigs]
 
     @property
@@ -237,15 +238,17 @@ class Corpus:
         return [len(c) for c in self.contigs if c.closed]
 
     def streams(self, word: int) -> list[Stream]:
-        """Return the forward stream, and the reverse one where it is read; made once."""
-        if word != self._word:
-            self._streams = []
-            self._streams = [
-                self._stream(word, reverse)
-                for reverse in ((False, True) if self.both_strands else (False,))
-            ]
-            self._word = word
-        return self._streams
+        """Return the forward stream, and the reverse one where it is read; made once.
+
+        Several fits may ask at once.
+        """
+        with self._lock:
+            if word not in self._streams:
+                self._streams[word] = [
+                    self._stream(word, reverse)
+                    for reverse in ((False, True) if self.both_strands else (False,))
+                ]
+            return self._streams[word]
 
     def _stream(self, word: int, reverse: bool) -> Stream:
         stream = build_stream(self.contigs, self.order, word, reverse, self._threads, self.block)

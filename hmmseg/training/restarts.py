@@ -1,12 +1,12 @@
 """Several fits from different starts, the best of which is kept."""
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
 
 from hmmseg.errors import TrainingError
-from hmmseg.inference.streams import Corpus
+from hmmseg.inference.streams import Corpus, in_threads
 from hmmseg.model import Model
 from hmmseg.training.baum_welch import Fit, fit
 from hmmseg.training.chains import fit_chain
@@ -121,19 +121,22 @@ def fit_restarts(
         return Restarts((counted,), 0, plan.finish(counted.model))
     starts = [plan.start(number, corpus) for number in range(plan.restarts)]
     prior = plan.prior or Prior.even(starts[0], plan.pseudocount)
-    fits: Sequence[Fit] = [
-        fit(
-            start,
+    # Fits side by side need no waiting for one another; what is left of the threads is theirs.
+    side_by_side = min(threads, len(starts))
+
+    def fit_one(number: int) -> Fit:
+        return fit(
+            starts[number],
             corpus,
             max_iterations=plan.max_iterations,
             tolerance=plan.tolerance,
             prior=prior,
-            fixed=Fixed.named(start, plan.fixed),
-            threads=threads,
+            fixed=Fixed.named(starts[number], plan.fixed),
+            threads=threads // side_by_side,
             watch=None if watch is None else _numbered(watch, number),
         )
-        for number, start in enumerate(starts)
-    ]
+
+    fits = in_threads(fit_one, range(len(starts)), side_by_side)
     best = int(np.argmax([found.objective for found in fits]))
     return Restarts(tuple(fits), best, plan.finish(fits[best].model))
 
