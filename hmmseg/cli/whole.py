@@ -31,7 +31,7 @@ def annotate(
     sources: Any, output: str, preset: str | None, decisions: str | None,
     features: tuple[str, ...], threads: int, force: bool,
 ) -> None:  # fmt: skip
-    """Do the whole job: survey, decide, train, call regions.
+    """Do the whole job: survey, decide, train, call regions, compare with chains.
 
     Decisions are written to DIR/decisions.yaml with their reasons. What is already done is not
     done again.
@@ -48,6 +48,8 @@ def annotate(
     )  # fmt: skip
     print_findings(found.model.findings, found.model.cautions)
     print_regions(found.calls)
+    if found.verdict is not None:
+        click.echo(found.verdict)
     if found.features:
         click.echo("\t".join(COLUMNS))
         for row in found.features:

@@ -10,6 +10,8 @@ from pathlib import Path
 from typing import Any
 
 from hmmseg.errors import HmmsegError, OutputError, UsageError
+from hmmseg.evidence.comparison import Settings
+from hmmseg.jobs.compare import compare_once
 from hmmseg.jobs.decide import decide
 from hmmseg.jobs.decisions import Decisions, read_decisions, to_yaml
 from hmmseg.jobs.decode import decode
@@ -27,7 +29,7 @@ __all__ = ["Annotation", "annotate"]
 
 DECISIONS = "decisions.yaml"
 FEATURES = "features.tsv"
-_RESULTS = {"survey": "survey", "train": "model.json", "decode": "calls"}
+_RESULTS = {"survey": "survey", "train": "model.json", "decode": "calls", "compare": "comparison"}
 
 _Say = Callable[[str], None]
 
@@ -42,6 +44,8 @@ class Annotation:
         The model in words.
     calls : dict
         The document ``summary.json`` of the calls.
+    verdict : str or None
+        Whether a hidden state gains anything over a chain; None if that was not asked.
     features : list of list of str
         How regions and known features overlap, as of
         :func:`~hmmseg.jobs.features.measure_features`.
@@ -49,6 +53,7 @@ class Annotation:
 
     model: Explained
     calls: dict[str, Any]
+    verdict: str | None
     features: list[list[str]]
 
 
@@ -102,12 +107,13 @@ def annotate(
     )
     decisions = _decisions(job, surveyed, sources, preset, decisions_file)
     model, calls = job.model(sources, decisions), job.calls(sources, decisions)
+    verdict = job.verdict(sources, decisions) if decisions["compare"] == "run" else None
     rows: list[list[str]] = []
     if features:
         table = folder / FEATURES
         rows = measure_features(folder / _RESULTS["decode"], features, table)
         say(f"features: done, {table}")
-    return Annotation(model, calls, rows)
+    return Annotation(model, calls, verdict, rows)
 
 
 def _decisions(
@@ -202,6 +208,18 @@ class _Job:
             ),
         )
         return calls
+
+    def verdict(self, sources: Sources, decisions: Decisions) -> str:
+        """Compare with chains."""
+        settings = Settings(seed=decisions["seed"], threads=self._threads)
+        words: str = self.stage(
+            "compare",
+            lambda replaces: compare_once(
+                _obeying(sources, decisions), str(self.folder / _RESULTS["compare"]), settings,
+                replaces,
+            ),
+        )  # fmt: skip
+        return words
 
 
 def _wanted(decisions: Decisions) -> Any:

@@ -1,5 +1,6 @@
 """The command ``compare``: a hidden Markov model and chains on the same held-out sequence."""
 
+import json
 from dataclasses import asdict, dataclass, replace
 from pathlib import Path
 from typing import Any
@@ -21,11 +22,11 @@ from hmmseg.jobs.sources import Sources
 from hmmseg.model import Model
 from hmmseg.outputs import PROVENANCE, check_target, whole_folder
 from hmmseg.progress import Progress
-from hmmseg.provenance import write_provenance
+from hmmseg.provenance import is_current, write_provenance
 from hmmseg.sequence.contigs import Contig
 from hmmseg.simulate import simulate
 
-__all__ = ["Truth", "compare", "simulated_accuracy"]
+__all__ = ["Truth", "compare", "compare_once", "simulated_accuracy"]
 
 _TEST_RECORDS = 50
 _MOST_SIMULATED = 5_000_000
@@ -85,6 +86,49 @@ def compare(
         There is too little sequence for the folds.
     """
     check_target(output, force)
+    prepared = _prepare(sources, truth, settings)
+    found = prepared.nothing_yet
+    if truth.labels is not None:
+        known = _with_labels(prepared.pieces, prepared.folds, truth, settings)
+        found = replace(found, known=known)
+    else:
+        found = _without_labels(found, prepared.pieces, prepared.folds, settings)
+    _write(sources, output, truth, settings, found, force)
+    return found
+
+
+def compare_once(sources: Sources, output: str, settings: Settings, force: bool) -> str:
+    """Compare without labels, unless the same comparison is there already.
+
+    Parameters
+    ----------
+    sources, output, settings, force
+        As for :func:`compare`.
+
+    Returns
+    -------
+    str
+        The verdict in words.
+    """
+    truth = Truth()
+    held_out = _prepare(sources, truth, settings).nothing_yet
+    parameters = _parameters(sources, truth, settings, held_out)
+    if not is_current(output, "compare", parameters, settings.seed, sources.files()):
+        compare(sources, output, truth, settings, force)
+    document = json.loads((Path(output) / "comparison.json").read_bytes())
+    return str(document["verdict"]["words"])
+
+
+@dataclass(frozen=True, eq=False)
+class _Prepared:
+    """Sequence dealt out to folds, and a comparison that says how, without results."""
+
+    pieces: list[Piece]
+    folds: "np.ndarray[Any, Any]"
+    nothing_yet: Comparison
+
+
+def _prepare(sources: Sources, truth: Truth, settings: Settings) -> _Prepared:
     if truth.labels is None and (truth.order is not None or truth.name is not None):
         raise UsageError("--order and --label belong to --labels; give the labels, or leave it out")
     if truth.labels is None:
@@ -96,13 +140,7 @@ def compare(
     pieces = cut(contigs, block, labels)
     split = truth.split or _natural_split(contigs, settings.folds)
     folds = deal(pieces, settings.folds, split == "contigs")
-    found = Comparison(len(pieces), split, block)
-    if truth.labels is not None:
-        found = replace(found, known=_with_labels(pieces, folds, truth, settings))
-    else:
-        found = _without_labels(found, pieces, folds, settings)
-    _write(sources, output, truth, settings, found, force)
-    return found
+    return _Prepared(pieces, folds, Comparison(len(pieces), split, block))
 
 
 def _natural_split(contigs: list[Contig], folds: int) -> str:
@@ -179,9 +217,21 @@ def _write(
     found: Comparison,
     force: bool,
 ) -> None:
+    parameters = _parameters(sources, truth, settings, found)
+    inputs = [*sources.files(), *([truth.labels] if truth.labels is not None else [])]
+    with whole_folder(output, force=force) as folder:
+        write_comparison(folder, found, settings)
+        written = sorted(path for path in folder.iterdir() if path.name != PROVENANCE)
+        write_provenance(folder, "compare", parameters, settings.seed, inputs, written)
+
+
+def _parameters(
+    sources: Sources, truth: Truth, settings: Settings, found: Comparison
+) -> dict[str, Any]:
+    """Return what stands in the provenance."""
     chosen = asdict(settings)
-    seed = chosen.pop("seed")
-    parameters = {
+    del chosen["seed"]
+    return {
         **sources.parameters(),
         **chosen,
         "labels": Path(truth.labels) if truth.labels is not None else None,
@@ -190,8 +240,3 @@ def _write(
         "split": found.split,
         "block": found.block,
     }
-    inputs = [*sources.files(), *([truth.labels] if truth.labels is not None else [])]
-    with whole_folder(output, force=force) as folder:
-        write_comparison(folder, found, settings)
-        written = sorted(path for path in folder.iterdir() if path.name != PROVENANCE)
-        write_provenance(folder, "compare", parameters, seed, inputs, written)

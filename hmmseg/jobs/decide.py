@@ -21,6 +21,9 @@ _COMPACT = 30_000_000
 # Two levels of GC need some tens of bases for each word of a richer model.
 _ENOUGH_FOR_WORDS = 500_000
 _EXTREME = 0.25
+# HMMs and chains of several orders are fitted, to four fifths of the sequence in turn.
+_COMPARABLE = 100_000
+_QUICKLY_COMPARED = 5_000_000
 _SHORT = 1_000
 
 
@@ -103,6 +106,7 @@ def decide(survey: Mapping[str, Any], sources: Sources, preset: str | None) -> D
         "threshold": Decision(0.5, "rather inside than outside; for the posterior decoder only"),
         "min_length": Decision(wanted.min_length, proposed),
         "merge_gap": Decision(wanted.merge_gap, proposed),
+        "compare": _comparison(assembly["known_bases"]),
     }  # fmt: skip
     return Decisions(made)
 
@@ -152,6 +156,18 @@ def _left_out(records: Sequence[Mapping[str, Any]], wanted: Specification) -> De
     if kept < sum(r["length"] for r in records) / 2:
         return Decision([], f"{'; '.join(reasons)}; but that is most of the assembly, so all train")
     return Decision(chosen, f"{'; '.join(reasons)}; they are called all the same")
+
+
+def _comparison(bases: int) -> Decision:
+    if bases < _COMPARABLE:
+        return Decision("skip", f"{_size(bases)} are too few to hold some out")
+    if bases > _QUICKLY_COMPARED:
+        return Decision(
+            "skip",
+            f"at {_size(bases)} it would take far longer than everything else; say run, or give "
+            "hmmseg compare a part of the assembly",
+        )
+    return Decision("run", "tells on held-out sequence what a hidden state gains over a chain")
 
 
 def _sample(bases: int) -> Decision:

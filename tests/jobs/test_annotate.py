@@ -26,6 +26,9 @@ FILES = {
     "decisions.yaml", "model.json", "model.provenance.json", "survey/survey.json",
     "survey/survey.tsv", "survey/provenance.json", "calls/regions.bed", "calls/regions.tsv",
     "calls/regions.gff3", "calls/chrom.sizes", "calls/summary.json", "calls/provenance.json",
+    "comparison/comparison.json", "comparison/heldout.tsv", "comparison/heldout.svg",
+    "comparison/heldout.png", "comparison/simulated.tsv", "comparison/simulated.svg",
+    "comparison/simulated.png", "comparison/provenance.json",
 }  # fmt: skip
 
 
