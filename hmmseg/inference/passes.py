@@ -19,7 +19,7 @@ from hmmseg.model.machine import Machine
 
 __all__ = ["BlockEnds", "Jobs", "find_ends"]
 
-_BLOCKS_AT_ONCE = 256
+_BLOCKS_AT_ONCE = 64
 
 
 @dataclass(frozen=True, eq=False)
