@@ -180,9 +180,11 @@ def _expect_strand(
     unfold_kernel(machine.states)(
         weights, tables.matrices, machine.order, tables.word, counts.transitions, counts.emissions
     )
-    kept = ~ends.lost & ~stream.closed
-    np.add.at(counts.start[None, :], np.zeros(kept.sum(), np.int64), ends.heads[kept])
-    np.add.at(counts.emissions.T, stream.heads[kept], ends.heads[kept])
+    kept = np.flatnonzero(~ends.lost & ~stream.closed)
+    heads = ends.heads[kept]
+    # Sums from the first to the last, so that they do not depend on how many there are.
+    counts.start[:] += np.cumsum(heads, axis=0)[-1] if len(kept) else 0.0
+    np.add.at(counts.emissions.T, stream.heads[kept], heads)
     for contig in np.flatnonzero(ends.lost):
         codes = stream.codes(int(contig))
         again = exact_pass(machine, corpus.contigs[contig], codes, reverse=reverse)
@@ -202,23 +204,25 @@ def _pair_weights(
     order, and the tables are added in order, so threads never show in the sums.
     """
     jobs = ends.jobs
-    states = tables.matrices.shape[1]
-    most = int(np.clip(_GROUP_BYTES // tables.matrices.nbytes, _FEWEST_GROUPS, _MOST_GROUPS))
-    groups = int(np.clip(len(jobs.blocks) // _GROUP_JOBS, _FEWEST_GROUPS, most))
-    edges = np.linspace(0, len(jobs.blocks), groups + 1).astype(np.int64)
+    states, count = tables.matrices.shape[1], len(jobs.blocks)
+    most = min(max(_GROUP_BYTES // tables.matrices.nbytes, _FEWEST_GROUPS), _MOST_GROUPS)
+    groups = min(max(count // _GROUP_JOBS, _FEWEST_GROUPS), most)
+    edges = np.arange(groups + 1) * count // groups
     flags = np.zeros(len(stream.bounds) - 1, bool)
-    lengths = np.diff(stream.bounds)[jobs.blocks]
+    # Blocks go in pairs, best of equal length, within their group.
+    lengths = (stream.bounds[1:] - stream.bounds[:-1])[jobs.blocks]
+    order = np.lexsort((lengths, np.repeat(np.arange(groups), edges[1:] - edges[:-1])))
+    paired = jobs.taken(order)
 
     def work(group: int) -> NDArray[np.float64] | None:
-        first, last = edges[group], edges[group + 1]
-        if first == last:
+        piece = slice(edges[group], edges[group + 1])
+        if piece.start == piece.stop:
             return None
-        table = np.zeros_like(tables.matrices)
-        # Blocks go in pairs, best of equal length.
-        mine = first + np.argsort(lengths[first:last], kind="stable")
+        table = np.zeros(tables.matrices.shape)
         block_kernels(states).expect(
-            stream.tokens, stream.bounds, jobs.blocks[mine], jobs.starts[mine], jobs.ends[mine],
-            jobs.shares[mine], tables.matrices, tables.mirrored, tables.interval, table, flags,
+            stream.tokens, stream.bounds, paired.blocks[piece], paired.starts[piece],
+            paired.ends[piece], paired.shares[piece], tables.matrices, tables.mirrored,
+            tables.interval, table, flags,
         )  # fmt: skip
         return table
 
@@ -230,7 +234,7 @@ def _pair_weights(
         return _pair_weights(
             tables, stream, BlockEnds(spared, ends.heads, ends.logs, ends.lost), threads
         )
-    total = np.zeros_like(tables.matrices)
+    total = np.zeros(tables.matrices.shape)
     for table in tables_of_groups:
         if table is not None:
             total += table

@@ -51,8 +51,13 @@ class Jobs:
 
     def without(self, dropped: NDArray[np.bool_]) -> "Jobs":
         """Return the jobs but for those of some blocks (bool[block])."""
-        kept = ~dropped[self.blocks]
-        return Jobs(self.blocks[kept], self.starts[kept], self.ends[kept], self.shares[kept])
+        return self.taken(~dropped[self.blocks])
+
+    def taken(self, chosen: NDArray[np.intp] | NDArray[np.bool_]) -> "Jobs":
+        """Return some of the jobs."""
+        return Jobs(
+            self.blocks[chosen], self.starts[chosen], self.ends[chosen], self.shares[chosen]
+        )
 
 
 @dataclass(frozen=True, eq=False)
@@ -114,7 +119,8 @@ def find_ends(machine: Machine, tables: Tables, stream: Stream, threads: int) ->
         scan_contigs(products, times, stream.contig_blocks, stream.closed, first_vectors, *scan)
     circles = _scan_circles(machine, stream, products, times, scan.logs, scan.lost)
     jobs = _merge_jobs(stream, scan.starts, scan.ends, circles)
-    jobs = jobs.without(np.repeat(scan.lost, np.diff(stream.contig_blocks)))
+    if scan.lost.any():
+        jobs = jobs.without(np.repeat(scan.lost, np.diff(stream.contig_blocks)))
     return BlockEnds(jobs, scan.heads, scan.logs, scan.lost)
 
 
@@ -187,6 +193,8 @@ def _everything_lost(states: int, contigs: int) -> BlockEnds:
 
 def _any_of_blocks(flags: NDArray[np.bool_], contig_blocks: NDArray[np.int64]) -> NDArray[np.bool_]:
     """Return for each contig whether one of its blocks is flagged."""
+    if not flags.any():
+        return np.zeros(len(contig_blocks) - 1, bool)
     sums = np.concatenate(([0], np.cumsum(flags)))
     return sums[contig_blocks[1:]] > sums[contig_blocks[:-1]]
 
@@ -230,6 +238,8 @@ def _merge_jobs(
     circles: list[Jobs],
 ) -> Jobs:
     """Return the jobs of open contigs and circles together, sorted by block."""
+    if not circles:
+        return Jobs(np.arange(len(starts)), starts, ends, np.ones(len(starts)))
     in_circle = np.repeat(stream.closed, np.diff(stream.contig_blocks))
     straight = np.flatnonzero(~in_circle)
     parts = [Jobs(straight, starts[straight], ends[straight], np.ones(len(straight))), *circles]
