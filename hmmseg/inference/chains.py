@@ -6,7 +6,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hmmseg.kernels.elementary import log_array
-from hmmseg.kernels.tokens import base_codes
+from hmmseg.kernels.tokens import add_counts, base_codes
 from hmmseg.model import Model
 from hmmseg.model.chain import with_stationary_start
 from hmmseg.model.contexts import code_dtype, missing_code
@@ -93,6 +93,6 @@ class ChainScorer:
         for at in range(begin, stop, _CHUNK):
             codes = np.empty(min(_CHUNK, stop - at), code_dtype(order))
             base_codes(bases, order, contig.closed, at, at + len(codes), codes)
-            counts += np.bincount(codes, minlength=len(counts))
+            add_counts(codes, counts)
         used = counts > 0
         return float((counts[used] * logs[used]).sum())

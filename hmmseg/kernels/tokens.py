@@ -16,7 +16,7 @@ import numpy as np
 from hmmseg.kernels.compiling import kernel
 from hmmseg.kernels.vectors import item
 
-__all__ = ["base_codes", "code_total", "token_count", "tokenise", "words_of"]
+__all__ = ["add_counts", "base_codes", "code_total", "token_count", "tokenise", "words_of"]
 
 _MISSING = 4
 
@@ -91,6 +91,13 @@ def base_codes(bases, order, closed, start, stop, codes):
         code, context, known = _base_step(bases, order, context, known, position)
         codes[position - start] = code
         position += 1
+
+
+@kernel
+def add_counts(codes, counts):
+    """Count codes (uint16[position] or uint32[position]) into int64[code]."""
+    for at in range(codes.size):
+        counts[np.int64(item(codes, at))] += 1
 
 
 @kernel

@@ -79,7 +79,7 @@ class Caller:
 
     @cached_property
     def _odds(self) -> LogOdds:
-        return LogOdds(self.model)
+        return LogOdds(self.model, self.states)
 
     def call(self, contig: Contig, watch: _Watch) -> Calls:
         """Call regions; hand every window of posteriors to ``watch`` as it comes.
@@ -100,10 +100,10 @@ class Caller:
         sums = {state: RunningSums(found, state) for state in self.states}
         for begin, posterior in posterior_windows(self.model, contig, self.threads):
             bits = self._odds.window(contig, begin, begin + len(posterior))
-            for state, running in sums.items():
+            for (state, running), own in zip(sums.items(), bits, strict=True):
                 if found is None:
                     running.grow(*over_threshold(posterior[:, state], self.threshold, begin))
-                running.add(begin, posterior[:, state], bits[:, state])
+                running.add(begin, posterior[:, state], own)
             watch(begin, posterior)
         return scored(contig, sums, self.filters)
 

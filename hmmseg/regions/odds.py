@@ -1,5 +1,7 @@
 """Log-odds of every base between a state and the background."""
 
+from collections.abc import Sequence
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -26,12 +28,14 @@ class LogOdds:
     ----------
     model
         The model.
+    states
+        The states whose log-odds are wanted.
     """
 
-    def __init__(self, model: Model) -> None:
+    def __init__(self, model: Model, states: Sequence[int]) -> None:
         self._model = model
-        self.bits = np.array([self._against_background(state) for state in range(model.states)])
-        """float64[state, code]"""
+        self.bits = np.array([self._against_background(state) for state in states])
+        """float64[state, code], of the states asked for"""
 
     def _against_background(self, state: int) -> NDArray[np.float64]:
         model = self._model
@@ -49,11 +53,19 @@ class LogOdds:
         return np.clip(np.where(np.isnan(bits), 0.0, bits), -_MOST_BITS, _MOST_BITS)
 
     def window(self, contig: Contig, begin: int, stop: int) -> NDArray[np.float64]:
-        """Return float64[position, state] bits of a stretch of a contig.
+        """Return float64[state, position] bits of a stretch of a contig, of the states asked for.
 
         For a symmetric model of order 1 or more they are the mean of both strands.
+
+        Parameters
+        ----------
+        contig
+            The sequence.
+        begin, stop
+            Positions, half-open.
         """
-        forward = self.bits[:, self._codes(contig.bases, contig.closed, begin, stop)].T
+        codes = self._codes(contig.bases, contig.closed, begin, stop)
+        forward: NDArray[np.float64] = np.take(self.bits, codes, axis=1)
         if not self._model.both_strands:
             return forward
         length, order = len(contig), self._model.order
@@ -63,7 +75,9 @@ class LogOdds:
         bases = reverse_complement(contig.bases[reach])
         skipped = len(bases) - (stop - begin)
         codes = self._codes(bases, False, skipped, len(bases))
-        return (forward + self.bits[:, codes].T[::-1]) / 2
+        forward += np.take(self.bits, codes, axis=1)[:, ::-1]
+        forward /= 2
+        return forward
 
     def _codes(
         self, bases: NDArray[np.uint8], closed: bool, begin: int, stop: int

@@ -7,7 +7,7 @@ from numpy.typing import NDArray
 
 from hmmseg.errors import TrainingError
 from hmmseg.kernels.elementary import log_array
-from hmmseg.kernels.tokens import base_codes
+from hmmseg.kernels.tokens import add_counts, base_codes
 from hmmseg.model import Model
 from hmmseg.model.contexts import (
     code_count,
@@ -37,7 +37,7 @@ def code_counts(contigs: Sequence[Contig], order: int, reverse: bool = False) ->
             stop = min(begin + _CHUNK, len(contig))
             codes = np.empty(stop - begin, code_dtype(order))
             base_codes(bases, order, contig.closed, begin, stop, codes)
-            counts += np.bincount(codes, minlength=len(counts))
+            add_counts(codes, counts)
     return counts
 
 

@@ -17,13 +17,14 @@ from hmmseg.model.contexts import (
 from hmmseg.model.parameters import FREE, STATIONARY
 from hmmseg.sequence.alphabet import MISSING
 from hmmseg.sequence.contigs import Contig
+from hmmseg.training.chains import code_counts
 
 __all__ = ["labelled_start", "named_by_gc", "perturbed", "placed_start", "word_counts"]
 
 _WINDOW = 500
 """Bases in a window whose GC is looked at."""
 
-_MOST_WINDOWS = 1 << 16
+_MOST_WINDOWS = 1 << 13
 
 _SHORTEST, _LOG_SPREAD = 100.0, 3.4
 """Expected lengths of a random start lie between 100 and 100 exp(3.4), about 3,000 bases."""
@@ -37,18 +38,12 @@ _JITTER = 0.5
 
 def word_counts(contigs: Sequence[Contig], order: int) -> NDArray[np.float64]:
     """Return float64[4**(order + 1)] counts of words of ``order + 1`` known bases."""
-    counts = np.zeros(missing_code(order) + 1, np.int64)
-    for contig in contigs:
-        for begin in range(0, len(contig), 1 << 22):
-            stop = min(begin + (1 << 22), len(contig))
-            codes = np.empty(stop - begin, code_dtype(order))
-            base_codes(contig.bases, order, contig.closed, begin, stop, codes)
-            counts += np.bincount(codes, minlength=len(counts))
+    counts = code_counts(contigs, order)
     return counts[code_offset(order) : missing_code(order)].astype(float)
 
 
 def _window_gc(contigs: Sequence[Contig]) -> NDArray[np.float64]:
-    """Return the GC of up to about 65,536 windows, evenly spread over all contigs, sorted."""
+    """Return the GC of up to about 8,192 windows, evenly spread over all contigs, sorted."""
     step = max(_WINDOW, sum(len(contig) for contig in contigs) // _MOST_WINDOWS)
     shares = []
     for contig in contigs:
