@@ -97,12 +97,6 @@ _order = click.option(
     metavar="N",
     help="Bases before it on which a base depends.",
 )
-_strands = click.option(
-    "--symmetric/--stranded",
-    default=True,
-    show_default=True,
-    help="Whether both strands are treated alike.",
-)
 _label = click.option(
     "--label", metavar="NAME", help="Use only intervals of this name, or of NAME with a number."
 )
@@ -130,7 +124,7 @@ _folds = click.option(
 @click.option("--calls", metavar="DIR", help="Instead, a folder of calls that decode wrote.")
 @_label
 @_order
-@_strands
+@options.strands
 @click.option(
     "--pseudocount",
     type=click.FloatRange(0),
@@ -182,7 +176,7 @@ def machine(model: str, output: str, force: bool) -> None:
     metavar="N",
     help="The highest order to try.",
 )
-@_strands
+@options.strands
 @_folds
 @_block
 @options.sequence_options()
@@ -224,7 +218,7 @@ def orders(
 )
 @_folds
 @_block
-@_strands
+@options.strands
 @click.option(
     "--max-order",
     type=click.IntRange(0, 8),

@@ -49,12 +49,7 @@ def survey(sources: Any, output: str, force: bool) -> None:
     metavar="N",
     help="Bases before it on which a base depends.",
 )
-@click.option(
-    "--symmetric/--stranded",
-    default=True,
-    show_default=True,
-    help="Whether both strands are treated alike.",
-)
+@options.strands
 @click.option(
     "--start",
     type=click.Choice(["stationary", "free"]),

@@ -7,7 +7,16 @@ from typing import Any
 
 import click
 
-__all__ = ["fasta", "force", "model", "output", "sequence_options", "threads", "train_bases"]
+__all__ = [
+    "fasta",
+    "force",
+    "model",
+    "output",
+    "sequence_options",
+    "strands",
+    "threads",
+    "train_bases",
+]
 
 Decorated = Callable[..., Any]
 
@@ -96,3 +105,10 @@ threads = click.option(
     "--threads", type=click.IntRange(1), default=_default_threads, metavar="T",
     help="Threads to use.  [default: the processors this process may use]",
 )  # fmt: skip
+
+strands = click.option(
+    "--symmetric/--stranded",
+    default=True,
+    show_default=True,
+    help="Whether both strands are treated alike.",
+)

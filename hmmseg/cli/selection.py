@@ -56,12 +56,7 @@ class _Numbers(click.ParamType):
     metavar="NUMBERS",
     help="Orders to try.",
 )
-@click.option(
-    "--symmetric/--stranded",
-    default=True,
-    show_default=True,
-    help="Whether both strands are treated alike.",
-)
+@options.strands
 @click.option(
     "--folds",
     type=click.IntRange(2, 50),
