@@ -11,7 +11,7 @@ from hmmseg.inference.passes import BlockEnds, find_ends
 from hmmseg.inference.streams import Corpus, Stream, in_threads
 from hmmseg.inference.tables import Tables, preferred_word, tables_for
 from hmmseg.kernels.blocks import block_kernels
-from hmmseg.kernels.matrices import unfold_kernel
+from hmmseg.kernels.matrices import add_heads, unfold_kernel
 from hmmseg.model import Model
 from hmmseg.model.machine import Machine
 
@@ -180,11 +180,8 @@ def _expect_strand(
     unfold_kernel(machine.states)(
         weights, tables.matrices, machine.order, tables.word, counts.transitions, counts.emissions
     )
-    kept = np.flatnonzero(~ends.lost & ~stream.closed)
-    heads = ends.heads[kept]
-    # Sums from the first to the last, so that they do not depend on how many there are.
-    counts.start[:] += np.cumsum(heads, axis=0)[-1] if len(kept) else 0.0
-    np.add.at(counts.emissions.T, stream.heads[kept], heads)
+    kept = ~(ends.lost | stream.closed)
+    add_heads(ends.heads, stream.heads, kept, counts.start, counts.emissions)
     for contig in np.flatnonzero(ends.lost):
         codes = stream.codes(int(contig))
         again = exact_pass(machine, corpus.contigs[contig], codes, reverse=reverse)
@@ -207,9 +204,10 @@ def _pair_weights(
     states, count = tables.matrices.shape[1], len(jobs.blocks)
     most = min(max(_GROUP_BYTES // tables.matrices.nbytes, _FEWEST_GROUPS), _MOST_GROUPS)
     groups = min(max(count // _GROUP_JOBS, _FEWEST_GROUPS), most)
-    edges = np.arange(groups + 1) * count // groups
+    # Blocks go in pairs, best of equal length, within their group: only the last may be odd.
+    edges = np.arange(groups + 1) * (count // 2) // groups * 2
+    edges[-1] = count
     flags = np.zeros(len(stream.bounds) - 1, bool)
-    # Blocks go in pairs, best of equal length, within their group.
     lengths = (stream.bounds[1:] - stream.bounds[:-1])[jobs.blocks]
     order = np.lexsort((lengths, np.repeat(np.arange(groups), edges[1:] - edges[:-1])))
     paired = jobs.taken(order)

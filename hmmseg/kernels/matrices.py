@@ -15,7 +15,7 @@ from hmmseg.kernels.arrays import all_zero, copy_matrix
 from hmmseg.kernels.compiling import helper, kernel
 from hmmseg.kernels.tokens import words_of
 
-__all__ = ["code_in_word", "fill_token_matrices", "smallest_entry", "unfold_kernel"]
+__all__ = ["add_heads", "code_in_word", "fill_token_matrices", "smallest_entry", "unfold_kernel"]
 
 
 @kernel
@@ -175,3 +175,27 @@ def unfold_kernel(states: int) -> Callable[..., Any]:
                     copy_matrix(scratch, outer)
 
     return unfold_counts
+
+
+@kernel
+def add_heads(heads, codes, kept, start_counts, emission_counts):
+    """Add what the first bases of contigs are expected to have been emitted by.
+
+    Parameters
+    ----------
+    heads : float64[contig, state]
+        Posterior of the state at the first base.
+    codes : int64[contig]
+        Code of the first base.
+    kept : bool[contig]
+        Contigs to add, in their order.
+    start_counts : float64[state]
+        Added to.
+    emission_counts : float64[state, code]
+        Added to.
+    """
+    for contig in range(kept.size):
+        if kept[contig]:
+            for j in range(start_counts.size):
+                start_counts[j] += heads[contig, j]
+                emission_counts[j, codes[contig]] += heads[contig, j]
