@@ -118,9 +118,9 @@ def classify(
     inputs = [*sources.files(), region, background, *([labels] if labels is not None else [])]
     with whole_folder(output, force=force) as folder:
         run = Run(caller, folder)
-        result, table = run.over(sources)
-        _check_called(result.contigs, run.not_called, windows)
-        summary = write_result(folder, result, table)
+        found = run.over(sources)
+        _check_called(found[0].contigs, run.not_called, windows)
+        summary = write_result(folder, *found)
         summary["classifier"] = {
             **windows._asdict(),
             "threshold_bits": chosen,

@@ -17,16 +17,25 @@ from hmmseg.outputs import PROVENANCE, check_target, whole_folder, write_json
 from hmmseg.progress import Progress, warn
 from hmmseg.provenance import is_current, write_provenance
 from hmmseg.regions.calling import PATH, POSTERIOR, Caller, Calls
+from hmmseg.regions.composition import (
+    WORDS,
+    Counts,
+    counts_of_record,
+    counts_together,
+    measures,
+)
 from hmmseg.regions.intervals import Filters
+from hmmseg.regions.islands import island_criteria
 from hmmseg.regions.masking import SOFT_MASKED, soft_masked_fraction
 from hmmseg.regions.table import number_regions, regions_of_record
 from hmmseg.sequence.contigs import Contig
 from hmmseg.sequence.reading import Record
 from hmmseg.tracks.bed import invalid_bed_names, write_regions_bed
+from hmmseg.tracks.counts import write_counts
 from hmmseg.tracks.gff3 import write_regions_gff3
 from hmmseg.tracks.sizes import write_chrom_sizes
 from hmmseg.tracks.spool import SpooledTrack
-from hmmseg.tracks.table import write_regions_table
+from hmmseg.tracks.table import COLUMNS, write_regions_table
 
 __all__ = ["Run", "Summary", "decode", "track_name", "write_result"]
 
@@ -148,22 +157,40 @@ def decode(  # noqa: PLR0913 - as many as the command has
         return earlier
     check_target(output, force)
     with whole_folder(output, force=force) as folder:
-        result, table = Run(caller, folder).over(sources)
-        summary = write_result(folder, result, table)
+        summary = write_result(folder, *Run(caller, folder).over(sources))
         written = sorted(path for path in folder.iterdir() if path.name != PROVENANCE)
         write_provenance(folder, "decode", parameters, None, inputs, written)
     return summary
 
 
-def write_result(folder: Path, result: Summary, table: pd.DataFrame) -> dict[str, Any]:
-    """Write everything but the tracks and the provenance; return the summary."""
+def write_result(
+    folder: Path, result: Summary, table: pd.DataFrame, counts: Counts
+) -> dict[str, Any]:
+    """Write everything but the tracks and the provenance; return the summary.
+
+    Parameters
+    ----------
+    folder
+        Where to.
+    result
+        What was decoded.
+    table
+        The regions, with or without the columns that follow from the counts.
+    counts
+        Of the genome and of each region.
+    """
     lengths = result.record_lengths
     if names := invalid_bed_names(lengths):
         warn(
             f"{len(names)} record names, {names[0]} first, hold other characters than the BED "
             "specification's A-Z a-z 0-9 _; most programs read them all the same"
         )
+    for columns in (measures(counts), island_criteria(counts.regions)):
+        table = table.assign(**columns)
     write_chrom_sizes(folder / "chrom.sizes", lengths)
+    write_counts(
+        folder / "composition.tsv", WORDS, counts.genome, counts.regions, table["region_id"]
+    )
     write_regions_bed(folder / "regions.bed", table, lengths)
     write_regions_table(folder / "regions.tsv", table)
     write_regions_gff3(folder / "regions.gff3", table, lengths, set(result.circular))
@@ -209,11 +236,12 @@ class Run:
         self._contigs = 0
         self._decoded = 0
         self._tables: list[pd.DataFrame] = []
+        self._counts: list[Counts] = []
         self.not_called = 0
         """Contigs that the caller could not call."""
 
-    def over(self, sources: Sources) -> tuple[Summary, pd.DataFrame]:
-        """Call all records; write the tracks; return what was found."""
+    def over(self, sources: Sources) -> tuple[Summary, pd.DataFrame, Counts]:
+        """Call all records; write the tracks; return what was found, and what it is made of."""
         with Progress(0, "decoding", "bases") as progress:
             for record, contigs in sources.read_contigs():
                 self._record(record, contigs)
@@ -228,7 +256,8 @@ class Run:
             decoded_bases=self._decoded,
             states=tuple(self._caller.names[state] for state in self._caller.states),
         )
-        return result, number_regions(self._tables) if self._tables else pd.DataFrame()
+        table = number_regions(self._tables) if self._tables else pd.DataFrame()
+        return result, table, counts_together(self._counts)
 
     def _record(self, record: Record, contigs: list[Contig]) -> None:
         self._lengths[record.name] = len(record)
@@ -236,7 +265,6 @@ class Run:
             self._circular.append(record.name)
         if not contigs:
             self._skipped.append(record.name)
-            return
         calls: list[tuple[Contig, Calls]] = []
         for contig in contigs:
             found = self._caller.call(contig, self._follower(contig))
@@ -246,10 +274,14 @@ class Run:
             calls.append((contig, found))
             self._contigs += 1
             self._decoded += len(contig)
+        starts = ends = np.empty(0, np.int64)
         if calls:
             table = regions_of_record(calls, self._caller.names)
-            table[SOFT_MASKED] = soft_masked_fraction(table, record)
+            # First behind the columns that every table has; the identifier is still to come.
+            table.insert(len(COLUMNS) - 1, SOFT_MASKED, soft_masked_fraction(table, record))
             self._tables.append(table)
+            starts, ends = (table[name].to_numpy(np.int64) for name in ("start", "end"))
+        self._counts.append(counts_of_record(record, starts, ends))
 
     def _follower(self, contig: Contig) -> Watch:
         """Return what takes the posteriors of a contig to the tracks."""

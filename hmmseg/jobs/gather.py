@@ -9,8 +9,10 @@ from hmmseg.errors import OutputError
 from hmmseg.jobs.decode import Summary, track_name, write_result
 from hmmseg.outputs import PROVENANCE, check_target, whole_folder
 from hmmseg.provenance import read_provenance, write_provenance
+from hmmseg.regions.composition import WORDS, Counts, counts_together
 from hmmseg.regions.table import number_regions
 from hmmseg.tracks.bigwig import PosteriorTrack, read_track
+from hmmseg.tracks.counts import read_counts
 from hmmseg.tracks.sizes import read_chrom_sizes
 from hmmseg.tracks.table import read_regions_table
 
@@ -55,13 +57,17 @@ def gather(parts: Sequence[str], output: str, force: bool) -> dict[str, Any]:
         states=states,
     )
     table = number_regions([read_regions_table(folder / "regions.tsv") for folder in folders])
+    # The parts know their own counts; what a region's distance to the genome is shows only here.
+    counts = counts_together(
+        [Counts(*read_counts(folder / "composition.tsv", WORDS)) for folder in folders]
+    )
     with whole_folder(output, force=force) as folder:
         for state in states:
             with PosteriorTrack(folder / track_name(state), lengths) as track:
                 for part in folders:
                     for record, starts, ends, values in read_track(part / track_name(state)):
                         track.add(record, starts, ends, values)
-        summary = write_result(folder, result, table)
+        summary = write_result(folder, result, table, counts)
         written = sorted(path for path in folder.iterdir() if path.name != PROVENANCE)
         inputs = [part / PROVENANCE for part in folders]
         write_provenance(folder, "gather", parameters, None, inputs, written)

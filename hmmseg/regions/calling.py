@@ -35,11 +35,15 @@ class Calls:
         Mean posterior of the region's state.
     log_odds_bits : float64[interval]
         Sum over the region of the state's log-odds against the background.
+    wrong_bases : float64[interval] or None
+        Expected number of bases in another state: the sum of 1 - posterior. None where the
+        values are no posteriors.
     """
 
     intervals: StateIntervals
     mean_posterior: NDArray[np.float64]
     log_odds_bits: NDArray[np.float64]
+    wrong_bases: NDArray[np.float64] | None = None
 
 
 @dataclass(frozen=True, eq=False)
@@ -135,7 +139,8 @@ def scored(contig: Contig, sums: Mapping[int, "RunningSums"], filters: Filters) 
             for start, end, state in zip(*found, strict=True)
         ]
     ).reshape(-1, 2)
-    return Calls(found, totals[:, 0] / (found.ends - found.starts), totals[:, 1])
+    lengths = found.ends - found.starts
+    return Calls(found, totals[:, 0] / lengths, totals[:, 1], lengths - totals[:, 0])
 
 
 class RunningSums:

@@ -8,10 +8,14 @@ import pandas as pd
 from hmmseg.regions.calling import Calls
 from hmmseg.sequence.contigs import Contig
 
-__all__ = ["number_regions", "regions_of_record"]
+__all__ = ["WRONG_BASES", "number_regions", "regions_of_record"]
+
+WRONG_BASES = "expected_wrong_bases"
+"""Name of the column."""
 
 _POSTERIOR_DECIMALS = 4
 _BITS_DECIMALS = 3
+_BASES_DECIMALS = 2
 
 
 def regions_of_record(calls: Sequence[tuple[Contig, Calls]], names: Sequence[str]) -> pd.DataFrame:
@@ -30,25 +34,25 @@ def regions_of_record(calls: Sequence[tuple[Contig, Calls]], names: Sequence[str
     -------
     DataFrame
         Columns record, start, end, length, state, mean_posterior, log_odds_bits; sorted by
-        start. The end of a region across the origin of a circle is start + length.
+        start. The end of a region across the origin of a circle is start + length. Then
+        expected_wrong_bases, if the calls have posteriors.
     """
     parts = []
     for contig, found in calls:
         starts = (found.intervals.starts + contig.start) % contig.record_length
         lengths = found.intervals.ends - found.intervals.starts
-        parts.append(
-            pd.DataFrame(
-                {
-                    "record": contig.record,
-                    "start": starts,
-                    "end": starts + lengths,
-                    "length": lengths,
-                    "state": [names[state] for state in found.intervals.states],
-                    "mean_posterior": np.round(found.mean_posterior, _POSTERIOR_DECIMALS),
-                    "log_odds_bits": np.round(found.log_odds_bits, _BITS_DECIMALS),
-                }
-            )
-        )
+        columns = {
+            "record": contig.record,
+            "start": starts,
+            "end": starts + lengths,
+            "length": lengths,
+            "state": [names[state] for state in found.intervals.states],
+            "mean_posterior": np.round(found.mean_posterior, _POSTERIOR_DECIMALS),
+            "log_odds_bits": np.round(found.log_odds_bits, _BITS_DECIMALS),
+        }
+        if found.wrong_bases is not None:
+            columns[WRONG_BASES] = np.round(found.wrong_bases, _BASES_DECIMALS)
+        parts.append(pd.DataFrame(columns))
     table = pd.concat(parts, ignore_index=True)
     return table.sort_values(["start", "end"], kind="stable", ignore_index=True)
 

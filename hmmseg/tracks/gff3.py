@@ -19,7 +19,9 @@ from hmmseg.tracks.table import DECIMALS, check_regions, fixed
 __all__ = ["write_regions_gff3"]
 
 SOURCE = "hmmseg"
-TYPE = "region"  # SO:0000001; the ontology has no term for a compositional domain
+REGION = "region"  # SO:0000001; the ontology has no term for a compositional domain
+ISLAND = "CpG_island"  # SO:0000307
+CRITERION = "gardiner_garden_1987"
 
 # Column 1 may hold [a-zA-Z0-9.:^*$@!+_?-|]; all else is percent-encoded.
 _SEQID_SAFE = ".:^*$@!+_?-|"
@@ -33,7 +35,10 @@ def write_regions_gff3(
     record_lengths: Mapping[str, int],
     circular: Collection[str],
 ) -> None:
-    """Write regions as GFF3, one feature of type ``region`` for each.
+    """Write regions as GFF3, one feature for each.
+
+    Its type is ``CpG_island`` if the table has a column ``gardiner_garden_1987`` that says
+    ``yes``, else ``region``.
 
     Positions are 1-based and both ends belong to the region. A region across the origin of a
     circular record is one feature whose end exceeds the record's length; its record then has a
@@ -76,23 +81,31 @@ def _feature_lines(table: pd.DataFrame, record_lengths: Mapping[str, int]) -> It
                     f"GFF3 cannot tell the record {record} from the region of that name; "
                     "rename the record"
                 )
-            yield _feature(record, (1, length), ".", {"ID": record, "Is_circular": "true"})
+            yield _feature(record, REGION, (1, length), ".", {"ID": record, "Is_circular": "true"})
         columns = ("start", "end", "log_odds_bits", "region_id", "state", "mean_posterior")
-        for start, end, odds, name, state, mean in zip(
-            *(regions[c].tolist() for c in columns), strict=True
+        if CRITERION in regions:
+            kinds = np.where(regions[CRITERION] == "yes", ISLAND, REGION).tolist()
+        else:
+            kinds = [REGION] * len(regions)
+        for kind, start, end, odds, name, state, mean in zip(
+            kinds, *(regions[c].tolist() for c in columns), strict=True
         ):
             score = fixed(odds, DECIMALS["log_odds_bits"]) if np.isfinite(odds) else "."
             mean_text = fixed(mean, DECIMALS["mean_posterior"])
             attributes = {"ID": name, "state": state, "mean_posterior": mean_text}
-            yield _feature(record, (start + 1, end), score, attributes)
+            yield _feature(record, kind, (start + 1, end), score, attributes)
 
 
 def _feature(
-    record: str, interval: tuple[int, int], score: str, attributes: Mapping[str, str]
+    record: str,
+    kind: str,
+    interval: tuple[int, int],
+    score: str,
+    attributes: Mapping[str, str],
 ) -> str:
     last = ";".join(f"{key}={value.translate(_ATTRIBUTE)}" for key, value in attributes.items())
     start, end = interval
-    fields = (_seqid(record), SOURCE, TYPE, str(start), str(end), score, ".", ".", last)
+    fields = (_seqid(record), SOURCE, kind, str(start), str(end), score, ".", ".", last)
     return "\t".join(fields)
 
 

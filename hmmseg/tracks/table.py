@@ -36,11 +36,25 @@ COLUMNS = (
     "mean_posterior",
     "log_odds_bits",
 )
-DECIMALS: Mapping[str, int] = {"mean_posterior": 4, "log_odds_bits": 3}
+DECIMALS: Mapping[str, int] = {
+    "mean_posterior": 4,
+    "log_odds_bits": 3,
+    "soft_masked_fraction": 4,
+    "expected_wrong_bases": 2,
+    "gc": 4,
+    "cpg_ratio": 4,
+    "gc_skew": 4,
+    "at_skew": 4,
+    "dinucleotide_entropy": 4,
+    "dinucleotide_distance": 4,
+}
+"""Decimals with which columns are written, wherever they are."""
+
 
 _TEXT = ("region_id", "record", "state")
 _WHOLE = ("start", "end", "length")
 _NOT_KNOWN = "NA"
+_WHOLE_NUMBER = r"0|-?[1-9][0-9]{0,17}"
 
 
 def write_regions_table(
@@ -55,8 +69,9 @@ def write_regions_table(
     table : DataFrame
         One row a region: the columns of `COLUMNS` come first, further ones after them.
     decimals : mapping, optional
-        Decimals of further columns of floating-point numbers; without an entry such a column
-        is written with six significant digits. A missing value is written ``NA``.
+        Decimals of columns of floating-point numbers, where they are not those of `DECIMALS`;
+        a column in neither is written with six significant digits. A missing value is written
+        ``NA``.
 
     Raises
     ------
@@ -67,7 +82,7 @@ def write_regions_table(
     if missing:
         raise OutputError(f"cannot write {path}: the table of regions lacks {', '.join(missing)}")
     names = [*COLUMNS, *(str(name) for name in table.columns if name not in COLUMNS)]
-    places = {**(decimals or {}), **DECIMALS}
+    places = {**DECIMALS, **(decimals or {})}
     columns = [_as_text(table[name], places.get(name)) for name in names]
     with open(path, "w", encoding="utf-8", newline="\n") as file:
         file.write("\t".join(names) + "\n")
@@ -84,8 +99,8 @@ def read_regions_table(path: str | Path) -> pd.DataFrame:
     Returns
     -------
     DataFrame
-        The columns of `COLUMNS` as text, int64 and float64; a further column as float64 if
-        all its values are numbers or ``NA``, as text otherwise.
+        The columns of `COLUMNS` as text, int64 and float64; a further column as int64 if all
+        its values are whole numbers, as float64 if all are numbers or ``NA``, as text otherwise.
 
     Raises
     ------
@@ -193,6 +208,8 @@ def _typed(column: "pd.Series[str]", path: str | Path) -> "pd.Series[Any]":
     numbers = pd.to_numeric(column.replace(_NOT_KNOWN, "nan"), errors="coerce")
     not_numbers = (numbers.isna() & ~column.isin([_NOT_KNOWN, "nan"])).to_numpy()
     if name not in COLUMNS:
+        if column.str.fullmatch(_WHOLE_NUMBER).to_numpy(dtype=bool).all():
+            return column.astype(np.int64)
         return column.astype(object) if not_numbers.any() else numbers.astype(np.float64)
     if name in _WHOLE:
         not_numbers = ~column.str.fullmatch(r"-?[0-9]{1,18}").to_numpy(dtype=bool)

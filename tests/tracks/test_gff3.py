@@ -159,6 +159,19 @@ def test_infinite_log_odds_are_no_score(tmp_path: Path) -> None:
     assert parse_gff3(text)[1][0].score is None
 
 
+def test_islands_have_their_own_type(tmp_path: Path) -> None:
+    # Sequence Ontology, from memory: SO:0000307 CpG_island, SO:0000001 region.
+    rows: list[Row] = [
+        ("a_1", "plasmid", 0, 5, "a", 0.5, 1.0),
+        ("b_1", "plasmid", 45, 55, "b", 0.5, 1.0),
+    ]
+    table = table_of(rows)
+    table["gardiner_garden_1987"] = ["no", "yes"]
+    features = parse_gff3(write(tmp_path / "x", table, LENGTHS, CIRCULAR))[1]
+    types = [(feature.attributes["ID"], feature.type) for feature in features]
+    assert types == [("plasmid", "region"), ("a_1", "region"), ("b_1", "CpG_island")]
+
+
 def test_refuses_to_cross_the_end_of_a_linear_record(tmp_path: Path) -> None:
     table = table_of([("a_1", "plasmid", 45, 55, "a", 0.5, 1.0)])
     with pytest.raises(OutputError, match="crosses the end of a record that is not circular"):

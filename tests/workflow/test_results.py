@@ -42,6 +42,7 @@ def test_each_assembly_has_its_results(name: str, results: Path) -> None:
     visible = {path.name for path in (folder / "calls").iterdir() if path.name[0] != "."}
     assert visible == tracks | {
         "chrom.sizes",
+        "composition.tsv",
         "provenance.json",
         "regions.bed",
         "regions.gff3",
