@@ -162,11 +162,14 @@ class Reliability(NamedTuple):
         Mean probability of the bin's bases, and the share of them that is true.
     bases : int64[bin]
         Bases in the bin; bins without any are left out.
+    bins : int64[bin]
+        Number of the bin, 0 the lowest.
     """
 
     said: Floats
     seen: Floats
     bases: NDArray[np.int64]
+    bins: NDArray[np.int64]
 
 
 def reliability(
@@ -194,5 +197,8 @@ def reliability(
     true = np.bincount(chosen, weights=positives, minlength=bins)
     used = count > 0
     return Reliability(
-        said[used] / count[used], true[used] / count[used], count[used].astype(np.int64)
+        said[used] / count[used],
+        true[used] / count[used],
+        count[used].astype(np.int64),
+        np.flatnonzero(used),
     )
