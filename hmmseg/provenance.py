@@ -20,8 +20,10 @@ __all__ = [
     "FORMAT",
     "VERSION",
     "is_current",
+    "is_intact",
     "provenance_path",
     "read_provenance",
+    "software",
     "write_provenance",
 ]
 
@@ -102,11 +104,17 @@ def is_current(
     # Through JSON, so that both have been written and read.
     if json.loads(json.dumps(expected)) != {k: v for k, v in found.items() if k != "outputs"}:
         return False
+    return is_intact(result, found)
+
+
+def is_intact(folder_or_file: str | Path, document: Mapping[str, Any]) -> bool:
+    """Tell whether all files of a result are there, as its provenance describes them."""
+    result = Path(folder_or_file)
     root = result if result.is_dir() else result.parent
     return all(
         (root / entry["name"]).is_file()
         and _fingerprint(root / entry["name"], entry["name"]) == entry
-        for entry in found["outputs"]
+        for entry in document["outputs"]
     )
 
 
@@ -117,7 +125,7 @@ def _origin(
     return {
         "format": FORMAT,
         "version": VERSION,
-        "software": _software(),
+        "software": software(),
         "command": command,
         "parameters": {k: _plain(v) for k, v in parameters.items() if k not in _NOT_RESULT},
         "seed": None if seed is None else int(seed),
@@ -161,7 +169,8 @@ def read_provenance(folder_or_file: str | Path) -> dict[str, Any]:
     return document
 
 
-def _software() -> dict[str, str]:
+def software() -> dict[str, str]:
+    """Return the versions of what computes and writes results."""
     versions = {"hmmseg": __version__, "python": platform.python_version()}
     versions |= {name: metadata.version(name) for name in _SOFTWARE}
     # Another zlib may compress the same content to other bytes.

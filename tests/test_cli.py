@@ -89,34 +89,6 @@ def test_same_bytes_again_and_on_two_threads(here: Path) -> None:
     assert one == two
 
 
-def test_batches_gathered_equal_whole(here: Path) -> None:
-    decode = ["decode", "some.fa", "--model", "model.json"]
-    assert main([*decode, "--output", "whole"]) == 0
-    assert main(["batches", "some.fa", "--batch-bases", "5000", "--output", "batches"]) == 0
-    names = sorted(path.name for path in (here / "batches").glob("batch-*.txt"))
-    assert len(names) == 3
-    for name in names:
-        listed = ["--records", f"batches/{name}", "--output", f"parts/{name}"]
-        assert main([*decode, *listed]) == 0
-    assert main(["gather", *(f"parts/{name}" for name in names), "--output", "gathered"]) == 0
-    whole, gathered = (
-        {p.name: p.read_bytes() for p in (here / name).iterdir() if p.name != "provenance.json"}
-        for name in ("whole", "gathered")
-    )
-    assert whole == gathered
-
-
-def test_batch_is_never_nothing_but_gaps(here: Path) -> None:
-    """Such a batch would be refused, as an assembly of gaps is."""
-    gaps = "N" * 100
-    sequence = "ACGTTGCA" * 500
-    names = {"gaps_1": gaps, "one": sequence, "two": sequence, "gaps_2": gaps}
-    (here / "mixed.fa").write_text("".join(f">{name}\n{text}\n" for name, text in names.items()))
-    assert main(["batches", "mixed.fa", "--batch-bases", "10", "--output", "batches"]) == 0
-    lists = [p.read_text().split() for p in sorted((here / "batches").glob("batch-*.txt"))]
-    assert lists == [["gaps_1", "one"], ["two", "gaps_2"]]
-
-
 def test_simulated_truth_is_recovered(here: Path) -> None:
     simulate = ["simulate", "--model", "model.json", "--records", "2", "--length", "30000"]
     assert main([*simulate, "--seed", "3", "--output", "drawn"]) == 0

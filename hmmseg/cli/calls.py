@@ -1,63 +1,79 @@
 """Commands about calls."""
 
+from collections.abc import Callable
 from typing import Any
 
 import click
 
 from hmmseg.cli import options
 
-__all__ = ["batches", "decode", "gather", "summary", "verify"]
+__all__ = ["batches", "cut", "decode", "gather", "summary", "verify"]
 
 # Rooms are imported inside the commands, so that --help need not wait for compilers and plots.
+
+
+def calling_options(function: Callable[..., Any]) -> Callable[..., Any]:
+    """Add the options that bear on which regions are called."""
+    added = [
+        click.option(
+            "--decoder",
+            type=click.Choice(["path", "posterior"]),
+            default=None,
+            help="Best path, or posterior over a threshold.  [default: path; posterior for stages]",
+        ),
+        click.option(
+            "--threshold",
+            type=click.FloatRange(0, 1, max_open=True),
+            default=0.5,
+            show_default=True,
+            metavar="P",
+            help="For the posterior decoder.",
+        ),
+        click.option(
+            "--min-length",
+            type=click.IntRange(1),
+            default=1,
+            show_default=True,
+            metavar="L",
+            help="Drop regions shorter than this many bases.",
+        ),
+        click.option(
+            "--merge-gap",
+            type=click.IntRange(0),
+            default=0,
+            show_default=True,
+            metavar="G",
+            help="Merge regions of one state at most this far apart, first of all.",
+        ),
+    ]
+    for option in reversed(added):
+        function = option(function)
+    return function
 
 
 @click.command()
 @click.argument("fasta", metavar="FASTA")
 @options.model
 @options.output
+@calling_options
 @click.option(
-    "--decoder",
-    type=click.Choice(["path", "posterior"]),
-    default=None,
-    help="Best path, or posterior over a threshold.  [default: path; posterior for stages]",
-)
-@click.option(
-    "--threshold",
-    type=click.FloatRange(0, 1, max_open=True),
-    default=0.5,
-    show_default=True,
-    metavar="P",
-    help="For the posterior decoder.",
-)
-@click.option(
-    "--min-length",
-    type=click.IntRange(1),
-    default=1,
-    show_default=True,
-    metavar="L",
-    help="Drop regions shorter than this many bases.",
-)
-@click.option(
-    "--merge-gap",
-    type=click.IntRange(0),
-    default=0,
-    show_default=True,
-    metavar="G",
-    help="Merge regions of one state at most this far apart, first of all.",
+    "--reuse",
+    is_flag=True,
+    help="Keep an earlier result that would come out the same; replace any other.",
 )
 @options.sequence_options(soft_mask=True)
 @options.threads
 @options.force
 def decode(
     sources: Any, model: str, output: str, decoder: str | None, threshold: float, min_length: int,
-    merge_gap: int, threads: int, force: bool,
+    merge_gap: int, reuse: bool, threads: int, force: bool,
 ) -> None:  # fmt: skip
     """Call regions and write their posterior tracks."""
     from hmmseg.jobs import decode as job
     from hmmseg.regions.intervals import Filters
 
     filters = Filters(min_length, merge_gap)
-    found = job.decode(
+    found = (job.decode_once if reuse else job.decode)(
         sources, model, output, decoder=decoder, threshold=threshold, filters=filters,
         threads=threads, force=force,
     )  # fmt: skip
@@ -70,9 +86,16 @@ def print_regions(found: dict[str, Any]) -> None:
         click.echo(f"{state}\t{numbers['count']}\t{numbers['bases']}\t{numbers['share']:.4f}")
 
 
+_plan = click.option(
+    "--batches", "planned", required=True, metavar="DIR", help="Folder written by batches."
+)
+
+
 @click.command()
 @options.fasta
+@options.model
 @options.output
+@click.option("--parts", metavar="DIR", help="Where results of batches are kept, each by its key.")
 @click.option(
     "--batch-bases",
     type=click.IntRange(1),
@@ -81,24 +104,46 @@ def print_regions(found: dict[str, Any]) -> None:
     metavar="N",
     help="Bases in a batch.",
 )
-@options.sequence_options(circular=False)
+@calling_options
+@options.sequence_options(soft_mask=True)
 @options.force
-def batches(sources: Any, output: str, batch_bases: int, force: bool) -> None:
-    """Share records out to batches of about equal size."""
+def batches(
+    sources: Any, model: str, output: str, parts: str | None, batch_bases: int, force: bool,
+    **calling: Any,
+) -> None:  # fmt: skip
+    """Share records out to batches by their content, and find which are decoded already."""
     from hmmseg.jobs import batches as job
 
-    click.echo(f"{job.batches(sources, output, batch_bases, force)} batches")
+    plan = job.batches(
+        sources, model, output, parts=parts, batch_bases=batch_bases, options=calling, force=force
+    )
+    reused = len(plan.batches) - len(plan.missing)
+    click.echo(f"{len(plan.batches)} batches, {reused} of them decoded already")
 
 
 @click.command()
-@click.argument("folders", nargs=-1, required=True, metavar="DIR...")
+@options.fasta
+@_plan
+@options.output
+@options.sequence_options()
+@options.force
+def cut(sources: Any, planned: str, output: str, force: bool) -> None:
+    """Write the sequence of each batch that is to be decoded."""
+    from hmmseg.jobs import cut as job
+
+    click.echo(f"{job.cut(sources, planned, output, force)} batches")
+
+
+@click.command()
+@click.argument("planned", metavar="BATCHES")
+@click.option("--parts", required=True, metavar="DIR", help="Where the batches' results are.")
 @options.output
 @options.force
-def gather(folders: tuple[str, ...], output: str, force: bool) -> None:
+def gather(planned: str, parts: str, output: str, force: bool) -> None:
     """Put the calls of batches together."""
     from hmmseg.jobs import gather as job
 
-    print_regions(job.gather(folders, output, force))
+    print_regions(job.gather(planned, parts, output, force))
 
 
 @click.command()

@@ -7,7 +7,7 @@ import click
 from hmmseg.cli import options
 from hmmseg.errors import UsageError
 
-__all__ = ["explain", "presets", "print_findings", "score", "simulate", "survey", "train"]
+__all__ = ["adopt", "explain", "presets", "print_findings", "score", "simulate", "survey", "train"]
 
 # Rooms are imported inside the commands, so that --help need not wait for compilers and plots.
 
@@ -167,6 +167,18 @@ def explain(model: str) -> None:
     from hmmseg.jobs import explain as job
 
     found = job.explain(model)
+    print_findings(found.findings, found.cautions)
+
+
+@click.command()
+@click.argument("model", metavar="MODEL.json")
+@click.option("--output", required=True, metavar="COPY.json", help="Model document to write.")
+@options.force
+def adopt(model: str, output: str, force: bool) -> None:
+    """Check a model and copy it, to be used as it is."""
+    from hmmseg.jobs import adopt as job
+
+    found = job.adopt(model, output, force)
     print_findings(found.findings, found.cautions)
 
 

@@ -10,7 +10,7 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from hmmseg.errors import ModelError
+from hmmseg.errors import ModelError, OutputError
 from hmmseg.jobs.sources import Sources
 from hmmseg.model import load_model
 from hmmseg.outputs import PROVENANCE, check_target, whole_folder, write_json
@@ -29,15 +29,17 @@ from hmmseg.regions.islands import island_criteria
 from hmmseg.regions.masking import SOFT_MASKED, soft_masked_fraction
 from hmmseg.regions.table import number_regions, regions_of_record
 from hmmseg.sequence.contigs import Contig
+from hmmseg.sequence.identity import Checksums, checksums
 from hmmseg.sequence.reading import Record
 from hmmseg.tracks.bed import invalid_bed_names, write_regions_bed
 from hmmseg.tracks.counts import write_counts
 from hmmseg.tracks.gff3 import write_regions_gff3
+from hmmseg.tracks.records import RecordRow, write_record_table
 from hmmseg.tracks.sizes import write_chrom_sizes
 from hmmseg.tracks.spool import SpooledTrack
 from hmmseg.tracks.table import COLUMNS, write_regions_table
 
-__all__ = ["Run", "Summary", "decode", "track_name", "write_result"]
+__all__ = ["Run", "Summary", "decode", "decode_once", "track_name", "write_result"]
 
 Watch = Callable[[int, NDArray[np.float64]], None]
 
@@ -50,6 +52,8 @@ class Summary:
     ----------
     record_lengths : mapping
         Of every record, in order.
+    sequences : mapping
+        Checksums of every record's letters.
     circular : tuple of str
         Circular records.
     skipped : tuple of str
@@ -61,6 +65,7 @@ class Summary:
     """
 
     record_lengths: Mapping[str, int]
+    sequences: Mapping[str, Checksums]
     circular: tuple[str, ...]
     skipped: tuple[str, ...]
     contigs: int
@@ -163,6 +168,28 @@ def decode(  # noqa: PLR0913 - as many as the command has
     return summary
 
 
+def decode_once(
+    sources: Sources, model_path: str, output: str, *, force: bool, **options: Any
+) -> dict[str, Any]:
+    """Do as :func:`decode` does, unless an earlier result, or one made meanwhile, is the same.
+
+    Parameters
+    ----------
+    sources, model_path, output
+        As of :func:`decode`.
+    force
+        Not needed: a result that would not come out the same is damaged, and replaced.
+    options
+        As of :func:`decode`.
+    """
+    try:
+        return decode(sources, model_path, output, force=force, reuse=True, **options)
+    except OutputError:
+        if not (Path(output) / PROVENANCE).is_file():
+            raise
+    return decode(sources, model_path, output, force=True, reuse=True, **options)
+
+
 def write_result(
     folder: Path, result: Summary, table: pd.DataFrame, counts: Counts
 ) -> dict[str, Any]:
@@ -191,9 +218,15 @@ def write_result(
     write_counts(
         folder / "composition.tsv", WORDS, counts.genome, counts.regions, table["region_id"]
     )
+    circular = set(result.circular)
+    rows = (
+        RecordRow(name, length, name in circular, result.sequences[name])
+        for name, length in lengths.items()
+    )
+    write_record_table(folder / "records.tsv", rows)
     write_regions_bed(folder / "regions.bed", table, lengths)
     write_regions_table(folder / "regions.tsv", table)
-    write_regions_gff3(folder / "regions.gff3", table, lengths, set(result.circular))
+    write_regions_gff3(folder / "regions.gff3", table, lengths, circular)
     summary = result.to_dict(table)
     write_json(folder / "summary.json", summary)
     return summary
@@ -231,6 +264,7 @@ class Run:
             state: SpooledTrack(folder / track_name(caller.names[state])) for state in caller.states
         }
         self._lengths: dict[str, int] = {}
+        self._sequences: dict[str, Checksums] = {}
         self._circular: list[str] = []
         self._skipped: list[str] = []
         self._contigs = 0
@@ -250,6 +284,7 @@ class Run:
             track.finish(self._lengths)
         result = Summary(
             record_lengths=self._lengths,
+            sequences=self._sequences,
             circular=tuple(self._circular),
             skipped=tuple(self._skipped),
             contigs=self._contigs,
@@ -261,6 +296,7 @@ class Run:
 
     def _record(self, record: Record, contigs: list[Contig]) -> None:
         self._lengths[record.name] = len(record)
+        self._sequences[record.name] = checksums(record.bases)
         if record.circular:
             self._circular.append(record.name)
         if not contigs:

@@ -1,32 +1,40 @@
-"""The command ``gather``: put the calls of several batches together."""
+"""The command ``gather``: put the calls of an assembly's batches together."""
 
 import json
 from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
+import numpy as np
+import pandas as pd
+
 from hmmseg.errors import OutputError
 from hmmseg.jobs.decode import Summary, track_name, write_result
+from hmmseg.jobs.plan import Plan, read_plan
 from hmmseg.outputs import PROVENANCE, check_target, whole_folder
-from hmmseg.provenance import read_provenance, write_provenance
+from hmmseg.provenance import is_intact, read_provenance, write_provenance
 from hmmseg.regions.composition import WORDS, Counts, counts_together
 from hmmseg.regions.table import number_regions
-from hmmseg.tracks.bigwig import PosteriorTrack, read_track
+from hmmseg.tracks.bigwig import PosteriorTrack
+from hmmseg.tracks.collection import TrackCollection
 from hmmseg.tracks.counts import read_counts
-from hmmseg.tracks.sizes import read_chrom_sizes
 from hmmseg.tracks.table import read_regions_table
 
 __all__ = ["gather", "read_summary"]
 
+_OF_ONE_BATCH = frozenset({"fasta", "exclude"})
+"""Parameters in which the parts of one assembly differ."""
 
-def gather(parts: Sequence[str], output: str, force: bool) -> dict[str, Any]:
-    """Write one folder of calls from those of batches, as if they had been decoded together.
+
+def gather(planned: str, parts: str, output: str, force: bool) -> dict[str, Any]:
+    """Write one folder of calls from those of batches, as if the assembly had been decoded whole.
 
     Parameters
     ----------
+    planned
+        The folder that ``batches`` has written.
     parts
-        Folders written by ``decode`` with one model and one set of options, in the order of
-        their records.
+        The folder that holds the results of its batches, each under its key.
     output
         The folder to write.
     force
@@ -40,36 +48,32 @@ def gather(parts: Sequence[str], output: str, force: bool) -> dict[str, Any]:
     Raises
     ------
     OutputError
-        A folder is no result of ``decode``, or two do not belong together.
+        The result of a batch is missing or damaged, or two do not belong together.
     """
     check_target(output, force)
-    folders = [Path(part) for part in parts]
-    parameters = _common_parameters(folders)
-    summaries = [read_summary(folder) for folder in folders]
-    lengths = _record_lengths(folders)
+    plan = read_plan(planned)
+    folders = {batch.key: Path(parts) / batch.key for batch in plan.batches}
+    model = _common_model(list(folders.values()), planned)
+    summaries = [read_summary(folder) for folder in folders.values()]
+    lengths = {record.name: record.length for record in plan.records}
     states = tuple(summaries[0]["regions"])
     result = Summary(
         record_lengths=lengths,
-        circular=tuple(name for one in summaries for name in one["circular_records"]),
-        skipped=tuple(name for one in summaries for name in one["skipped_records"]),
+        sequences={record.name: record.sequence for record in plan.records},
+        circular=tuple(record.name for record in plan.records if record.circular),
+        skipped=tuple(record.name for record in plan.records if not record.batch),
         contigs=sum(one["contigs"] for one in summaries),
         decoded_bases=sum(one["decoded_bases"] for one in summaries),
         states=states,
     )
-    table = number_regions([read_regions_table(folder / "regions.tsv") for folder in folders])
-    # The parts know their own counts; what a region's distance to the genome is shows only here.
-    counts = counts_together(
-        [Counts(*read_counts(folder / "composition.tsv", WORDS)) for folder in folders]
-    )
+    table, counts = _regions(plan, list(folders.values()), Path(planned))
     with whole_folder(output, force=force) as folder:
         for state in states:
-            with PosteriorTrack(folder / track_name(state), lengths) as track:
-                for part in folders:
-                    for record, starts, ends, values in read_track(part / track_name(state)):
-                        track.add(record, starts, ends, values)
+            _join_tracks(plan, folders, track_name(state), folder / track_name(state))
         summary = write_result(folder, result, table, counts)
         written = sorted(path for path in folder.iterdir() if path.name != PROVENANCE)
-        inputs = [part / PROVENANCE for part in folders]
+        inputs = [one / PROVENANCE for one in (Path(planned), *folders.values())]
+        parameters = {**plan.parameters, "model": model}
         write_provenance(folder, "gather", parameters, None, inputs, written)
     return summary
 
@@ -92,33 +96,58 @@ def read_summary(folder: Path) -> dict[str, Any]:
     return document
 
 
-def _common_parameters(folders: Sequence[Path]) -> dict[str, Any]:
-    """Return the parameters that all parts share, and raise if they differ in what matters."""
-    if not folders:
-        raise OutputError("gather: no folder given; name those written by decode")
+def _regions(plan: Plan, folders: Sequence[Path], planned: Path) -> tuple[pd.DataFrame, Counts]:
+    """Return the regions of all batches by the names and in the order of the records.
+
+    The parts know their own counts; what a region's distance to the genome is shows only here.
+    """
+    table = number_regions([read_regions_table(folder / "regions.tsv") for folder in folders])
+    counts = counts_together([_counts(folder) for folder in (*folders, planned)])
+    placed = [record for record in plan.records if record.batch]
+    rank = {record.alias: number for number, record in enumerate(placed)}
+    ranks = np.array([rank[alias] for alias in table["record"]], dtype=np.int64)
+    order = np.argsort(ranks, kind="stable")
+    table = table.iloc[order].reset_index(drop=True)
+    table["record"] = [placed[number].name for number in ranks[order]]
+    return number_regions([table]), Counts(counts.genome, counts.regions[order])
+
+
+def _counts(folder: Path) -> Counts:
+    return Counts(*read_counts(folder / "composition.tsv", WORDS))
+
+
+def _join_tracks(plan: Plan, folders: Mapping[str, Path], name: str, output: Path) -> None:
+    lengths = {record.name: record.length for record in plan.records}
+    with PosteriorTrack(output, lengths) as track, TrackCollection() as collection:
+        for record in plan.records:
+            if record.batch:
+                for runs in collection.runs(folders[record.batch] / name, record.alias):
+                    track.add(record.name, *runs)
+
+
+def _common_model(folders: Sequence[Path], planned: str) -> str:
+    """Return the name of the model, and raise if parts are absent, damaged or not alike."""
     first: Mapping[str, Any] = {}
-    for number, folder in enumerate(folders):
+    for folder in folders:
+        if not folder.is_dir():
+            raise OutputError(
+                f"{folder}: the result of this batch is gone; remove {planned} and give the "
+                "command again"
+            )
         document = read_provenance(folder)
-        shared = {key: value for key, value in document["parameters"].items() if key != "records"}
+        if not is_intact(folder, document):
+            raise OutputError(
+                f"{folder}: damaged; remove it and {planned}, and give the command again"
+            )
+        if document["command"] != "decode":
+            raise OutputError(f"{folder}: made by {document['command']}, not by decode")
+        shared = {k: v for k, v in document["parameters"].items() if k not in _OF_ONE_BATCH}
         model = [one for one in document["inputs"] if one["name"] == shared.get("model")]
-        described = {**shared, "command": document["command"], "model_file": model}
-        if number == 0:
-            first = described
+        described = {**shared, "model_file": model}
+        first = first or described
         for key, value in described.items():
             if first.get(key) != value:
                 raise OutputError(
                     f"{folder}: made with another {key} than {folders[0]}; decode both alike"
                 )
-    if first["command"] != "decode":
-        raise OutputError(f"{folders[0]}: made by {first['command']}, not by decode")
-    return {key: value for key, value in first.items() if key not in ("command", "model_file")}
-
-
-def _record_lengths(folders: Sequence[Path]) -> dict[str, int]:
-    lengths: dict[str, int] = {}
-    for folder in folders:
-        for record, length in read_chrom_sizes(folder / "chrom.sizes").items():
-            if record in lengths:
-                raise OutputError(f"{folder}: record {record} is in an earlier folder, too")
-            lengths[record] = length
-    return lengths
+    return str(first["model"])

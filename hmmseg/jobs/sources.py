@@ -1,9 +1,12 @@
 """What a command reads: sequence files, and which records and parts of them."""
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
 
 from hmmseg.errors import SequenceError
 from hmmseg.progress import warn
@@ -90,6 +93,10 @@ class Sources:
         return (
             (list(everything), False) if bases is None else sample_contigs(everything, bases, seed)
         )
+
+    def exclusions(self) -> Mapping[str, NDArray[np.int64]]:
+        """Return the intervals of each record that are left out, int64[interval, 2]."""
+        return self._selection().exclude
 
     def _selection(self) -> Selection:
         return Selection.from_options(self.records, self.min_record, self.exclude, self.circular)

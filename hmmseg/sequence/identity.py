@@ -2,15 +2,59 @@
 
 import hashlib
 from collections.abc import Iterator
+from typing import NamedTuple
 
 import numpy as np
 import numpy.typing as npt
 
-from hmmseg.sequence.alphabet import CHUNK, reverse_complement
+from hmmseg.sequence.alphabet import CHUNK, decode, reverse_complement
+from hmmseg.sequence.reading import Record
 
-__all__ = ["strand_digest"]
+__all__ = ["Checksums", "checksums", "record_digest", "strand_digest"]
 
 Bases = npt.NDArray[np.uint8]
+
+
+class Checksums(NamedTuple):
+    """SHA-256 of a sequence in upper-case letters, all but A C G T written N, and of its reverse.
+
+    Attributes
+    ----------
+    given, reverse : str
+        Of the sequence as written, and of its reverse complement, in hexadecimal digits.
+    """
+
+    given: str
+    reverse: str
+
+
+def checksums(bases: Bases) -> Checksums:
+    """Checksums by which records of two assemblies can be recognised; bases uint8[position]."""
+    found = []
+    for other in (False, True):
+        digest = hashlib.sha256()
+        for piece in _pieces(bases, other):
+            digest.update(decode(piece).encode("ascii"))
+        found.append(digest.hexdigest())
+    return Checksums(*found)
+
+
+def record_digest(record: Record, given: str, exclude: npt.NDArray[np.int64] | None) -> str:
+    """SHA-256 of everything about a record that bears on its calls; its name does not.
+
+    Parameters
+    ----------
+    record : Record
+    given : str
+        The checksum of its sequence as written.
+    exclude : int64[interval, 2], optional
+        Intervals of it that are left out.
+    """
+    digest = hashlib.sha256(f"{given} {len(record)} {record.circular}".encode())
+    for intervals in (record.n_runs, record.soft_mask, exclude):
+        listed = [] if intervals is None else intervals.tolist()
+        digest.update(f"{listed}".encode())
+    return digest.hexdigest()
 
 
 def strand_digest(bases: Bases) -> bytes:

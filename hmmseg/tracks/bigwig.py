@@ -22,7 +22,14 @@ from hmmseg.errors import OutputError
 from hmmseg.tracks.bbi import RUN
 from hmmseg.tracks.bigwig_file import RUNS_IN_BLOCK, BigWigReader, BigWigWriter
 
-__all__ = ["PosteriorTrack", "TrackSummary", "read_track", "rounded_runs", "summarize_track"]
+__all__ = [
+    "PosteriorTrack",
+    "TrackSummary",
+    "explained_reading",
+    "read_track",
+    "rounded_runs",
+    "summarize_track",
+]
 
 MAX_LENGTH = 2**32 - 1
 LEVELS = 1000.0
@@ -243,7 +250,7 @@ def summarize_track(path: str | Path) -> TrackSummary:
         If the file is no readable bigWig.
     """
     bases, total, low, high = 0, 0.0, np.inf, -np.inf
-    with _explained_reading(path), BigWigReader(path) as file:
+    with explained_reading(path), BigWigReader(path) as file:
         record_lengths = file.record_lengths
         lengths = list(record_lengths.values())
         for record, runs in file.runs():
@@ -275,7 +282,7 @@ def read_track(path: str | Path) -> Iterator[tuple[str, _Integers, _Integers, _N
     OutputError
         If the file is no readable bigWig.
     """
-    with _explained_reading(path), BigWigReader(path) as file:
+    with explained_reading(path), BigWigReader(path) as file:
         names = list(file.record_lengths)
         for record, runs in file.runs():
             starts, ends = runs["start"].astype(np.int64), runs["end"].astype(np.int64)
@@ -283,7 +290,8 @@ def read_track(path: str | Path) -> Iterator[tuple[str, _Integers, _Integers, _N
 
 
 @contextmanager
-def _explained_reading(path: str | Path) -> Iterator[None]:
+def explained_reading(path: str | Path) -> Iterator[None]:
+    """Raise OutputError for what reading a damaged bigWig file may raise."""
     try:
         yield
     except (ValueError, IndexError, struct.error, zlib.error) as error:

@@ -5,6 +5,7 @@ import struct
 import zlib
 from collections.abc import Iterable, Iterator, Mapping
 from contextlib import suppress
+from functools import cached_property
 from pathlib import Path
 
 import numpy as np
@@ -204,19 +205,40 @@ class BigWigReader:
 
     def __exit__(self, *_: object) -> None:
         """Close the file."""
+        self.close()
+
+    def close(self) -> None:
+        """Close the file."""
         self._content.close()
 
     def runs(self) -> Iterator[tuple[int, NDArray[np.void]]]:
         """Yield the number of the record and the runs (RUN[run]) of each block, in order."""
+        for leaf in self._leaves(self._root(), BLOCK, bbi.BRANCH):
+            yield from self._unpacked(leaf)
+
+    def runs_of(self, number: int) -> Iterator[NDArray[np.void]]:
+        """Yield the runs (RUN[run]) of each block of one record, in order."""
+        first, last = np.searchsorted(self._blocks["record"], (number, number + 1))
+        for _, runs in self._unpacked(self._blocks[first:last]):
+            yield runs
+
+    @cached_property
+    def _blocks(self) -> Items:
+        """All blocks, BLOCK[block], in the order of records."""
+        leaves = [np.empty(0, BLOCK), *self._leaves(self._root(), BLOCK, bbi.BRANCH)]
+        return np.concatenate(leaves)
+
+    def _root(self) -> int:
         magic = bbi.INDEX_HEADER.unpack_from(self._content, self._index_at)[0]
         if magic != bbi.INDEX_MAGIC:
             raise ValueError("no index")
-        root = self._index_at + bbi.INDEX_HEADER.size
-        for leaf in self._leaves(root, BLOCK, bbi.BRANCH):
-            for block in leaf:
-                start = int(block["offset"])
-                content = self._content[start : start + int(block["size"])]
-                yield bbi.unpack_section(zlib.decompress(content))
+        return self._index_at + bbi.INDEX_HEADER.size
+
+    def _unpacked(self, blocks: Items) -> Iterator[tuple[int, NDArray[np.void]]]:
+        for block in blocks:
+            start = int(block["offset"])
+            content = self._content[start : start + int(block["size"])]
+            yield bbi.unpack_section(zlib.decompress(content))
 
     def _read_names(self, offset: int) -> dict[str, int]:
         magic, _, size, *_ = bbi.NAMES_HEADER.unpack_from(self._content, offset)

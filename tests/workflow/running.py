@@ -21,7 +21,16 @@ _PROFILE = ROOT / "workflow" / "profiles" / "default"
 
 def _environment() -> dict[str, str]:
     """Environment without what another Snakemake or pytest run around this one has set."""
-    kept = ("PATH", "HOME", "LANG", "LC_ALL", "TMPDIR", "XDG_CACHE_HOME", "NUMBA_CACHE_DIR")
+    kept = (
+        "PATH",
+        "PYTHONPATH",
+        "HOME",
+        "LANG",
+        "LC_ALL",
+        "TMPDIR",
+        "XDG_CACHE_HOME",
+        "NUMBA_CACHE_DIR",
+    )
     return {name: os.environ[name] for name in kept if name in os.environ}
 
 

@@ -32,6 +32,15 @@ SHEETS = {
     "assembly\tfasta\tpreset\torder\na\ta.fa\tx\t1\n": (2, "order", "comes with the preset"),
     "assembly\tfasta\tpreset\tinit\na\ta.fa\tx\tm.json\n": (2, "init", "one of the two"),
     "assembly\tfasta\tstart\na\ta.fa\tfree\n": (2, "start", "stranded"),
+    "assembly\tfasta\tspec\tinit\na\ta.fa\tb.fa\tm.json\n": (2, "init", "one of the two"),
+    "assembly\tfasta\tspec\tstates\na\ta.fa\tb.fa\t3\n": (2, "states", "comes with the spec"),
+    "assembly\tfasta\ttrain_labels\na\ta.fa\tx.bed\n": (2, "train_labels", "no file x.bed"),
+    "assembly\tfasta\ttrain_bases\na\ta.fa\t-1\n": (2, "train_bases", "minimum"),
+    "assembly\tfasta\tlabels\na\ta.fa\tb.fa\n": (2, "labels", "compare"),
+    "assembly\tfasta\tmodel\na\ta.fa\tnone.json\n": (2, "model", "no file none.json"),
+    "assembly\tfasta\tmodel\na\ta.fa\tm.json\n": (2, "model", "m.json"),
+    "assembly\tfasta\tmodel\tpreset\na\ta.fa\tm.json\tx\n": (2, "preset", "for training"),
+    "assembly\tfasta\tmodel\tfix\na\ta.fa\tm.json\tstart\n": (2, "fix", "for training"),
 }
 CONFIGS = {
     # what stands behind --config: the key that the message must name, and a word of the reason
@@ -43,6 +52,7 @@ CONFIGS = {
     "select_orders=2": ("select_orders", "array"),
     "defaults={states: 9}": ("defaults.states", "integer"),
     "defaults={init: nowhere.json}": ("defaults.init", "no file nowhere.json"),
+    "defaults={model: nowhere.json}": ("defaults.model", "no file nowhere.json"),
     "defaults={colour: red}": ("defaults.colour", "not known"),
 }
 

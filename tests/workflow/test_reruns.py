@@ -34,7 +34,7 @@ def test_a_touched_assembly_reruns_only_its_part(finished: Project) -> None:
     with touched(finished.folder / "NC_001416.fa.gz"):
         planned = finished.planned()
     assert {assembly for rule, assembly in planned if rule != "summary"} == {"lambda"}
-    assert {rule for rule, _ in planned} >= {"survey", "train", "batches", "gather", "summary"}
+    assert {rule for rule, _ in planned} == {"survey", "train", "decode", "summary"}
 
 
 def test_a_touched_start_model_trains_and_calls_again_but_surveys_nothing(
@@ -43,7 +43,7 @@ def test_a_touched_start_model_trains_and_calls_again_but_surveys_nothing(
     with touched(finished.folder / "start.json"):
         planned = finished.planned()
     assert {assembly for rule, assembly in planned if rule != "summary"} == {"demo"}
-    assert {rule for rule, _ in planned} == {"train", "decode", "gather", "summary"}
+    assert {rule for rule, _ in planned} == {"train", "batches", "gather", "summary"}
 
 
 def test_a_changed_setting_of_the_calls_does_not_train_again(finished: Project) -> None:
@@ -52,11 +52,17 @@ def test_a_changed_setting_of_the_calls_does_not_train_again(finished: Project) 
     config.write_text(before + "defaults: {min_length: 50}\n")
     planned = finished.planned()
     config.write_text(before)
-    assert {rule for rule, _ in planned} == {"decode", "gather", "summary"}
+    assert {rule for rule, _ in planned} == {"decode", "batches", "gather", "summary"}
 
 
-def test_batches_leave_nothing_behind(finished: Project) -> None:
-    assert not list(finished.folder.glob("results/*/parts"))
+def test_batches_leave_their_results_behind_and_nothing_else(finished: Project) -> None:
+    assert not list(finished.folder.glob("results/*/pieces"))
+    assert not list(finished.folder.glob("results/*/decoded"))
+    parts = {path.name for path in finished.folder.glob("results/parts/*")}
+    tables = finished.folder.glob("results/*/batches/batches.tsv")
+    assert parts == {
+        line.split("\t")[0] for table in tables for line in table.read_text().splitlines()[1:]
+    }
 
 
 def test_a_grid_is_selected_from_one_job_a_model(finished: Project) -> None:

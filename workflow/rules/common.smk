@@ -1,8 +1,10 @@
 # What the rules share: settings, checked and merged, and functions that answer for a wildcard.
 import csv
 import math
+import re
 import shlex
 import sys
+from functools import cache
 from pathlib import Path
 
 from snakemake.exceptions import WorkflowError
@@ -12,12 +14,35 @@ from snakemake.utils import validate
 shell.prefix(f"PATH={shlex.quote(str(Path(sys.executable).parent))}:$PATH; ")
 
 # Columns of the sample sheet that name a file.
-FILES = ("fasta", "records", "exclude", "init", "labels")
+FILES = (
+    "fasta",
+    "records",
+    "exclude",
+    "init",
+    "spec",
+    "model",
+    "labels",
+    "train_labels",
+)
 # Columns whose cells are words even if they look like numbers.
-WORDS = ("assembly", "circular", *FILES)
+WORDS = ("assembly", "circular", "fix", *FILES)
 # Ways to say where training starts, and the settings that each of them brings along.
-STARTS = ("preset", "init")
+STARTS = ("preset", "spec", "init")
 BROUGHT_ALONG = ("states", "order", "strands", "start")
+# Settings of training, which a given model does without.
+OF_TRAINING = (
+    *STARTS,
+    *BROUGHT_ALONG,
+    "restarts",
+    "max_iterations",
+    "tolerance",
+    "pseudocount",
+    "train_bases",
+    "train_labels",
+    "fix",
+)
+# A byte of compressed sequence holds about four letters, and hardly ever more than so many.
+LETTERS_IN_A_BYTE = 5
 
 
 def culprit(problem):
@@ -49,9 +74,10 @@ def check_config():
     except WorkflowError as error:
         problem = error.__context__
         raise config_error(culprit(problem), explain(problem)) from None
-    init = config["defaults"]["init"]
-    if init is not None and not Path(init).is_file():
-        raise config_error("defaults.init", f"there is no file {init}")
+    for key in ("init", "spec", "model"):
+        path = config["defaults"][key]
+        if path is not None and not Path(path).is_file():
+            raise config_error(f"defaults.{key}", f"there is no file {path}")
 
 
 def config_error(key, message):
@@ -133,9 +159,14 @@ def check_row(row, cells):
     settings = merged(cells)
     if "labels" in cells and settings["compare"] == "skip":
         raise sheet_error(row, "labels", "only compare reads them; set compare to run")
+    if settings["model"] is not None:
+        check_frozen(row, cells, settings["model"])
+        return
     starts = [key for key in STARTS if settings[key] is not None]
     if len(starts) > 1:
-        raise sheet_error(row, "init", "does not go with a preset; give one of the two")
+        raise sheet_error(
+            row, starts[1], f"does not go with {starts[0]}; give one of the two"
+        )
     for column in BROUGHT_ALONG:
         if column in cells and starts:
             raise sheet_error(
@@ -149,10 +180,36 @@ def check_row(row, cells):
         raise sheet_error(row, "start", "free needs strands: stranded")
 
 
+def check_frozen(row, cells, model):
+    """Check that a given model is one, and that the row does not say how to train another."""
+    for column in OF_TRAINING:
+        if column in cells:
+            raise sheet_error(
+                row, column, "is for training; a given model is not trained"
+            )
+    # Jobs on other machines read the sheet again, but the model was checked by then.
+    if workflow.is_main_process and (problem := problem_of_model(model)):
+        raise sheet_error(row, "model", problem)
+
+
+@cache
+def problem_of_model(path):
+    """What is wrong with a model document, in a line; None if nothing is."""
+    from hmmseg.errors import HmmsegError
+    from hmmseg.model import load_model
+
+    try:
+        load_model(path)
+    except HmmsegError as error:
+        return str(error)
+    return None
+
+
 def merged(cells):
     """Defaults of the configuration with the cells of a row over them."""
-    # A row that says where training starts replaces a default that says otherwise.
-    replaced = STARTS if any(key in cells for key in STARTS) else ()
+    # A row that says where the model comes from replaces a default that says otherwise.
+    origins = (*STARTS, "model")
+    replaced = origins if any(key in cells for key in origins) else ()
     defaults = {
         key: None if key in replaced else value
         for key, value in config["defaults"].items()
@@ -177,17 +234,34 @@ def read_sheet():
     return settings
 
 
+def is_small(fasta):
+    """Whether all of an assembly fits into one batch, as far as the size of its file tells."""
+    letters = LETTERS_IN_A_BYTE if fasta.endswith((".gz", ".bgz")) else 1
+    return Path(fasta).stat().st_size * letters <= config["batch_bases"]
+
+
+def one_of(names):
+    """Pattern that matches these names and no others."""
+    return "|".join(map(re.escape, names)) or "(?!)"
+
+
 check_config()
-COLUMNS = ("assembly", *FILES, "circular", *config["defaults"])
+COLUMNS = ("assembly", *FILES, "fix", "circular", *config["defaults"])
 SETTINGS = read_sheet()
 ASSEMBLIES = list(SETTINGS)
 RESULTS = config["output"].rstrip("/")
+# Where results of batches are kept; assemblies and revisions of them share it.
+PARTS = (config["reuse"] or f"{RESULTS}/parts").rstrip("/")
 COMPARED = [name for name in ASSEMBLIES if SETTINGS[name]["compare"] == "run"]
+FROZEN = [name for name in ASSEMBLIES if SETTINGS[name]["model"] is not None]
+TRAINED = [name for name in ASSEMBLIES if SETTINGS[name]["model"] is None]
+SMALL = [name for name in ASSEMBLIES if is_small(SETTINGS[name]["fasta"])]
+LARGE = sorted(set(ASSEMBLIES) - set(SMALL))
 
 
 wildcard_constraints:
     assembly=r"[A-Za-z0-9][A-Za-z0-9._-]*",
-    batch=r"batch-\d+",
+    batch=r"[0-9a-f]{32}",
     states=r"[1-8]",
     order=r"[0-8]",
 
@@ -213,9 +287,24 @@ def exclude_of(wildcards):
     return files(wildcards, "exclude")
 
 
-def init_of(wildcards):
-    """Model to start from."""
-    return files(wildcards, "init")
+def start_of(wildcards):
+    """Model or specification to start training from."""
+    return files(wildcards, "init") or files(wildcards, "spec")
+
+
+def train_labels_of(wildcards):
+    """Known regions to train on."""
+    return files(wildcards, "train_labels")
+
+
+def frozen_of(wildcards):
+    """Model to use as it is."""
+    return files(wildcards, "model")
+
+
+def model_of(wildcards):
+    """The assembly's model, trained or given."""
+    return f"{RESULTS}/{wildcards.assembly}/model.json"
 
 
 def labels_of(wildcards):
@@ -233,10 +322,15 @@ def options(wildcards, *keys):
     return shlex.join(words)
 
 
+def listed(wildcards, column, option):
+    """An option for each of the names, separated by commas, in one column of a row."""
+    names = SETTINGS[wildcards.assembly].get(column, "").split(",")
+    return shlex.join(f"{option}={name.strip()}" for name in names if name.strip())
+
+
 def circles(wildcards):
     """Options that name the circular records of an assembly."""
-    names = SETTINGS[wildcards.assembly].get("circular", "").split(",")
-    return shlex.join(f"--circular={name.strip()}" for name in names if name.strip())
+    return listed(wildcards, "circular", "--circular")
 
 
 def survey_options(wildcards):
@@ -282,21 +376,19 @@ def train_options(wildcards):
         "max_iterations",
         "tolerance",
         "pseudocount",
+        "train_bases",
         "soft_mask",
     )
-    return f"{model} {options(wildcards, *keys)} {survey_options(wildcards)}"
+    known = settings.get("train_labels")
+    labels = "" if known is None else f" {shlex.join(['--labels', known])}"
+    fixed = listed(wildcards, "fix", "--fix")
+    words = f"{model} {options(wildcards, *keys)}{labels} {fixed} {survey_options(wildcards)}"
+    return " ".join(words.split(" "))
 
 
-def batches_options(wildcards):
-    """Which records to decode, and how many bases in one job."""
-    chosen = options(wildcards, "records", "min_record", "exclude", "gap_min")
-    return f"{chosen} --batch-bases {config['batch_bases']}"
-
-
-def decode_options(wildcards):
-    """How to call regions; the records come from the batch."""
+def batch_options(wildcards):
+    """How to call regions, in records that have been chosen."""
     keys = (
-        "exclude",
         "gap_min",
         "soft_mask",
         "decoder",
@@ -304,7 +396,18 @@ def decode_options(wildcards):
         "min_length",
         "merge_gap",
     )
-    return f"{options(wildcards, *keys)} {circles(wildcards)}".rstrip()
+    return options(wildcards, *keys)
+
+
+def decode_options(wildcards):
+    """Which records to call regions in, and how."""
+    chosen = options(wildcards, "records", "min_record", "exclude")
+    return f"{batch_options(wildcards)} {chosen} {circles(wildcards)}".rstrip()
+
+
+def batches_options(wildcards):
+    """Which records to decode and how, and how many bases in one job."""
+    return f"{decode_options(wildcards)} --batch-bases {config['batch_bases']}"
 
 
 def compare_options(wildcards):
@@ -317,12 +420,20 @@ def compare_options(wildcards):
     return f"{strands} {options(wildcards, *keys)} {survey_options(wildcards)}"
 
 
-def parts_of(wildcards):
-    """Decoded batches of an assembly, in the order of its records, known once they are cut."""
-    folder = checkpoints.batches.get(assembly=wildcards.assembly).output.folder
+def batches_of(assembly):
+    """Rows of an assembly's table of batches, known once they are made."""
+    folder = checkpoints.batches.get(assembly=assembly).output.folder
     with (Path(folder) / "batches.tsv").open(newline="") as handle:
-        names = [row["batch"] for row in csv.DictReader(handle, delimiter="\t")]
-    return [f"{RESULTS}/{wildcards.assembly}/parts/{name}" for name in names]
+        return list(csv.DictReader(handle, delimiter="\t"))
+
+
+def decoded_batches(wildcards):
+    """A mark for each batch of an assembly whose result is not there already."""
+    return [
+        f"{RESULTS}/{wildcards.assembly}/decoded/{row['batch']}"
+        for row in batches_of(wildcards.assembly)
+        if row["reused"] == "no"
+    ]
 
 
 def labelled_calls(wildcards):

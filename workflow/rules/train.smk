@@ -1,4 +1,4 @@
-# One model for each assembly, from all of its selected records.
+# One model for each assembly: trained on its selected records, or given and left as it is.
 
 
 rule train:
@@ -6,7 +6,8 @@ rule train:
         fasta=fasta_of,
         records=records_of,
         exclude=exclude_of,
-        init=init_of,
+        start=start_of,
+        labels=train_labels_of,
     output:
         model=f"{RESULTS}/{{assembly}}/model.json",
         provenance=f"{RESULTS}/{{assembly}}/model.provenance.json",
@@ -14,9 +15,27 @@ rule train:
         f"{RESULTS}/logs/train/{{assembly}}.log",
     benchmark:
         f"{RESULTS}/benchmarks/train/{{assembly}}.tsv"
+    wildcard_constraints:
+        assembly=one_of(TRAINED),
     threads: config["threads"]
     params:
         options=train_options,
     shell:
         "hmmseg train {input.fasta:q} --output {output.model:q} {params.options}"
         " --threads {threads} > {log:q} 2>&1"
+
+
+rule adopt:
+    input:
+        model=frozen_of,
+    output:
+        model=f"{RESULTS}/{{assembly}}/model.json",
+        provenance=f"{RESULTS}/{{assembly}}/model.provenance.json",
+    log:
+        f"{RESULTS}/logs/adopt/{{assembly}}.log",
+    benchmark:
+        f"{RESULTS}/benchmarks/adopt/{{assembly}}.tsv"
+    wildcard_constraints:
+        assembly=one_of(FROZEN),
+    shell:
+        "hmmseg adopt {input.model:q} --output {output.model:q} > {log:q} 2>&1"
