@@ -45,6 +45,7 @@ __all__ = [
     "brute_counts",
     "brute_log_likelihood",
     "brute_posterior",
+    "brute_reach",
     "complement_strand",
     "emission",
     "emissions",
@@ -52,6 +53,9 @@ __all__ = [
     "fixed_point_score",
     "known_contexts",
     "log_path_probability",
+    "plain_limits",
+    "plain_pairs",
+    "plain_staying",
 ]
 
 MISSING = 4
@@ -305,3 +309,76 @@ def brute_best_paths(p: Parameters, piece: Piece) -> tuple[Any, list[Path]]:
     best = max(score for score, _ in scored)
     winners = [path for score, path in scored if score == best]
     return best, sorted(winners, key=lambda path: path[::-1])
+
+
+# What is said of regions
+
+
+def plain_pairs(bases: Bases, start: int, end: int) -> list[list[int]]:
+    """Count neighbours x, y in [start, end), round the end if need be; the last has none."""
+    counts = [[0] * 5 for _ in range(5)]
+    inside = [int(bases[at % len(bases)]) for at in range(start, end)]
+    for x, y in itertools.pairwise([*inside, MISSING]):
+        counts[x][y] += 1
+    return counts
+
+
+def brute_reach(p: Parameters, piece: Piece, state: int, anchor: int, step: int) -> list[float]:
+    """Return P(the run of a state around an anchor reaches k bases on | anchor in the state).
+
+    Item k counts the paths that are in the state from the anchor to the base k steps away.
+    """
+    reached = [0.0] * len(piece.bases)
+    for path, factors in _all_paths(p, piece):
+        at, far = anchor, 0
+        while 0 <= at < len(path) and path[at] == state:
+            reached[far] += math.prod(factors)
+            at, far = at + step, far + 1
+    return [value / reached[0] for value in reached]
+
+
+def plain_staying(there: float, here: float, odds: float) -> float:
+    """Return P(in the state there | in it here): margins and odds ratio, solved by halving."""
+    if math.isinf(odds):
+        return min(there, here) / here
+    low, high = max(0.0, there + here - 1), min(there, here)
+    for _ in range(200):
+        both = (low + high) / 2
+        # The odds ratio of the table grows with the probability of both.
+        if both * (1 - there - here + both) < odds * (there - both) * (here - both):
+            low = both
+        else:
+            high = both
+    return (low + high) / 2 / here
+
+
+def plain_limits(
+    posterior: Sequence[float],
+    closed: bool,
+    core: tuple[int, int],
+    step: int,
+    odds: float,
+    tail: float,
+    reach: int,
+) -> tuple[int, int]:
+    """Return the lower and higher limit of a region's start (step -1) or end (step 1).
+
+    The region is [core[0], core[1]), on a circle perhaps beyond its ends.
+    """
+    n = len(posterior)
+    inside = core[0] if step < 0 else core[1] - 1
+    within = [at for at in range(inside, inside - step * reach, -step) if core[0] <= at < core[1]]
+    best = max(posterior[at % n] for at in within)
+    near = far = at = next(at for at in within if posterior[at % n] >= 0.99 * best)
+    reached = 1.0
+    while abs(at + step - inside) <= min(reach, n - 1) or at + step in within:
+        if not closed and not 0 <= at + step < n:
+            break
+        reached *= plain_staying(posterior[(at + step) % n], posterior[at % n], odds)
+        if reached <= tail:
+            break
+        at += step
+        far = at
+        if reached >= 1 - tail:
+            near = at
+    return (far, near) if step < 0 else (near + 1, far + 1)

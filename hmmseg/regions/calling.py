@@ -1,7 +1,7 @@
 """Calling the regions of one contig."""
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cached_property
 from typing import Any
 
@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 from hmmseg.inference.path import best_runs
 from hmmseg.inference.posterior import posterior_windows
 from hmmseg.model import Model
+from hmmseg.regions.ends import EndSearch, limits_of_regions, odds_of_staying
 from hmmseg.regions.intervals import NO_FILTERS, Filters, StateIntervals, filtered, over_threshold
 from hmmseg.regions.odds import LogOdds
 from hmmseg.sequence.contigs import Contig
@@ -38,12 +39,16 @@ class Calls:
     wrong_bases : float64[interval] or None
         Expected number of bases in another state: the sum of 1 - posterior. None where the
         values are no posteriors.
+    limits : int64[interval, 4] or None
+        Between which contig positions it starts and ends, see :mod:`.ends`. None where the values
+        are no posteriors.
     """
 
     intervals: StateIntervals
     mean_posterior: NDArray[np.float64]
     log_odds_bits: NDArray[np.float64]
     wrong_bases: NDArray[np.float64] | None = None
+    limits: NDArray[np.int64] | None = None
 
 
 @dataclass(frozen=True, eq=False)
@@ -85,6 +90,10 @@ class Caller:
     def _odds(self) -> LogOdds:
         return LogOdds(self.model, self.states)
 
+    @cached_property
+    def _staying(self) -> dict[int, float]:
+        return {state: odds_of_staying(self.model, state) for state in self.states}
+
     def call(self, contig: Contig, watch: _Watch) -> Calls:
         """Call regions; hand every window of posteriors to ``watch`` as it comes.
 
@@ -102,14 +111,22 @@ class Caller:
         """
         found = self._path_intervals(contig) if self.decoder == PATH else None
         sums = {state: RunningSums(found, state) for state in self.states}
+        ends = {
+            state: EndSearch(odds, len(contig), contig.closed)
+            for state, odds in self._staying.items()
+        }
         for begin, posterior in posterior_windows(self.model, contig, self.threads):
             bits = self._odds.window(contig, begin, begin + len(posterior))
             for (state, running), own in zip(sums.items(), bits, strict=True):
                 if found is None:
                     running.grow(*over_threshold(posterior[:, state], self.threshold, begin))
                 running.add(begin, posterior[:, state], own)
+                ends[state].add(posterior[:, state], running.intervals(ends[state].pending))
             watch(begin, posterior)
-        return scored(contig, sums, self.filters)
+        calls = scored(contig, sums, self.filters)
+        spans = {state: running.intervals() for state, running in sums.items()}
+        limits = {state: (own, ends[state].finish(own)) for state, own in spans.items()}
+        return replace(calls, limits=limits_of_regions(calls.intervals, limits, len(contig)))
 
     def _path_intervals(self, contig: Contig) -> StateIntervals:
         runs = best_runs(self.model, contig, self.threads)
@@ -156,7 +173,7 @@ class RunningSums:
 
     def __init__(self, found: StateIntervals | None, state: int) -> None:
         self._state = state
-        own = None if found is None else found.taken(found.states == state)
+        self._own = own = None if found is None else found.taken(found.states == state)
         self._starts: list[int] = [] if own is None else own.starts.tolist()
         self._ends: list[int] = [] if own is None else own.ends.tolist()
         self._at: dict[int, tuple[float, float]] = {0: (0.0, 0.0)}
@@ -191,9 +208,12 @@ class RunningSums:
             self._at[edge] = (float(both[0]), float(both[1]))
         self._total = (float(sums[0][-1]), float(sums[1][-1]))
 
-    def intervals(self) -> StateIntervals:
-        """Return the state's intervals."""
-        starts, ends = np.array(self._starts, np.int64), np.array(self._ends, np.int64)
+    def intervals(self, first: int = 0) -> StateIntervals:
+        """Return the state's intervals, from one of them on."""
+        if self._own is not None:
+            return self._own.taken(slice(first, None))
+        starts = np.array(self._starts[first:], np.int64)
+        ends = np.array(self._ends[first:], np.int64)
         return StateIntervals(starts, ends, np.full(len(starts), self._state, np.int64))
 
     def between(self, start: int, end: int, length: int) -> tuple[float, float]:

@@ -23,7 +23,7 @@ class StateIntervals(NamedTuple):
     ends: NDArray[np.int64]
     states: NDArray[np.int64]
 
-    def taken(self, chosen: NDArray[np.bool_] | NDArray[np.intp]) -> "StateIntervals":
+    def taken(self, chosen: NDArray[np.bool_] | NDArray[np.intp] | slice) -> "StateIntervals":
         """Return some of the intervals."""
         return StateIntervals(self.starts[chosen], self.ends[chosen], self.states[chosen])
 

@@ -1,6 +1,7 @@
 """The table of regions of an assembly."""
 
 from collections.abc import Sequence
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -8,7 +9,10 @@ import pandas as pd
 from hmmseg.regions.calling import Calls
 from hmmseg.sequence.contigs import Contig
 
-__all__ = ["WRONG_BASES", "number_regions", "regions_of_record"]
+__all__ = ["LIMITS", "WRONG_BASES", "number_regions", "regions_of_record"]
+
+LIMITS = ("start_low", "start_high", "end_low", "end_high")
+"""Names of the columns."""
 
 WRONG_BASES = "expected_wrong_bases"
 """Name of the column."""
@@ -35,13 +39,14 @@ def regions_of_record(calls: Sequence[tuple[Contig, Calls]], names: Sequence[str
     DataFrame
         Columns record, start, end, length, state, mean_posterior, log_odds_bits; sorted by
         start. The end of a region across the origin of a circle is start + length. Then
-        expected_wrong_bases, if the calls have posteriors.
+        expected_wrong_bases and the limits of start and end, if the calls have posteriors. On a
+        circle a limit may lie below 0 or beyond the record's length.
     """
     parts = []
     for contig, found in calls:
         starts = (found.intervals.starts + contig.start) % contig.record_length
         lengths = found.intervals.ends - found.intervals.starts
-        columns = {
+        columns: dict[str, Any] = {
             "record": contig.record,
             "start": starts,
             "end": starts + lengths,
@@ -52,6 +57,9 @@ def regions_of_record(calls: Sequence[tuple[Contig, Calls]], names: Sequence[str
         }
         if found.wrong_bases is not None:
             columns[WRONG_BASES] = np.round(found.wrong_bases, _BASES_DECIMALS)
+        if found.limits is not None:
+            limits = found.limits + (starts - found.intervals.starts)[:, None]
+            columns |= dict(zip(LIMITS, limits.T, strict=True))
         parts.append(pd.DataFrame(columns))
     table = pd.concat(parts, ignore_index=True)
     return table.sort_values(["start", "end"], kind="stable", ignore_index=True)

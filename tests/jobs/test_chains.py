@@ -57,6 +57,12 @@ def test_classify_writes_what_decode_writes(here: Path, capsys: pytest.CaptureFi
     assert captured.err.splitlines()[-1] == (
         "hmmseg: warning: 1 contigs are shorter than the window of 200 bases: not called"
     )
+    # Shares of windows are no posteriors of bases: nothing follows from them about ends.
+    header = Path("calls/regions.tsv").read_text().splitlines()[0].split("\t")
+    assert header[8:] == [
+        "soft_masked_fraction", "gc", "cpg_ratio", "gc_skew", "at_skew", "dinucleotide_entropy",
+        "dinucleotide_distance", "gardiner_garden_1987", "takai_jones_2002",
+    ]  # fmt: skip
     assert run("verify calls") == 0
     table = read_regions_table("calls/regions.tsv")
     assert table["region_id"].tolist() == ["region_1", "region_2", "region_3"]

@@ -39,9 +39,9 @@ def test_columns_in_their_order(calls: Path) -> None:
     header = (calls / "regions.tsv").read_text().splitlines()[0].split("\t")
     assert header == [
         "region_id", "record", "start", "end", "length", "state", "mean_posterior",
-        "log_odds_bits", "soft_masked_fraction", "expected_wrong_bases", "gc", "cpg_ratio",
-        "gc_skew", "at_skew", "dinucleotide_entropy", "dinucleotide_distance",
-        "gardiner_garden_1987", "takai_jones_2002",
+        "log_odds_bits", "soft_masked_fraction", "expected_wrong_bases", "start_low", "start_high",
+        "end_low", "end_high", "gc", "cpg_ratio", "gc_skew", "at_skew", "dinucleotide_entropy",
+        "dinucleotide_distance", "gardiner_garden_1987", "takai_jones_2002",
     ]  # fmt: skip
 
 
@@ -65,6 +65,21 @@ def test_composition_is_that_of_the_letters(calls: Path, records: dict[str, str]
         wrong = region.length * (1 - region.mean_posterior)
         assert region.expected_wrong_bases == pytest.approx(wrong, abs=0.0051 + region.length / 2e4)
     assert crossing
+
+
+def test_limits_of_ends(calls: Path, records: dict[str, str]) -> None:
+    table = read_regions_table(calls / "regions.tsv")
+    assert all(table[name].dtype == "int64" for name in ("start_low", "end_high"))
+    assert (table["start_low"] <= table["start_high"]).all()
+    assert (table["end_low"] <= table["end_high"]).all()
+    holds = table["start"].between(table["start_low"], table["start_high"])
+    holds &= table["end"].between(table["end_low"], table["end_high"])
+    assert holds.mean() > 0.9
+    # A record's ends stop them, but for the circular one's.
+    crossing = table["end"] > table["record"].map(lambda name: len(records[name]))
+    limits = table[~crossing & (table["record"] != table["record"][crossing].iloc[0])]
+    assert (limits["start_low"] >= 0).all()
+    assert (limits["end_high"] <= limits["record"].map(lambda name: len(records[name]))).all()
 
 
 def test_islands_and_only_they_are_islands_in_gff3(calls: Path) -> None:

@@ -10,6 +10,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
+from hmmseg.kernels.pairs import count_pairs
 from hmmseg.regions.composition import (
     MEASURES,
     WORDS,
@@ -20,6 +21,7 @@ from hmmseg.regions.composition import (
 )
 from hmmseg.sequence.alphabet import reverse_complement
 from hmmseg.sequence.reading import Record, record_from_text
+from tests.reference import plain_pairs
 
 SHOWN = 1e-9
 """Far below the four decimals that are written."""
@@ -78,6 +80,15 @@ def plain_rho(letters: str, circular: bool) -> list[float]:
         for x in "ACGT"
         for y in "ACGT"
     ]
+
+
+@given(bases=st.lists(st.integers(0, 4), min_size=1, max_size=40), data=st.data())
+def test_pairs_are_those_of_the_twin(bases: list[int], data: st.DataObject) -> None:
+    start = data.draw(st.integers(0, len(bases) - 1))
+    end = data.draw(st.integers(start + 1, start + len(bases)))
+    counts = np.full((1, 25), 7)
+    count_pairs(np.array(bases, np.uint8), np.array([start]), np.array([end]), counts)
+    assert counts.reshape(5, 5).tolist() == plain_pairs(bases, start, end)
 
 
 @given(
