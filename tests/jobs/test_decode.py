@@ -92,18 +92,20 @@ def test_islands_and_only_they_are_islands_in_gff3(calls: Path) -> None:
 
 
 @pytest.mark.parametrize("decoder", ["path", "posterior"])
-def test_batches_gathered_have_the_bytes_of_the_whole(
-    decoder: str, tmp_path: Path, records: dict[str, str]
-) -> None:
+def test_batches_gathered_have_the_bytes_of_the_whole(decoder: str, tmp_path: Path) -> None:
     how = ["--model", MODEL, "--decoder", decoder, "--min-length", "50"]
     assert main(["decode", FASTA, *how, "--output", str(tmp_path / "whole")]) == 0
-    names, parts = list(records), []
-    for number, chosen in enumerate((names[:1], names[1:4], names[4:])):
-        listed, part = tmp_path / f"{number}.txt", str(tmp_path / f"part{number}")
-        listed.write_text("".join(f"{name}\n" for name in chosen))
-        assert main(["decode", FASTA, *how, "--records", str(listed), "--output", part]) == 0
-        parts.append(part)
-    assert main(["gather", *parts, "--output", str(tmp_path / "gathered")]) == 0
+    batches, parts, pieces = (str(tmp_path / name) for name in ("batches", "parts", "pieces"))
+    plan = ["--batch-bases", "300000", "--parts", parts, "--output", batches]
+    assert main(["batches", FASTA, *how, *plan]) == 0
+    assert main(["cut", FASTA, "--batches", batches, "--output", pieces]) == 0
+    keys = sorted(path.stem for path in Path(pieces).glob("*.fa"))
+    assert len(keys) > 2
+    for key in keys:
+        piece = [f"{pieces}/{key}.fa", "--exclude", f"{pieces}/{key}.bed"]
+        assert main(["decode", *piece, *how, "--output", f"{parts}/{key}"]) == 0
+    gathered = ["--parts", parts, "--output", str(tmp_path / "gathered")]
+    assert main(["gather", batches, *gathered]) == 0
     for path in sorted((tmp_path / "whole").iterdir()):
         if path.name != "provenance.json":
             assert (tmp_path / "gathered" / path.name).read_bytes() == path.read_bytes(), path.name
