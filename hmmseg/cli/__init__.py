@@ -9,7 +9,7 @@ from typing import NoReturn
 import click
 
 from hmmseg import __version__
-from hmmseg.cli import calls, chains, models, selection, whole
+from hmmseg.cli import calls, chains, evidence, models, selection, whole
 from hmmseg.errors import HmmsegError
 
 __all__ = ["main"]
@@ -44,6 +44,7 @@ for _command in (
     selection.select,
     selection.recommend,
     calls.decode,
+    evidence.calibrate,
     models.score,
     models.simulate,
     calls.verify,

@@ -31,7 +31,7 @@ from hmmseg.training.labels import label_names, labels_of_contigs, read_labels
 from hmmseg.training.restarts import Plan, Restarts, fit_restarts
 from hmmseg.training.starts import labelled_start, word_counts
 
-__all__ = ["Origin", "origin", "train"]
+__all__ = ["Origin", "origin", "placed", "train"]
 
 
 _ITERATIONS = 500
@@ -147,7 +147,7 @@ def train(
     check_target(output, force)
     contigs, sampled = sources.read_sample(train_bases, plan.seed)
     if start.wanted is not None:
-        plan = _placed(plan, start.wanted, contigs)
+        plan = placed(plan, start.wanted, contigs)
     plan, known = _with_labels(plan, start.labels, sources, contigs)
     order = plan.init.order if plan.init else plan.order
     symmetric = plan.init.symmetric if plan.init else plan.symmetric
@@ -163,6 +163,7 @@ def train(
     document = model_to_dict(found.model)
     document["training"] = {
         **_history(inputs, plan, corpus, found, best),
+        "plan": _planned(plan, sources, train_bases),
         **start.parameters(),
         "soft_mask": sources.soft_mask or "use",
         "sampled": sampled,
@@ -173,7 +174,7 @@ def train(
     return explain(output)
 
 
-def _placed(plan: Plan, wanted: Specification, contigs: list[Contig]) -> Plan:
+def placed(plan: Plan, wanted: Specification, contigs: Sequence[Contig]) -> Plan:
     """Return the plan with what a specification says, anchored to the sequence."""
     model = anchored(wanted, word_counts(contigs, wanted.order))
     strengths = [
@@ -289,6 +290,24 @@ def _history(
             }
             for one in found.fits
         ],
+    }
+
+
+def _planned(plan: Plan, sources: Sources, train_bases: int | None) -> dict[str, Any]:
+    """Return what it takes to train alike on other sequence."""
+    return {
+        "states": plan.states,
+        "order": plan.order,
+        "symmetric": plan.symmetric,
+        "start_kind": plan.start_kind,
+        "restarts": plan.restarts,
+        "seed": plan.seed,
+        "max_iterations": plan.max_iterations,
+        "tolerance": plan.tolerance,
+        "pseudocount": plan.pseudocount,
+        "fixed": list(plan.fixed),
+        "train_bases": train_bases,
+        "without": list(sources.without),
     }
 
 

@@ -1,0 +1,221 @@
+"""Scores of the regions that are called in null sequence, or of the boundaries between them."""
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from hmmseg.errors import SequenceError
+from hmmseg.evidence.nulls import Null, Piece
+from hmmseg.inference.streams import in_threads
+from hmmseg.model import Model
+from hmmseg.regions.calling import Caller, Calls
+from hmmseg.sequence.contigs import Contig
+
+__all__ = ["Found", "Replicates", "Scoring", "boundary_scores", "call_nulls", "replicates_of"]
+
+_BITS_DECIMALS = 3
+"""As in the table of regions, so that equal scores are equal."""
+
+Refit = Callable[[Sequence[Contig]], Model]
+
+
+def boundary_scores(
+    states: NDArray[np.int64], bits: NDArray[np.float64], closed: bool
+) -> tuple[NDArray[np.int64], NDArray[np.float64]]:
+    """Return the boundaries between regions of one contig, and what each buys.
+
+    Without a boundary, one of the two regions beside it would be explained by the other's
+    state, and the cheaper way costs the log-odds of the weaker of the two.
+
+    Parameters
+    ----------
+    states
+        int64[region], in order along the contig.
+    bits
+        float64[region]: log-odds against the other states.
+    closed
+        Whether the contig is a circle.
+
+    Returns
+    -------
+    int64[boundary, 2], float64[boundary]
+        The regions on its left and right, and bits.
+    """
+    left = np.arange(len(states))
+    right = np.roll(left, -1)
+    if not closed or len(states) < 2:
+        left, right = left[:-1], right[:-1]
+    apart = states[left] != states[right]
+    left, right = left[apart], right[apart]
+    return np.column_stack((left, right)), np.minimum(bits[left], bits[right])
+
+
+@dataclass(frozen=True)
+class Scoring:
+    """What is counted.
+
+    Parameters
+    ----------
+    boundaries
+        Boundaries between regions instead of regions: every state is reported.
+    pooled
+        All states together, because which of them is reported was chosen by training.
+    """
+
+    boundaries: bool
+    pooled: bool
+
+    def of(self, calls: Calls, closed: bool) -> tuple[NDArray[np.int64], NDArray[np.float64]]:
+        """Return the class and the score of everything that counts in one contig's calls."""
+        states, bits = calls.intervals.states, calls.log_odds_bits
+        if self.boundaries:
+            _, bits = boundary_scores(states, bits, closed)
+        classes = np.zeros(len(bits), np.int64)
+        if not self.boundaries and not self.pooled:
+            classes = states
+        return classes, np.round(bits, _BITS_DECIMALS)
+
+
+@dataclass(frozen=True, eq=False)
+class Replicates:
+    """What is drawn: replicates of the pieces of an assembly.
+
+    Attributes
+    ----------
+    pieces : sequence of Piece
+        All of them.
+    chosen : list of int64[piece]
+        Of each replicate, the pieces in it.
+    """
+
+    pieces: Sequence[Piece]
+    chosen: list[NDArray[np.int64]]
+
+
+def replicates_of(
+    pieces: Sequence[Piece], bases: int, seed: int, whole: bool = False
+) -> Replicates:
+    """Return replicates that hold about so many bases.
+
+    Parameters
+    ----------
+    pieces
+        Of the assembly.
+    bases
+        To draw. An assembly that has more is drawn in part, pieces by chance; one that has less
+        is drawn whole, as often as it takes to reach them.
+    seed
+        Of that chance.
+    whole
+        Draw every piece even if that makes more bases.
+    """
+    lengths = np.array([piece.length for piece in pieces])
+    total = int(lengths.sum())
+    if whole or total <= bases:
+        everything = np.arange(len(pieces))
+        return Replicates(pieces, [everything] * max(1, -(-bases // total)))
+    random = np.random.Generator(np.random.PCG64(np.random.SeedSequence([seed, 2])))
+    order = np.argsort(random.random(len(pieces)), kind="stable")
+    enough = int(np.searchsorted(np.cumsum(lengths[order]), bases)) + 1
+    return Replicates(pieces, [np.sort(order[:enough])])
+
+
+@dataclass(frozen=True, eq=False)
+class Found:
+    """What was found in null sequence.
+
+    Attributes
+    ----------
+    bases : int
+        Drawn and decoded.
+    classes : int64[one]
+        State of each region, or 0 where states are not kept apart.
+    scores : float64[one]
+        In bits.
+    """
+
+    bases: int
+    classes: NDArray[np.int64]
+    scores: NDArray[np.float64]
+
+    def of(self, kind: int) -> NDArray[np.float64]:
+        """Return the scores of one class."""
+        return self.scores[self.classes == kind]
+
+
+def call_nulls(
+    null: Null,
+    replicates: Replicates,
+    caller: Caller,
+    scoring: Scoring,
+    seed: Sequence[int],
+    *,
+    refit: Refit | None = None,
+    threads: int = 1,
+    watch: Callable[[int], None] | None = None,
+) -> Found:
+    """Draw null sequence and call regions in it.
+
+    Every piece has random numbers of its own, so nothing depends on what is done side by side.
+
+    Parameters
+    ----------
+    null
+        How pieces are drawn.
+    replicates
+        What is drawn.
+    caller
+        How regions are called; its model is replaced where it is trained anew.
+    scoring
+        What is counted.
+    seed
+        Of the draws; the replicate's and the piece's numbers are added.
+    refit
+        Trains on a replicate; None to keep the model.
+    threads
+        Threads to use; the result does not depend on it.
+    watch
+        Called with the bases that are done.
+    """
+
+    def drawn(number: int, at: int) -> Contig:
+        seeds = np.random.SeedSequence([*seed, number, at])
+        return null.drawn(replicates.pieces[at], np.random.Generator(np.random.PCG64(seeds)))
+
+    def call(own: Caller, contig: Contig) -> Found:
+        try:
+            calls = own.call(contig, _nothing)
+        except SequenceError:
+            # The chain drew what the model holds for impossible; that piece tells nothing.
+            return Found(0, np.empty(0, np.int64), np.empty(0))
+        finally:
+            if watch is not None:
+                watch(len(contig))
+        return Found(len(contig), *scoring.of(calls, contig.closed))
+
+    def whole(number: int) -> list[Found]:
+        contigs = [drawn(number, int(at)) for at in replicates.chosen[number]]
+        assert refit is not None
+        own = Caller(refit(contigs), caller.decoder, caller.threshold, caller.filters)
+        return [call(own, contig) for contig in contigs]
+
+    def single(task: tuple[int, int]) -> list[Found]:
+        return [call(caller, drawn(*task))]
+
+    if refit is not None:
+        parts = in_threads(whole, range(len(replicates.chosen)), threads)
+    else:
+        tasks = [(n, int(at)) for n, some in enumerate(replicates.chosen) for at in some]
+        parts = in_threads(single, tasks, threads)
+    found = [one for some in parts for one in some]
+    return Found(
+        sum(one.bases for one in found),
+        np.concatenate([one.classes for one in found]),
+        np.concatenate([one.scores for one in found]),
+    )
+
+
+def _nothing(begin: int, posterior: NDArray[np.float64]) -> None:
+    """Let a window of posteriors pass; null sequence has no tracks."""
