@@ -155,8 +155,7 @@ def calibrate(  # noqa: PLR0913 - as many as the command has
         earlier: dict[str, Any] = json.loads((Path(output) / "calibration.json").read_bytes())
         return earlier
     check_target(output, force)
-    called.check_files(fasta, model_path)
-    called.check_states(model)
+    called.check_model(model_path, model)
     outcome = _outcome(called, model, (fasta, model_path, exclude), plan, threads)
     with whole_folder(output, force=force) as folder:
         document = write_calibration(folder, outcome, called)
@@ -218,9 +217,9 @@ def _survey(called: Called, model: Model, fasta: str, exclude: str | None) -> _A
     counts = np.zeros(code_count(order), np.int64)
     found, seen = _Assembly(), set()
     for record, contigs in called.sources(fasta, exclude).read_contigs():
-        if record.name not in called.record_lengths:
+        if record.name not in called.records:
             continue
-        called.check_record(record.name, len(record), contigs, odds)
+        called.check_record(record, contigs, odds)
         number = len(found.windows)
         seen.add(record.name)
         windows = RecordWindows(len(record), record.circular)
@@ -270,7 +269,7 @@ def _found(  # noqa: PLR0917 - one for each thing that bears on it
     threads: int,
 ) -> dict[str, Found]:
     """Call regions in every null."""
-    caller = Caller(model, called.decoder, called.threshold, called.filters)
+    caller = Caller(model, called.decoder(model), called.threshold, called.filters)
     bases = plan.bases if plan.bases is not None else null_bases_of(assembly.bases)
     replicates = replicates_of(assembly.pieces, bases, plan.seed, whole=refit is not None)
     each = sum(assembly.pieces[at].length for some in replicates.chosen for at in some)

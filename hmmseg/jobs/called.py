@@ -13,10 +13,13 @@ from hmmseg.jobs.sources import Sources
 from hmmseg.model import Model
 from hmmseg.outputs import sha256_of
 from hmmseg.provenance import read_provenance
+from hmmseg.regions.calling import PATH, POSTERIOR
 from hmmseg.regions.intervals import Filters
 from hmmseg.regions.odds import LogOdds
 from hmmseg.sequence.contigs import Contig
-from hmmseg.tracks.sizes import read_chrom_sizes
+from hmmseg.sequence.identity import checksums
+from hmmseg.sequence.reading import Record
+from hmmseg.tracks.records import RecordRow, read_record_table
 from hmmseg.tracks.table import read_regions_table
 
 __all__ = ["Called", "read_called"]
@@ -34,8 +37,8 @@ class Called:
     folder : Path
     table : DataFrame
         The regions.
-    record_lengths : mapping
-        Of every record.
+    records : mapping of str to RecordRow
+        Every record by its name.
     summary : dict
         The document ``summary.json``.
     provenance : dict
@@ -44,9 +47,14 @@ class Called:
 
     folder: Path
     table: pd.DataFrame
-    record_lengths: Mapping[str, int]
+    records: Mapping[str, RecordRow]
     summary: dict[str, Any]
     provenance: dict[str, Any]
+
+    @property
+    def record_lengths(self) -> dict[str, int]:
+        """Length of every record in bases."""
+        return {name: row.length for name, row in self.records.items()}
 
     @property
     def settings(self) -> dict[str, Any]:
@@ -54,10 +62,10 @@ class Called:
         found: dict[str, Any] = self.provenance["parameters"]
         return found
 
-    @property
-    def decoder(self) -> str:
-        """``path`` or ``posterior``."""
-        return str(self.settings["decoder"])
+    def decoder(self, model: Model) -> str:
+        """Return ``path`` or ``posterior``, as it is by default where none was asked for."""
+        asked = self.settings["decoder"]
+        return asked or (POSTERIOR if max(model.stages) > 1 else PATH)
 
     @property
     def threshold(self) -> float:
@@ -98,37 +106,38 @@ class Called:
         return Sources(
             (fasta,),
             exclude=exclude,
-            circular=tuple(self.summary["circular_records"]),
+            circular=tuple(settings["circular"]),
             gap_min=int(settings["gap_min"]),
             soft_mask=str(settings["soft_mask"]),
         )
 
-    def check_files(self, fasta: str, model: str) -> None:
-        """Raise OutputError if the calls name another sequence or model by their checksums."""
+    def check_model(self, path: str, model: Model) -> None:
+        """Raise OutputError if the calls name another model, or the model reports other states."""
         known = {entry["name"]: entry["sha256"] for entry in self.provenance["inputs"]}
-        for path, what in ((fasta, "sequence"), (model, "model")):
-            recorded = known.get(Path(path).name)
-            if path != "-" and recorded is not None and recorded != sha256_of(path):
-                raise self._other(
-                    f"another {what}", f"give the {what} they were made from, not {path}"
-                )
+        recorded = known.get(Path(path).name)
+        if recorded is not None and recorded != sha256_of(path):
+            raise self._other("another model", f"give the model they were made with, not {path}")
+        names = [name for name, kept in zip(model.names, model.reported, strict=True) if kept]
+        if names != list(self.summary["regions"]):
+            raise self._other("another model", f"its reported states are {', '.join(names)}")
 
-    def check_record(self, name: str, length: int, contigs: list[Contig], odds: LogOdds) -> None:
+    def check_record(self, record: Record, contigs: list[Contig], odds: LogOdds) -> None:
         """Raise OutputError if a record or the scores of its regions are not those of the calls.
 
         Parameters
         ----------
-        name, length
-            Of the record.
+        record
+            One of those that were called.
         contigs
             Its contigs.
         odds
             Of the reported states, in the order of the summary.
         """
-        if self.record_lengths[name] != length:
-            raise self._other(
-                "another sequence", f"record {name} has {length} bases, not those it had"
-            )
+        name = record.name
+        if checksums(record.bases) != self.records[name].sequence:
+            raise self._other("another sequence", f"record {name} has other bases here")
+        if record.circular != self.records[name].circular:
+            raise self._other("another sequence", f"record {name} has another topology here")
         states = list(self.summary["regions"])
         rows = self.table[self.table["record"] == name].head(_ENOUGH_CHECKED)
         columns = ("region_id", "state", "start", "length", "log_odds_bits")
@@ -147,7 +156,7 @@ class Called:
 
     def check_whole(self, found: set[str], bases: int) -> None:
         """Raise OutputError if records are missing, or other bases were decoded."""
-        missing = [name for name in self.record_lengths if name not in found]
+        missing = [name for name in self.records if name not in found]
         if missing:
             raise self._other("another sequence", f"record {missing[0]} is not in the one given")
         if bases != self.bases:
@@ -155,12 +164,6 @@ class Called:
                 "another sequence",
                 f"{self.bases:,} bases were decoded, but the one given has {bases:,}",
             )
-
-    def check_states(self, model: Model) -> None:
-        """Raise OutputError if the model reports other states."""
-        names = [name for name, kept in zip(model.names, model.reported, strict=True) if kept]
-        if names != list(self.summary["regions"]):
-            raise self._other("another model", f"its reported states are {', '.join(names)}")
 
     def _other(self, what: str, detail: str) -> OutputError:
         return OutputError(f"{self.folder}: these calls were made with {what}; {detail}")
@@ -184,7 +187,7 @@ def read_called(folder: str | Path) -> Called:
     return Called(
         root,
         read_regions_table(root / "regions.tsv"),
-        read_chrom_sizes(root / "chrom.sizes"),
+        {row.name: row for row in read_record_table(root / "records.tsv")},
         summary,
         provenance,
     )

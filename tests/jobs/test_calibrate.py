@@ -138,7 +138,7 @@ def test_too_small_is_said(made: Path, tmp_path: Path, capsys: pytest.CaptureFix
 @pytest.mark.parametrize(
     ("change", "told"),
     [
-        ("base", "these calls were made with another sequence; give the sequence"),
+        ("base", "these calls were made with another sequence; record one has other bases"),
         ("record", "these calls were made with another sequence"),
         ("model", "these calls were made with another model; give the model"),
         ("state", "these calls were made with another model"),
@@ -196,7 +196,15 @@ def test_gathered_calls_are_checked_by_their_regions(
     made: Path, tmp_path: Path, capsys: pytest.CaptureFixture[str]
 ) -> None:
     """Gathered calls hold no checksum of sequence or model, so scores are compared."""
-    assert main(["gather", str(made / "calls"), "--output", str(tmp_path / "gathered")]) == 0
+    given = [str(made / "a.fa"), "--model", str(made / "model.json")]
+    parts, batches = str(tmp_path / "parts"), tmp_path / "batches"
+    assert main(["batches", *given, "--output", str(batches), "--parts", parts]) == 0
+    assert main(["cut", given[0], "--batches", str(batches), "--output", f"{tmp_path}/cut"]) == 0
+    key = (batches / "batches.tsv").read_text().splitlines()[1].split("\t")[0]
+    part = [f"{tmp_path}/cut/{key}.fa", *given[1:], "--exclude", f"{tmp_path}/cut/{key}.bed"]
+    assert main(["decode", *part, "--output", f"{parts}/{key}"]) == 0
+    gather = ["gather", str(batches), "--parts", parts]
+    assert main([*gather, "--output", str(tmp_path / "gathered")]) == 0
     given = ["--calls", str(tmp_path / "gathered"), "--output", str(tmp_path / "out"), *QUICK]
     good = ["calibrate", str(made / "a.fa"), "--model", str(made / "model.json"), *given]
     assert main(good) == 0
