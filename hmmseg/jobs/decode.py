@@ -26,8 +26,7 @@ from hmmseg.regions.composition import (
 )
 from hmmseg.regions.intervals import Filters
 from hmmseg.regions.islands import island_criteria
-from hmmseg.regions.masking import SOFT_MASKED, soft_masked_fraction
-from hmmseg.regions.table import number_regions, regions_of_record
+from hmmseg.regions.table import Columns, regions_of_record, table_of_records
 from hmmseg.sequence.contigs import Contig
 from hmmseg.sequence.identity import Checksums, checksums
 from hmmseg.sequence.reading import Record
@@ -37,7 +36,7 @@ from hmmseg.tracks.gff3 import write_regions_gff3
 from hmmseg.tracks.records import RecordRow, write_record_table
 from hmmseg.tracks.sizes import write_chrom_sizes
 from hmmseg.tracks.spool import SpooledTrack
-from hmmseg.tracks.table import COLUMNS, write_regions_table
+from hmmseg.tracks.table import write_regions_table
 
 __all__ = ["Run", "Summary", "decode", "decode_once", "track_name", "write_result"]
 
@@ -269,7 +268,7 @@ class Run:
         self._skipped: list[str] = []
         self._contigs = 0
         self._decoded = 0
-        self._tables: list[pd.DataFrame] = []
+        self._tables: list[Columns] = []
         self._counts: list[Counts] = []
         self.not_called = 0
         """Contigs that the caller could not call."""
@@ -291,8 +290,7 @@ class Run:
             decoded_bases=self._decoded,
             states=tuple(self._caller.names[state] for state in self._caller.states),
         )
-        table = number_regions(self._tables) if self._tables else pd.DataFrame()
-        return result, table, counts_together(self._counts)
+        return result, table_of_records(self._tables), counts_together(self._counts)
 
     def _record(self, record: Record, contigs: list[Contig]) -> None:
         self._lengths[record.name] = len(record)
@@ -312,11 +310,9 @@ class Run:
             self._decoded += len(contig)
         starts = ends = np.empty(0, np.int64)
         if calls:
-            table = regions_of_record(calls, self._caller.names)
-            # First behind the columns that every table has; the identifier is still to come.
-            table.insert(len(COLUMNS) - 1, SOFT_MASKED, soft_masked_fraction(table, record))
+            table = regions_of_record(record, calls, self._caller.names)
+            starts, ends = table["start"], table["end"]
             self._tables.append(table)
-            starts, ends = (table[name].to_numpy(np.int64) for name in ("start", "end"))
         self._counts.append(counts_of_record(record, starts, ends))
 
     def _follower(self, contig: Contig) -> Watch:

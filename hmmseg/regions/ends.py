@@ -108,6 +108,8 @@ class EndSearch:
             lie before the first position or beyond the last.
         """
         count, length = len(spans.starts), self._length
+        if count == 0:
+            return np.empty((0, 4), np.int64)
         if self._closed and count == 1 and spans.ends[0] - spans.starts[0] == length:
             return np.array([[0, 0, length, length]])  # nowhere does it begin or end
         if self._closed:

@@ -5,11 +5,24 @@ from typing import Any
 
 import numpy as np
 import pandas as pd
+from numpy.typing import NDArray
 
 from hmmseg.regions.calling import Calls
+from hmmseg.regions.masking import SOFT_MASKED, soft_masked_fraction
 from hmmseg.sequence.contigs import Contig
+from hmmseg.sequence.reading import Record
 
-__all__ = ["LIMITS", "WRONG_BASES", "number_regions", "regions_of_record"]
+__all__ = [
+    "LIMITS",
+    "WRONG_BASES",
+    "Columns",
+    "number_regions",
+    "regions_of_record",
+    "table_of_records",
+]
+
+Columns = dict[str, NDArray[Any]]
+"""Columns of a table of regions, by name; quicker than a table for every record."""
 
 LIMITS = ("start_low", "start_high", "end_low", "end_high")
 """Names of the columns."""
@@ -17,18 +30,18 @@ LIMITS = ("start_low", "start_high", "end_low", "end_high")
 WRONG_BASES = "expected_wrong_bases"
 """Name of the column."""
 
-_POSTERIOR_DECIMALS = 4
-_BITS_DECIMALS = 3
-_BASES_DECIMALS = 2
+_DECIMALS = {"mean_posterior": 4, "log_odds_bits": 3, WRONG_BASES: 2}
 
 
-def regions_of_record(calls: Sequence[tuple[Contig, Calls]], names: Sequence[str]) -> pd.DataFrame:
-    """Return one record's regions in record coordinates, not yet numbered.
-
-    Scores are rounded here, once, so that every file that shows them shows the same.
+def regions_of_record(
+    record: Record, calls: Sequence[tuple[Contig, Calls]], names: Sequence[str]
+) -> Columns:
+    """Return one record's regions in record coordinates.
 
     Parameters
     ----------
+    record
+        The record.
     calls
         The record's contigs and their regions.
     names
@@ -36,33 +49,60 @@ def regions_of_record(calls: Sequence[tuple[Contig, Calls]], names: Sequence[str
 
     Returns
     -------
-    DataFrame
-        Columns record, start, end, length, state, mean_posterior, log_odds_bits; sorted by
-        start. The end of a region across the origin of a circle is start + length. Then
+    dict of array[region]
+        Columns record, start, end, length, state, mean_posterior, log_odds_bits,
+        soft_masked_fraction; sorted by start. The end of a region across the origin of a circle
+        is start + length. Then
         expected_wrong_bases and the limits of start and end, if the calls have posteriors. On a
         circle a limit may lie below 0 or beyond the record's length.
     """
-    parts = []
+    named = np.array(names, dtype=object)
+    parts: list[Columns] = []
     for contig, found in calls:
         starts = (found.intervals.starts + contig.start) % contig.record_length
         lengths = found.intervals.ends - found.intervals.starts
-        columns: dict[str, Any] = {
-            "record": contig.record,
+        columns: Columns = {
+            "record": np.full(len(starts), contig.record, dtype=object),
             "start": starts,
             "end": starts + lengths,
             "length": lengths,
-            "state": [names[state] for state in found.intervals.states],
-            "mean_posterior": np.round(found.mean_posterior, _POSTERIOR_DECIMALS),
-            "log_odds_bits": np.round(found.log_odds_bits, _BITS_DECIMALS),
+            "state": named[found.intervals.states],
+            "mean_posterior": found.mean_posterior,
+            "log_odds_bits": found.log_odds_bits,
+            SOFT_MASKED: soft_masked_fraction(record, starts, starts + lengths),
         }
         if found.wrong_bases is not None:
-            columns[WRONG_BASES] = np.round(found.wrong_bases, _BASES_DECIMALS)
+            columns[WRONG_BASES] = found.wrong_bases
         if found.limits is not None:
             limits = found.limits + (starts - found.intervals.starts)[:, None]
             columns |= dict(zip(LIMITS, limits.T, strict=True))
-        parts.append(pd.DataFrame(columns))
-    table = pd.concat(parts, ignore_index=True)
-    return table.sort_values(["start", "end"], kind="stable", ignore_index=True)
+        parts.append(columns)
+    together = _together(parts)
+    order = np.lexsort((together["end"], together["start"]))
+    return {name: values[order] for name, values in together.items()}
+
+
+def table_of_records(parts: Sequence[Columns]) -> pd.DataFrame:
+    """Return the regions of all records in one table, numbered.
+
+    Scores are rounded here, once, so that every file that shows them shows the same.
+
+    Parameters
+    ----------
+    parts
+        As from :func:`regions_of_record`, in the records' order.
+    """
+    if not parts:
+        return pd.DataFrame()
+    columns = _together(parts)
+    for name, decimals in _DECIMALS.items():
+        if name in columns:
+            columns[name] = np.round(columns[name], decimals)
+    return number_regions([pd.DataFrame(columns)])
+
+
+def _together(parts: Sequence[Columns]) -> Columns:
+    return {name: np.concatenate([part[name] for part in parts]) for name in parts[0]}
 
 
 def number_regions(tables: Sequence[pd.DataFrame]) -> pd.DataFrame:
@@ -71,7 +111,7 @@ def number_regions(tables: Sequence[pd.DataFrame]) -> pd.DataFrame:
     Parameters
     ----------
     tables
-        As from :func:`regions_of_record`, in the records' order; an old identifier is replaced.
+        Tables of regions, in the records' order; an old identifier is replaced.
 
     Returns
     -------

@@ -13,4 +13,4 @@ pytestmark = pytest.mark.slow
 def test_the_truth_lies_within_about_as_often_as_it_should(name: str, decoder: str) -> None:
     within = truth_within(MODELS[name], decoder, [100_000] * 40, seed=2)
     share = sum(within) / len(within)
-    assert 0.93 <= share <= 0.985, f"{share:.4f} of {len(within)}"
+    assert 0.94 <= share <= 0.975, f"{share:.4f} of {len(within)}"
