@@ -50,8 +50,8 @@ def run(line: str) -> int:
 def test_classify_writes_what_decode_writes(here: Path, capsys: pytest.CaptureFixture[str]) -> None:
     assert run(f"{CLASSIFY} --labels truth.bed --output calls --min-length 300") == 0
     assert sorted(p.name for p in Path("calls").iterdir()) == [
-        "chrom.sizes", "composition.tsv", "provenance.json", "region.posterior.bw", "regions.bed",
-        "regions.gff3", "regions.tsv", "summary.json",
+        "chrom.sizes", "composition.tsv", "provenance.json", "records.tsv", "region.posterior.bw",
+        "regions.bed", "regions.gff3", "regions.tsv", "summary.json",
     ]  # fmt: skip
     captured = capsys.readouterr()
     assert captured.err.splitlines()[-1] == (
