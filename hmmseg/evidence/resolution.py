@@ -5,10 +5,12 @@ state. Its edges may be anywhere near, which helps: the posterior adds up all of
 """
 
 import math
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import NamedTuple
 
 import numpy as np
+import pandas as pd
 from numpy.typing import NDArray
 
 from hmmseg.errors import ModelError
@@ -22,7 +24,16 @@ from hmmseg.model.contexts import code_offset, missing_code
 from hmmseg.regions.odds import LogOdds
 from hmmseg.sequence.contigs import Contig
 
-__all__ = ["Detection", "Limits", "Resolution", "formula", "resolution", "statement"]
+__all__ = [
+    "Detection",
+    "Limits",
+    "Resolution",
+    "curve_table",
+    "formula",
+    "resolution",
+    "statement",
+    "table",
+]
 
 SEEN = 0.5
 """Highest posterior within a region from which it counts as detected."""
@@ -112,8 +123,32 @@ def resolution(model: Model, seed: int, threads: int = 1) -> list[Resolution]:
     return found
 
 
-def statement(found: list[Resolution]) -> str:
-    """Return the simulated lengths in words."""
+def table(found: Sequence[Resolution]) -> pd.DataFrame:
+    """Return one row for each state."""
+    return pd.DataFrame(
+        [(one.state, *one.formula, *one.simulated) for one in found],
+        columns=["state", "formula_l50", "formula_l95", "simulated_l50", "simulated_l95"],
+    )
+
+
+def curve_table(found: Sequence[Resolution]) -> pd.DataFrame:
+    """Return the planted regions, one row for each state and length."""
+    return pd.DataFrame(
+        [(one.state, *point) for one in found for point in one.curve],
+        columns=["state", "length", "trials", "detected"],
+    )
+
+
+def statement(found: Sequence[Resolution], called: Mapping[str, Sequence[int]]) -> str:
+    """Return the simulated lengths in words, and how many regions are shorter.
+
+    Parameters
+    ----------
+    found
+        Of each state.
+    called
+        Lengths of the regions that were called, by state; may be empty.
+    """
     lines = []
     for one in found:
         if math.isnan(one.simulated.l50):
@@ -122,10 +157,13 @@ def statement(found: list[Resolution]) -> str:
                 f"any length tried, up to {max(point.length for point in one.curve):,} bp."
             )
             continue
+        l50, lengths = one.simulated.l50, called.get(one.state, ())
+        shorter = sum(length < l50 for length in lengths)
         lines.append(
-            f"Regions of state {one.state} shorter than about {_two_digits(one.simulated.l50)} bp "
-            "cannot be told from background with this model: half of them are seen at that "
-            f"length, 95 % at about {_two_digits(one.simulated.l95)} bp."
+            f"Regions of state {one.state} shorter than about {_two_digits(l50)} bp cannot be told "
+            "from background with this model: half of them are seen at that length, 95 % at about "
+            f"{_two_digits(one.simulated.l95)} bp"
+            + (f"; {shorter} of {len(lengths)} called are shorter." if shorter else ".")
         )
     return " ".join(lines) or "The model reports no state that could be told from another."
 

@@ -6,7 +6,14 @@ import numpy as np
 import pytest
 
 from hmmseg.evidence.planting import planted, rest_of
-from hmmseg.evidence.resolution import Detection, formula, resolution, statement
+from hmmseg.evidence.resolution import (
+    Detection,
+    curve_table,
+    formula,
+    resolution,
+    statement,
+    table,
+)
 from hmmseg.model import Model
 from hmmseg.model.contexts import joint_levels
 from tests.evidence.planted import LIMIT_MODELS, island_model, plain_share_detected
@@ -103,8 +110,8 @@ def test_what_cannot_be_seen_is_said_to_be() -> None:
     (found,) = resolution(model, 1)
     assert math.isnan(found.simulated.l50)
     assert math.isnan(found.formula.l50)
-    assert "cannot be told" in statement([found])
-    assert "at any length tried" in statement([found])
+    assert "cannot be told" in statement([found], {})
+    assert "at any length tried" in statement([found], {})
 
 
 def test_states_with_stages_have_no_formula() -> None:
@@ -143,8 +150,15 @@ def test_a_model_of_domains_has_no_background() -> None:
 
 def test_statement_gives_the_simulated_lengths() -> None:
     (found,) = resolution(LIMIT_MODELS["strong"], 1)
-    words = statement([found])
+    words = statement([found], {})
     assert f"shorter than about {found.simulated.l50:.2g} bp" in words
     assert f"95 % at about {found.simulated.l95:.2g} bp" in words
+    assert "called" not in words
+    short, long = int(found.simulated.l50) - 1, int(found.simulated.l95)
+    assert "; 2 of 3 called are shorter." in statement([found], {"island": [short, short, long]})
+    rows = curve_table([found])
+    assert rows["trials"].sum() == sum(point.trials for point in found.curve)
     assert isinstance(found.curve[0], Detection)
-    assert "no state" in statement([])
+    (row,) = table([found]).to_dict("records")
+    assert row["simulated_l50"] == found.simulated.l50
+    assert "no state" in statement([], {})
