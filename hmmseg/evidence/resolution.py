@@ -95,12 +95,15 @@ class Resolution:
         From the formula, and from planted regions, which is the one to believe.
     curve : tuple of Detection
         The planted regions, by length.
+    rest : str
+        What the region is told from, in words.
     """
 
     state: str
     formula: Limits
     simulated: Limits
     curve: tuple[Detection, ...]
+    rest: str = "background"
 
 
 def resolution(model: Model, seed: int, threads: int = 1) -> list[Resolution]:
@@ -119,7 +122,8 @@ def resolution(model: Model, seed: int, threads: int = 1) -> list[Resolution]:
     for state, name in enumerate(model.names):
         if model.reported[state] and rest_of(model, state):
             curve = _curve(model, state, seed, threads)
-            found.append(Resolution(name, formula(model, state), _fitted(curve), curve))
+            rest = "background" if model.background else "the other states"
+            found.append(Resolution(name, formula(model, state), _fitted(curve), curve, rest))
     return found
 
 
@@ -153,7 +157,7 @@ def statement(found: Sequence[Resolution], called: Mapping[str, Sequence[int]]) 
     for one in found:
         if math.isnan(one.simulated.l50):
             lines.append(
-                f"Regions of state {one.state} cannot be told from background with this model at "
+                f"Regions of state {one.state} cannot be told from {one.rest} with this model at "
                 f"any length tried, up to {max(point.length for point in one.curve):,} bp."
             )
             continue
@@ -161,7 +165,7 @@ def statement(found: Sequence[Resolution], called: Mapping[str, Sequence[int]]) 
         shorter = sum(length < l50 for length in lengths)
         lines.append(
             f"Regions of state {one.state} shorter than about {_two_digits(l50)} bp cannot be told "
-            "from background with this model: half of them are seen at that length, 95 % at about "
+            f"from {one.rest} with this model: half of them are seen at that length, 95 % at about "
             f"{_two_digits(one.simulated.l95)} bp"
             + (f"; {shorter} of {len(lengths)} called are shorter." if shorter else ".")
         )

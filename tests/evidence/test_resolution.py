@@ -146,6 +146,7 @@ def test_a_model_of_domains_has_no_background() -> None:
     found = resolution(domains, 1)
     assert [one.state for one in found] == ["background", "island"]
     assert found[0].simulated.l50 == pytest.approx(found[1].simulated.l50, rel=0.2)
+    assert statement(found, {}).count("cannot be told from the other states") == 2
 
 
 def test_statement_gives_the_simulated_lengths() -> None:
