@@ -13,8 +13,10 @@ import pandas as pd
 from hmmseg.errors import HmmsegError, OutputError
 from hmmseg.outputs import PROVENANCE, sha256_of
 from hmmseg.provenance import read_provenance
+from hmmseg.regions.composition import WORDS
 from hmmseg.tracks.bed import BedLine, bed_lines, read_bed
 from hmmseg.tracks.bigwig import summarize_track
+from hmmseg.tracks.counts import read_counts, read_names
 from hmmseg.tracks.sizes import read_chrom_sizes
 from hmmseg.tracks.table import DECIMALS, read_regions_table, region_problems
 
@@ -30,9 +32,10 @@ def verify(folder: str | Path) -> list[str]:
 
     Every file must be listed in ``provenance.json`` and have the size and SHA-256 that stand
     there; hidden files are passed over. Then, as far as the files are there: regions lie
-    inside their records, are sorted and have unique names, and are the same in BED, table and
-    GFF3; posterior tracks can be read, have the records of ``chrom.sizes`` and values between
-    0 and 1; the counts in ``summary.json`` are those of the regions.
+    inside their records, are sorted and have unique names, and are the same in BED, table,
+    GFF3 and the counts of bases; posterior tracks can be read, have the records of
+    ``chrom.sizes`` and values between 0 and 1; the counts in ``summary.json`` are
+    those of the regions.
 
     Parameters
     ----------
@@ -103,6 +106,8 @@ def _content_checks(root: Path) -> Iterator[tuple[str, _Check]]:
             yield "regions.bed", _check_bed
         if (root / "regions.gff3").is_file():
             yield "regions.gff3", _check_gff3
+        if (root / "composition.tsv").is_file():
+            yield "composition.tsv", _check_counts
     if has_sizes and any(root.glob("*.posterior.bw")):
         yield "posterior tracks", _check_tracks
     if has_table and (root / "summary.json").is_file():
@@ -143,6 +148,21 @@ def _check_gff3(root: Path, problems: list[str]) -> str:
     if list(_gff3_regions(root / "regions.gff3")) != expected:
         problems.append("regions.gff3: its features are not those of regions.tsv")
     return "regions.gff3 has the features of regions.tsv"
+
+
+def _check_counts(root: Path, problems: list[str]) -> str:
+    table, lengths = _read(root)
+    path = root / "composition.tsv"
+    genome, regions = read_counts(path, WORDS)
+    bases = regions[:, :4].sum(axis=1)
+    if read_names(path) != table["region_id"].tolist():
+        problems.append("composition.tsv: its regions are not those of regions.tsv")
+    elif (bases > table["length"].to_numpy()).any():
+        name = table["region_id"][int(np.argmax(bases > table["length"].to_numpy()))]
+        problems.append(f"composition.tsv: region {name} has more bases than its length")
+    if genome[:4].sum() > sum(lengths.values()):
+        problems.append("composition.tsv: the genome has more bases than the records")
+    return "composition.tsv counts the regions of regions.tsv"
 
 
 def _gff3_regions(path: Path) -> Iterator[tuple[str, int, int, str]]:

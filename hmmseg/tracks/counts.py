@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from hmmseg.errors import OutputError
 
-__all__ = ["read_counts", "write_counts"]
+__all__ = ["read_counts", "read_names", "write_counts"]
 
 _GENOME = "genome"
 
@@ -43,6 +43,12 @@ def write_counts(
         file.write("\t".join(("region_id", *words)) + "\n")
         for name, row in zip((_GENOME, *names), [genome.tolist(), *regions.tolist()], strict=True):
             file.write("\t".join((name, *map(str, row))) + "\n")
+
+
+def read_names(path: str | Path) -> list[str]:
+    """Return the names of the regions."""
+    lines = Path(path).read_text(encoding="utf-8").splitlines()
+    return [line.split("\t", 1)[0] for line in lines[2:]]
 
 
 def read_counts(

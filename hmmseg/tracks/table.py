@@ -180,7 +180,7 @@ def region_problems(
 def fixed(value: float, decimals: int) -> str:
     """Write a number with so many decimals; what rounds to zero has no sign."""
     text = f"{value:.{decimals}f}"
-    return text.removeprefix("-") if text.strip("-0.") == "" else text
+    return text[1:] if text[0] == "-" and text.strip("-0.") == "" else text
 
 
 def _steps_back(

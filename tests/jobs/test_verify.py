@@ -4,12 +4,14 @@ import json
 from collections.abc import Callable
 from pathlib import Path
 
+import numpy as np
 import pytest
 
 from hmmseg.errors import OutputError
 from hmmseg.jobs.verify import verify
 from hmmseg.outputs import write_json
 from hmmseg.provenance import write_provenance
+from hmmseg.regions.composition import WORDS
 from hmmseg.tracks import (
     PosteriorTrack,
     write_chrom_sizes,
@@ -17,6 +19,7 @@ from hmmseg.tracks import (
     write_regions_gff3,
     write_regions_table,
 )
+from hmmseg.tracks.counts import write_counts
 from tests.tracks.regions import CIRCULAR, LENGTHS, table_of
 
 TABLE = table_of(
@@ -186,6 +189,36 @@ def test_wrong_content(result: Path, do: Callable[[Path], object], message: str)
     with pytest.raises(OutputError, match=message) as caught:
         verify(result)
     assert "\n" not in str(caught.value)
+
+
+@pytest.mark.parametrize(
+    ("names", "bases", "message"),
+    [
+        (None, (50, 10), None),
+        (["island_1"] * 4, (50, 10), r"composition\.tsv: its regions are not those"),
+        (None, (50, 51), r"composition\.tsv: region island_1 has more bases than its length"),
+        (None, (999, 10), r"composition\.tsv: the genome has more bases than the records"),
+    ],
+)
+def test_counts_of_bases(
+    result: Path, names: list[str] | None, bases: tuple[int, int], message: str | None
+) -> None:
+    genome, region = (np.array([n] + [0] * (len(WORDS) - 1)) for n in bases)
+    names = names or TABLE["region_id"].tolist()
+    write_counts(result / "composition.tsv", WORDS, genome, np.tile(region, (4, 1)), names)
+    seal(result)
+    if message is None:
+        assert "composition.tsv counts the regions of regions.tsv" in verify(result)
+        return
+    with pytest.raises(OutputError, match=message):
+        verify(result)
+
+
+def test_counts_that_are_none(result: Path) -> None:
+    (result / "composition.tsv").write_text("region_id\tA\ngenome\tx\n")
+    seal(result)
+    with pytest.raises(OutputError, match="not the counts that decode writes"):
+        verify(result)
 
 
 def test_all_problems_are_counted(result: Path) -> None:
