@@ -92,7 +92,7 @@ class _Numbers(click.ParamType):
 @click.option(
     "--tolerance",
     type=click.FloatRange(0),
-    default=1e-7,
+    default=1e-8,
     show_default=True,
     metavar="BITS_PER_BASE",
     help="Stop when an iteration gains less.",
