@@ -41,6 +41,8 @@ MEASURES = (
 )
 """Names of the columns."""
 
+_AT_ONCE = 1 << 14
+
 
 class Counts(NamedTuple):
     """How often bases and dinucleotides occur.
@@ -111,18 +113,28 @@ def measures(counts: Counts) -> pd.DataFrame:
         - ``dinucleotide_distance``: mean absolute difference from the genome of the 16 relative
           abundances of dinucleotides, both strands together (delta* of [2]_).
     """
-    a, c, g, t = counts.regions[:, :4].T.astype(np.float64)
-    cg = counts.regions[:, WORDS.index("CG")].astype(np.float64)
+    # Some regions at a time: what is on the way takes several times the counts' memory.
+    pieces = range(0, max(len(counts.regions), 1), _AT_ONCE)
+    parts = [_measured(counts.regions[at : at + _AT_ONCE], counts.genome) for at in pieces]
+    columns = (np.concatenate(column) for column in zip(*parts, strict=True))
+    return pd.DataFrame(dict(zip(MEASURES, columns, strict=True)))
+
+
+def _measured(
+    words: NDArray[np.int64], genome: NDArray[np.int64]
+) -> tuple[NDArray[np.float64], ...]:
+    """Return the measures of regions (int64[region, word]), each float64[region]."""
+    a, c, g, t = words[:, :4].T.astype(np.float64)
+    cg = words[:, WORDS.index("CG")].astype(np.float64)
     with np.errstate(divide="ignore", invalid="ignore"):
-        columns = (
+        return (
             (c + g) / (a + c + g + t),
             np.where(c * g > 0, cg * (a + c + g + t) / (c * g), np.nan),
             (g - c) / (g + c),
             (a - t) / (a + t),
-            _entropy(counts.regions[:, 4:]),
-            _distance(_abundances(counts.regions), _abundances(counts.genome[None, :])),
+            _entropy(words[:, 4:]),
+            _distance(_abundances(words), _abundances(genome[None, :])),
         )
-    return pd.DataFrame(dict(zip(MEASURES, columns, strict=True)))
 
 
 def _entropy(pairs: NDArray[np.int64]) -> NDArray[np.float64]:

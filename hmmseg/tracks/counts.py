@@ -5,6 +5,7 @@ Tab-separated, with a header: ``region_id`` and a column for each word. The firs
 """
 
 from collections.abc import Iterable, Sequence
+from itertools import chain
 from pathlib import Path
 
 import numpy as np
@@ -41,8 +42,8 @@ def write_counts(
     """
     with open(path, "w", encoding="utf-8", newline="\n") as file:
         file.write("\t".join(("region_id", *words)) + "\n")
-        for name, row in zip((_GENOME, *names), [genome.tolist(), *regions.tolist()], strict=True):
-            file.write("\t".join((name, *map(str, row))) + "\n")
+        for name, row in zip((_GENOME, *names), chain([genome], regions), strict=True):
+            file.write("\t".join((name, *map(str, row.tolist()))) + "\n")
 
 
 def read_names(path: str | Path) -> list[str]:

@@ -54,6 +54,7 @@ DECIMALS: Mapping[str, int] = {
 _TEXT = ("region_id", "record", "state")
 _WHOLE = ("start", "end", "length")
 _NOT_KNOWN = "NA"
+_ROWS_AT_ONCE = 1 << 14
 _WHOLE_NUMBER = r"0|-?[1-9][0-9]{0,17}"
 
 
@@ -83,10 +84,9 @@ def write_regions_table(
         raise OutputError(f"cannot write {path}: the table of regions lacks {', '.join(missing)}")
     names = [*COLUMNS, *(str(name) for name in table.columns if name not in COLUMNS)]
     places = {**DECIMALS, **(decimals or {})}
-    columns = [_as_text(table[name], places.get(name)) for name in names]
     with open(path, "w", encoding="utf-8", newline="\n") as file:
         file.write("\t".join(names) + "\n")
-        for number, row in enumerate(zip(*columns, strict=True), start=2):
+        for number, row in enumerate(_rows_as_text(table[names], places), start=2):
             line = "\t".join(row)
             if line.count("\t") >= len(row) or len(line.splitlines()) > 1:
                 raise OutputError(f"cannot write {path}:{number}: a text holds a tab or line end")
@@ -188,6 +188,13 @@ def _steps_back(
 ) -> npt.NDArray[np.bool_]:
     before = (order[1:] < order[:-1]) | ((order[1:] == order[:-1]) & (start[1:] < start[:-1]))
     return np.concatenate([np.zeros(min(1, len(order)), dtype=bool), before])
+
+
+def _rows_as_text(table: pd.DataFrame, places: Mapping[str, int]) -> Iterator[tuple[str, ...]]:
+    """Yield the cells of every row; only some rows are held as text at a time."""
+    for first in range(0, len(table), _ROWS_AT_ONCE):
+        rows = table.iloc[first : first + _ROWS_AT_ONCE]
+        yield from zip(*(_as_text(rows[name], places.get(str(name))) for name in rows), strict=True)
 
 
 def _as_text(column: "pd.Series[Any]", decimals: int | None) -> list[str]:

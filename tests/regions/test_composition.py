@@ -11,6 +11,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from hmmseg.kernels.pairs import count_pairs
+from hmmseg.regions import composition
 from hmmseg.regions.composition import (
     MEASURES,
     WORDS,
@@ -134,6 +135,17 @@ def test_parts_together_are_the_whole() -> None:
     assert not np.allclose(
         together["dinucleotide_distance"][:2], measures(parts[0])["dinucleotide_distance"]
     )
+
+
+def test_many_regions_are_measured_piece_by_piece(monkeypatch: pytest.MonkeyPatch) -> None:
+    random = np.random.default_rng(1)
+    text = "".join(random.choice(list("ACGT"), 500))
+    starts = random.integers(0, 400, 23)
+    counts = counts_of_record(record_of(text), starts, starts + 90)
+    whole = measures(counts)
+    monkeypatch.setattr(composition, "_AT_ONCE", 5)
+    assert measures(counts).equals(whole)
+    assert len(whole) == 23
 
 
 def test_a_worked_example() -> None:

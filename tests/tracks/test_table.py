@@ -65,6 +65,16 @@ def test_further_columns(tmp_path: Path) -> None:
     assert found["log_odds_bits"].tolist() == [12.346, np.inf]
 
 
+def test_many_rows_are_written_some_at_a_time(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    many = table_of([(f"a_{i}", "c.1", i, i + 5, "a", 0.5, float(i)) for i in range(23)])
+    write_regions_table(tmp_path / "one.tsv", many)
+    monkeypatch.setattr("hmmseg.tracks.table._ROWS_AT_ONCE", 5)
+    write_regions_table(tmp_path / "other.tsv", many)
+    assert (tmp_path / "one.tsv").read_bytes() == (tmp_path / "other.tsv").read_bytes()
+
+
 def test_no_regions(tmp_path: Path) -> None:
     write_regions_table(tmp_path / "x.tsv", table_of([]))
     found = read_regions_table(tmp_path / "x.tsv")
