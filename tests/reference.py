@@ -53,8 +53,10 @@ __all__ = [
     "fixed_point_score",
     "known_contexts",
     "log_path_probability",
+    "plain_chain_bases",
     "plain_limits",
     "plain_pairs",
+    "plain_significance",
     "plain_staying",
 ]
 
@@ -382,3 +384,51 @@ def plain_limits(
         if reached >= 1 - tail:
             near = at
     return (far, near) if step < 0 else (near + 1, far + 1)
+
+
+def plain_chain_bases(
+    table: list[list[float]], factors: list[float], window: int, order: int, place: int,
+    uniforms: Iterable[float],
+) -> list[int]:  # fmt: skip
+    """Draw bases one by one: a base is the first whose cumulative probability exceeds its number.
+
+    Behind its context, as far back as there are bases, C and G weigh ``factor`` times as much,
+    and the weights of all four are divided by their sum.
+    """
+    bases: list[int] = []
+    for at, uniform in enumerate(uniforms):
+        context = bases[-order:] if order else []
+        row = (4 ** len(context) - 1) // 3
+        for position, base in enumerate(reversed(context)):
+            row += base * 4**position
+        factor = factors[(place + at) // window]
+        a, c, g, t = table[row]
+        weights = [a, factor * c, factor * g, t]
+        reached = uniform * (weights[0] + weights[1] + weights[2] + weights[3])
+        total, drawn = 0.0, 0
+        for base in range(3):
+            total += weights[base]
+            if reached >= total:
+                drawn = base + 1
+        bases.append(drawn)
+    return bases
+
+
+def plain_significance(
+    real: Sequence[float], null: Sequence[float], ratio: float
+) -> list[tuple[float, float, float]]:
+    """Return E, p and q of each real score, as they are defined."""
+
+    def by_chance(threshold: float) -> float:
+        return (1 + sum(score >= threshold for score in null)) * ratio
+
+    found = []
+    for own in real:
+        shares = [
+            by_chance(threshold) / sum(score >= threshold for score in real)
+            for threshold in real
+            if threshold <= own
+        ]
+        chance = by_chance(own)
+        found.append((chance, 1 - math.exp(-chance), min(1.0, *shares)))
+    return found

@@ -1,39 +1,24 @@
 """The command ``calibrate``: how sure are the regions that were called."""
 
 import json
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
-import numpy as np
-from numpy.typing import NDArray
-
 from hmmseg.errors import ModelError, UsageError
-from hmmseg.evidence.drift import Drift, RecordWindows, fit_drift
+from hmmseg.evidence.assembly import Assembly
 from hmmseg.evidence.judgement import Judged, false_regions, judge
 from hmmseg.evidence.null_regions import Found, Scoring, call_nulls, replicates_of
-from hmmseg.evidence.nulls import (
-    NULLS,
-    BackgroundNull,
-    Null,
-    Piece,
-    background_model,
-    chain_null,
-    drift_null,
-    null_order,
-    pieces_of,
-)
+from hmmseg.evidence.nulls import NULLS, Null, null_order
 from hmmseg.jobs.calibration_files import Outcome, write_calibration
 from hmmseg.jobs.called import Called, read_called
 from hmmseg.jobs.refit import Refit, refit_of, trained_on
 from hmmseg.model import Model, load_model
-from hmmseg.model.contexts import code_count, code_offset, missing_code
 from hmmseg.outputs import PROVENANCE, check_target, sha256_of, whole_folder
 from hmmseg.progress import Progress
 from hmmseg.provenance import is_current, write_provenance
 from hmmseg.regions.calling import Caller
 from hmmseg.regions.odds import LogOdds
-from hmmseg.training.chains import chain_of_words, code_counts
 
 __all__ = ["NullPlan", "calibrate", "null_bases_of"]
 
@@ -41,8 +26,6 @@ _TIMES = 20
 _FEWEST_BASES, _MOST_BASES = 20_000_000, 500_000_000
 _REFITTED = 5_000_000
 """Assemblies below this are trained anew on each null replicate."""
-
-_LONGEST_PIECE = 10_000_000
 
 
 @dataclass(frozen=True)
@@ -75,18 +58,6 @@ class NullPlan:
 def null_bases_of(bases: int) -> int:
     """Return how many bases of null sequence an assembly of some bases gets by default."""
     return min(max(_TIMES * bases, _FEWEST_BASES), _MOST_BASES)
-
-
-@dataclass(eq=False)
-class _Assembly:
-    """What nulls need to know of the sequence, gathered in one pass."""
-
-    pieces: list[Piece] = field(default_factory=list)
-    contigs: list[Piece] = field(default_factory=list)
-    windows: list[RecordWindows] = field(default_factory=list)
-    words: NDArray[np.float64] = field(default_factory=lambda: np.zeros(0))
-    bases: int = 0
-    known: int = 0
 
 
 def calibrate(  # noqa: PLR0913 - as many as the command has
@@ -176,7 +147,7 @@ def _outcome(
     assembly = _survey(called, model, fasta, exclude)
     refit = _refit(model, model_path, fasta, plan, assembly)
     scoring = Scoring(not model.background, refit is not None and refit.by_chance)
-    nulls, drift = _nulls(model, assembly)
+    nulls, drift = assembly.nulls(model)
     chosen = plan.null or ("chain" if scoring.boundaries else "drift")
     if chosen not in nulls:
         raise ModelError(
@@ -210,34 +181,21 @@ def _kept(judged: Judged, q: float) -> int:
     return int((judged.regions["q_value"] <= q).sum())
 
 
-def _survey(called: Called, model: Model, fasta: str, exclude: str | None) -> _Assembly:
+def _survey(called: Called, model: Model, fasta: str, exclude: str | None) -> Assembly:
     """Read the sequence once, and make sure that the calls are of it."""
-    order = null_order(model.order)
     odds = LogOdds(model, [i for i, kept in enumerate(model.reported) if kept])
-    counts = np.zeros(code_count(order), np.int64)
-    found, seen = _Assembly(), set()
+    found, seen = Assembly(null_order(model.order)), set()
     for record, contigs in called.sources(fasta, exclude).read_contigs():
-        if record.name not in called.records:
-            continue
-        called.check_record(record, contigs, odds)
-        number = len(found.windows)
-        seen.add(record.name)
-        windows = RecordWindows(len(record), record.circular)
-        found.windows.append(windows)
-        for contig in contigs:
-            windows.add(contig)
-            found.pieces += pieces_of(contig, number, _LONGEST_PIECE)
-            found.contigs += pieces_of(contig, number, len(contig))
-            found.bases += len(contig)
-        counts += code_counts(contigs, order)
+        if record.name in called.records:
+            called.check_record(record, contigs, odds)
+            found.add(len(record), record.circular, contigs)
+            seen.add(record.name)
     called.check_whole(seen, found.bases)
-    found.words = counts[code_offset(order) : missing_code(order)].astype(np.float64)
-    found.known = int(counts[:-1].sum())
     return found
 
 
 def _refit(
-    model: Model, model_path: str, fasta: str, plan: NullPlan, assembly: _Assembly
+    model: Model, model_path: str, fasta: str, plan: NullPlan, assembly: Assembly
 ) -> Refit | None:
     """Return how the model is trained anew; None if it is not."""
     wanted = plan.refit
@@ -248,20 +206,10 @@ def _refit(
     return refit_of(model, model_path) if wanted else None
 
 
-def _nulls(model: Model, assembly: _Assembly) -> tuple[dict[str, Null], Drift]:
-    chain = chain_of_words(assembly.words, null_order(model.order), model.symmetric)
-    drift = fit_drift(assembly.windows)
-    nulls: dict[str, Null] = {"chain": chain_null(chain), "drift": drift_null(chain, drift)}
-    background = background_model(model)
-    if background is not None:
-        nulls["background"] = BackgroundNull(background)
-    return nulls, drift
-
-
 def _found(  # noqa: PLR0917 - one for each thing that bears on it
     called: Called,
     model: Model,
-    assembly: _Assembly,
+    assembly: Assembly,
     nulls: dict[str, Null],
     scoring: Scoring,
     refit: Refit | None,
