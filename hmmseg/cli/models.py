@@ -179,7 +179,7 @@ def adopt(model: str, output: str, force: bool) -> None:
     from hmmseg.jobs import adopt as job
 
     found = job.adopt(model, output, force)
-    print_findings(found.findings, found.cautions)
+    click.echo(f"order {found.order}; states: {', '.join(found.names)}")
 
 
 @click.command()

@@ -2,15 +2,15 @@
 
 from pathlib import Path
 
-from hmmseg.jobs.explain import Explained, explain
+from hmmseg.model import Model, load_model
 from hmmseg.outputs import check_target, whole_file
 from hmmseg.provenance import write_provenance
 
 __all__ = ["adopt"]
 
 
-def adopt(model: str, output: str, force: bool) -> Explained:
-    """Check a model document, copy it byte by byte, and return it in words.
+def adopt(model: str, output: str, force: bool) -> Model:
+    """Check a model document, copy it byte by byte, and return what it says.
 
     Parameters
     ----------
@@ -27,8 +27,8 @@ def adopt(model: str, output: str, force: bool) -> Explained:
         The document is no valid model.
     """
     check_target(output, force)
-    explained = explain(model)
+    found = load_model(model)
     with whole_file(output, force=force) as temporary:
         temporary.write_bytes(Path(model).read_bytes())
     write_provenance(output, "adopt", {"model": Path(model)}, None, [model], [output])
-    return explained
+    return found

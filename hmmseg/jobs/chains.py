@@ -5,8 +5,8 @@ from typing import Any, NamedTuple
 
 from hmmseg import __version__
 from hmmseg.errors import HmmsegError, UsageError
-from hmmseg.jobs.gather import read_summary
 from hmmseg.jobs.labelled import read_labelled
+from hmmseg.jobs.results import read_summary
 from hmmseg.jobs.sources import Sources
 from hmmseg.model import Model, model_to_dict
 from hmmseg.outputs import check_target, sha256_of, whole_folder, write_json

@@ -5,7 +5,7 @@ from pathlib import Path
 
 from hmmseg.errors import LabelError
 from hmmseg.evidence.overlap import overlap
-from hmmseg.jobs.gather import read_summary
+from hmmseg.jobs.results import read_summary
 from hmmseg.outputs import whole_file
 from hmmseg.provenance import write_provenance
 from hmmseg.sequence.features import read_features

@@ -1,6 +1,5 @@
 """The command ``gather``: put the calls of an assembly's batches together."""
 
-import json
 from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import Any
@@ -11,6 +10,7 @@ import pandas as pd
 from hmmseg.errors import OutputError
 from hmmseg.jobs.decode import Summary, track_name, write_result
 from hmmseg.jobs.plan import Plan, read_plan
+from hmmseg.jobs.results import read_summary
 from hmmseg.outputs import PROVENANCE, check_target, whole_folder
 from hmmseg.provenance import is_intact, read_provenance, write_provenance
 from hmmseg.regions.composition import WORDS, Counts, counts_together
@@ -20,7 +20,7 @@ from hmmseg.tracks.collection import TrackCollection
 from hmmseg.tracks.counts import read_counts
 from hmmseg.tracks.table import read_regions_table
 
-__all__ = ["gather", "read_summary"]
+__all__ = ["gather"]
 
 _OF_ONE_BATCH = frozenset({"fasta", "exclude"})
 """Parameters in which the parts of one assembly differ."""
@@ -76,24 +76,6 @@ def gather(planned: str, parts: str, output: str, force: bool) -> dict[str, Any]
         parameters = {**plan.parameters, "model": model}
         write_provenance(folder, "gather", parameters, None, inputs, written)
     return summary
-
-
-def read_summary(folder: Path) -> dict[str, Any]:
-    """Return the document ``summary.json`` of a folder of calls.
-
-    Raises
-    ------
-    OutputError
-        There is none, or it is not one.
-    """
-    path = folder / "summary.json"
-    try:
-        document = json.loads(path.read_text(encoding="utf-8"))
-    except (OSError, ValueError):
-        raise OutputError(f"{path}: cannot be read; give a folder written by decode") from None
-    if not isinstance(document, dict) or document.get("format") != "hmmseg-calls":
-        raise OutputError(f"{path}: not a summary of calls; give a folder written by decode")
-    return document
 
 
 def _regions(plan: Plan, folders: Sequence[Path], planned: Path) -> tuple[pd.DataFrame, Counts]:

@@ -4,7 +4,7 @@ from collections.abc import Sequence
 from pathlib import Path
 
 from hmmseg.errors import UsageError
-from hmmseg.jobs.gather import read_summary
+from hmmseg.jobs.results import read_summary
 from hmmseg.outputs import check_target, whole_file
 
 __all__ = ["summary"]
