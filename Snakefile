@@ -18,6 +18,10 @@ rule all:
         selections=selections(),
 
 
+onsuccess:
+    print(reused_batches())
+
+
 include: "workflow/rules/survey.smk"
 include: "workflow/rules/select.smk"
 include: "workflow/rules/train.smk"

@@ -47,6 +47,7 @@ for _command in (
     evidence.calibrate,
     models.score,
     models.simulate,
+    calls.diff,
     calls.verify,
     calls.batches,
     calls.cut,

@@ -7,7 +7,7 @@ import click
 
 from hmmseg.cli import options
 
-__all__ = ["batches", "cut", "decode", "gather", "summary", "verify"]
+__all__ = ["batches", "cut", "decode", "diff", "gather", "summary", "verify"]
 
 # Rooms are imported inside the commands, so that --help need not wait for compilers and plots.
 
@@ -155,6 +155,18 @@ def summary(named: tuple[str, ...], output: str, force: bool) -> None:
     from hmmseg.jobs import summary as job
 
     job.summary(named, output, force)
+
+
+@click.command()
+@click.argument("old", metavar="OLD")
+@click.argument("new", metavar="NEW")
+@options.output
+@options.force
+def diff(old: str, new: str, output: str, force: bool) -> None:
+    """Compare two results: of an assembly and its revision, or of two models."""
+    from hmmseg.jobs import diff as job
+
+    click.echo(job.diff(old, new, output, force))
 
 
 @click.command()

@@ -8,7 +8,7 @@ from typing import Any
 import pandas as pd
 
 from hmmseg.errors import OutputError
-from hmmseg.jobs.gather import read_summary
+from hmmseg.jobs.results import read_summary
 from hmmseg.jobs.sources import Sources
 from hmmseg.model import Model
 from hmmseg.outputs import sha256_of
@@ -17,9 +17,9 @@ from hmmseg.regions.calling import PATH, POSTERIOR
 from hmmseg.regions.intervals import Filters
 from hmmseg.regions.odds import LogOdds
 from hmmseg.sequence.contigs import Contig
-from hmmseg.sequence.identity import checksums
+from hmmseg.sequence.identity import KnownRecord, checksums
 from hmmseg.sequence.reading import Record
-from hmmseg.tracks.records import RecordRow, read_record_table
+from hmmseg.tracks.records import read_record_table
 from hmmseg.tracks.table import read_regions_table
 
 __all__ = ["Called", "read_called"]
@@ -37,7 +37,7 @@ class Called:
     folder : Path
     table : DataFrame
         The regions.
-    records : mapping of str to RecordRow
+    records : mapping of str to KnownRecord
         Every record by its name.
     summary : dict
         The document ``summary.json``.
@@ -47,7 +47,7 @@ class Called:
 
     folder: Path
     table: pd.DataFrame
-    records: Mapping[str, RecordRow]
+    records: Mapping[str, KnownRecord]
     summary: dict[str, Any]
     provenance: dict[str, Any]
 

@@ -28,12 +28,12 @@ from hmmseg.regions.intervals import Filters
 from hmmseg.regions.islands import island_criteria
 from hmmseg.regions.table import Columns, regions_of_record, table_of_records
 from hmmseg.sequence.contigs import Contig
-from hmmseg.sequence.identity import Checksums, checksums
+from hmmseg.sequence.identity import Checksums, KnownRecord, checksums
 from hmmseg.sequence.reading import Record
 from hmmseg.tracks.bed import invalid_bed_names, write_regions_bed
 from hmmseg.tracks.counts import write_counts
 from hmmseg.tracks.gff3 import write_regions_gff3
-from hmmseg.tracks.records import RecordRow, write_record_table
+from hmmseg.tracks.records import write_record_table
 from hmmseg.tracks.sizes import write_chrom_sizes
 from hmmseg.tracks.spool import SpooledTrack
 from hmmseg.tracks.table import write_regions_table
@@ -219,7 +219,7 @@ def write_result(
     )
     circular = set(result.circular)
     rows = (
-        RecordRow(name, length, name in circular, result.sequences[name])
+        KnownRecord(name, length, name in circular, result.sequences[name])
         for name, length in lengths.items()
     )
     write_record_table(folder / "records.tsv", rows)

@@ -10,7 +10,7 @@ import numpy.typing as npt
 from hmmseg.sequence.alphabet import CHUNK, decode, reverse_complement
 from hmmseg.sequence.reading import Record
 
-__all__ = ["Checksums", "checksums", "record_digest", "strand_digest"]
+__all__ = ["Checksums", "KnownRecord", "checksums", "record_digest", "strand_digest"]
 
 Bases = npt.NDArray[np.uint8]
 
@@ -26,6 +26,27 @@ class Checksums(NamedTuple):
 
     given: str
     reverse: str
+
+
+class KnownRecord(NamedTuple):
+    """What is kept of a record, by which it can be recognised.
+
+    Attributes
+    ----------
+    name : str
+        Its name.
+    length : int
+        In bases.
+    circular : bool
+        Whether the position after the last is the first.
+    sequence : Checksums
+        Checksums of its letters.
+    """
+
+    name: str
+    length: int
+    circular: bool
+    sequence: Checksums
 
 
 def checksums(bases: Bases) -> Checksums:

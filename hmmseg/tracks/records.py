@@ -3,39 +3,17 @@
 import csv
 from collections.abc import Iterable
 from pathlib import Path
-from typing import NamedTuple
 
 from hmmseg.errors import OutputError
-from hmmseg.sequence.identity import Checksums
+from hmmseg.sequence.identity import Checksums, KnownRecord
 
-__all__ = ["RecordRow", "read_record_table", "write_record_table"]
+__all__ = ["read_record_table", "write_record_table"]
 
 _COLUMNS = ("record", "length", "topology", "sequence_sha256", "reverse_sha256")
 _TOPOLOGY = {False: "linear", True: "circular"}
 
 
-class RecordRow(NamedTuple):
-    """One record.
-
-    Attributes
-    ----------
-    name : str
-        Its name.
-    length : int
-        In bases.
-    circular : bool
-        Whether the position after the last is the first.
-    sequence : Checksums
-        Checksums of its letters.
-    """
-
-    name: str
-    length: int
-    circular: bool
-    sequence: Checksums
-
-
-def write_record_table(path: str | Path, rows: Iterable[RecordRow]) -> None:
+def write_record_table(path: str | Path, rows: Iterable[KnownRecord]) -> None:
     """Write a header and a line for each record, with tabs between."""
     with open(path, "w", encoding="utf-8", newline="\n") as file:
         file.write("\t".join(_COLUMNS) + "\n")
@@ -44,7 +22,7 @@ def write_record_table(path: str | Path, rows: Iterable[RecordRow]) -> None:
             file.write("\t".join(cells) + "\n")
 
 
-def read_record_table(path: str | Path) -> list[RecordRow]:
+def read_record_table(path: str | Path) -> list[KnownRecord]:
     """Read ``records.tsv``.
 
     Raises
@@ -56,7 +34,7 @@ def read_record_table(path: str | Path) -> list[RecordRow]:
         with open(path, encoding="utf-8", newline="") as file:
             lines = list(csv.DictReader(file, delimiter="\t", quoting=csv.QUOTE_NONE))
         return [
-            RecordRow(
+            KnownRecord(
                 line["record"],
                 int(line["length"]),
                 line["topology"] == _TOPOLOGY[True],

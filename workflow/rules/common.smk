@@ -4,6 +4,7 @@ import math
 import re
 import shlex
 import sys
+import time
 from functools import cache
 from pathlib import Path
 
@@ -245,6 +246,7 @@ def one_of(names):
     return "|".join(map(re.escape, names)) or "(?!)"
 
 
+BEGUN = time.time()
 check_config()
 COLUMNS = ("assembly", *FILES, "fix", "circular", *config["defaults"])
 SETTINGS = read_sheet()
@@ -434,6 +436,17 @@ def decoded_batches(wildcards):
         for row in batches_of(wildcards.assembly)
         if row["reused"] == "no"
     ]
+
+
+def reused_batches():
+    """How many batches of the assemblies that were cut in this run were there already."""
+    tables = [Path(RESULTS, name, "batches", "batches.tsv") for name in LARGE]
+    rows = []
+    for table in tables:
+        if table.is_file() and table.stat().st_mtime >= BEGUN:
+            rows += table.read_text().splitlines()[1:]
+    reused = sum(row.endswith("\tyes") for row in rows)
+    return f"{reused} of {len(rows)} batches were decoded before and used again."
 
 
 def labelled_calls(wildcards):
