@@ -9,7 +9,7 @@ from typing import NoReturn
 import click
 
 from hmmseg import __version__
-from hmmseg.cli import calls, chains, evidence, models, selection, whole
+from hmmseg.cli import calls, chains, evidence, models, pages, selection, whole
 from hmmseg.errors import HmmsegError
 
 __all__ = ["main"]
@@ -58,6 +58,7 @@ for _command in (
     chains.orders,
     chains.machine,
     chains.compare,
+    pages.report,
 ):
     cli.add_command(_command)
 

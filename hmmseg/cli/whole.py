@@ -31,7 +31,7 @@ def annotate(
     sources: Any, output: str, preset: str | None, decisions: str | None,
     features: tuple[str, ...], threads: int, force: bool,
 ) -> None:  # fmt: skip
-    """Do the whole job: survey, decide, train, call regions, compare with chains.
+    """Do the whole job: survey, decide, train, call regions, compare with chains, report.
 
     Decisions are written to DIR/decisions.yaml with their reasons. What is already done is not
     done again.

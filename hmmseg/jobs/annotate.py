@@ -1,4 +1,4 @@
-"""The command ``annotate``: the whole job, from an assembly to called regions.
+"""The command ``annotate``: the whole job, from an assembly to called regions and their report.
 
 Every stage is that of the command of its name, with what was decided as its options. A stage
 whose result is there, and would come out the same, is not done again.
@@ -17,11 +17,13 @@ from hmmseg.jobs.decisions import Decisions, read_decisions, to_yaml
 from hmmseg.jobs.decode import decode
 from hmmseg.jobs.explain import Explained
 from hmmseg.jobs.features import measure_features
+from hmmseg.jobs.report import report
 from hmmseg.jobs.sources import Sources
 from hmmseg.jobs.survey import survey
 from hmmseg.jobs.train import Origin, train
 from hmmseg.model.presets import load_preset
 from hmmseg.outputs import whole_file
+from hmmseg.provenance import provenance_path
 from hmmseg.regions.intervals import Filters
 from hmmseg.training.restarts import Plan
 
@@ -29,7 +31,13 @@ __all__ = ["Annotation", "annotate"]
 
 DECISIONS = "decisions.yaml"
 FEATURES = "features.tsv"
-_RESULTS = {"survey": "survey", "train": "model.json", "decode": "calls", "compare": "comparison"}
+_RESULTS = {
+    "survey": "survey",
+    "train": "model.json",
+    "decode": "calls",
+    "compare": "comparison",
+    "report": "report.html",
+}
 
 _Say = Callable[[str], None]
 
@@ -113,6 +121,7 @@ def annotate(
         table = folder / FEATURES
         rows = measure_features(folder / _RESULTS["decode"], features, table)
         say(f"features: done, {table}")
+    job.report()
     return Annotation(model, calls, verdict, rows)
 
 
@@ -220,6 +229,18 @@ class _Job:
             ),
         )  # fmt: skip
         return words
+
+    def report(self) -> None:
+        """Make the page of all that stands in the folder."""
+        page = self.folder / _RESULTS["report"]
+        # It follows from the files beside it, so an earlier one may always be replaced.
+        ours = provenance_path(page).is_file()
+        self.stage(
+            "report",
+            lambda replaces: report(
+                [str(self.folder)], str(page), figures=None, force=replaces or ours, reuse=True
+            ),
+        )
 
 
 def _wanted(decisions: Decisions) -> Any:

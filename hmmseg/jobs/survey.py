@@ -1,20 +1,27 @@
 """The command ``survey``: describe an assembly before anything is modelled."""
 
 import json
+from collections.abc import Iterator
 from pathlib import Path
 from typing import Any
 
 from hmmseg.jobs.sources import Sources
 from hmmseg.outputs import check_target, whole_folder, write_json
 from hmmseg.provenance import is_current, write_provenance
+from hmmseg.sequence.reading import Record
 from hmmseg.sequence.survey import survey as survey_records
 from hmmseg.sequence.survey import to_dict, to_tsv
+from hmmseg.sequence.windows import gc_windows
+from hmmseg.tracks.spool import SpooledTrack
 
-__all__ = ["survey"]
+__all__ = ["GC_TRACK", "survey"]
+
+GC_TRACK = "gc.bw"
+"""G+C in windows, which a report draws beside the posteriors."""
 
 
 def survey(sources: Sources, output: str, force: bool, reuse: bool = False) -> dict[str, Any]:
-    """Describe every record and the assembly, and write ``survey.tsv`` and ``survey.json``.
+    """Describe every record and the assembly, and write tables and a track of G+C.
 
     Parameters
     ----------
@@ -36,11 +43,23 @@ def survey(sources: Sources, output: str, force: bool, reuse: bool = False) -> d
         document: dict[str, Any] = json.loads((Path(output) / "survey.json").read_bytes())
         return document
     check_target(output, force)
-    found = survey_records(sources.read(), sources.gap_min)
-    document = to_dict(found)
     with whole_folder(output, force=force) as folder:
+        found = survey_records(_tracked(sources, folder / GC_TRACK), sources.gap_min)
+        document = to_dict(found)
         (folder / "survey.tsv").write_text(to_tsv(found), encoding="utf-8")
         write_json(folder / "survey.json", document)
-        written = [folder / "survey.json", folder / "survey.tsv"]
+        written = [folder / name for name in (GC_TRACK, "survey.json", "survey.tsv")]
         write_provenance(folder, "survey", sources.parameters(), None, sources.files(), written)
     return document
+
+
+def _tracked(sources: Sources, path: Path) -> Iterator[Record]:
+    """Yield the records, and write their G+C once the last has been seen."""
+    track = SpooledTrack(path)
+    lengths: dict[str, int] = {}
+    for record in sources.read():
+        lengths[record.name] = len(record)
+        track.add_runs(record.name, *gc_windows(record, sources.gap_min))
+        yield record
+    if lengths:
+        track.finish(lengths)

@@ -20,12 +20,13 @@ import numpy.typing as npt
 
 from hmmseg.errors import OutputError
 from hmmseg.tracks.bbi import RUN
-from hmmseg.tracks.bigwig_file import RUNS_IN_BLOCK, BigWigReader, BigWigWriter
+from hmmseg.tracks.bigwig_file import RUNS_IN_BLOCK, BigWigReader, BigWigWriter, in_batches
 
 __all__ = [
     "PosteriorTrack",
     "TrackSummary",
     "explained_reading",
+    "read_batches",
     "read_track",
     "rounded_runs",
     "summarize_track",
@@ -287,6 +288,43 @@ def read_track(path: str | Path) -> Iterator[tuple[str, _Integers, _Integers, _N
         for record, runs in file.runs():
             starts, ends = runs["start"].astype(np.int64), runs["end"].astype(np.int64)
             yield names[record], starts, ends, runs["value"].astype(np.float64)
+
+
+def read_batches(
+    path: str | Path, record_lengths: Mapping[str, int], size: int
+) -> Iterator[tuple[_Integers, npt.NDArray[np.void]]]:
+    """Read the runs of a bigWig file in batches that span many records.
+
+    Parameters
+    ----------
+    path : path
+        Written by `PosteriorTrack`.
+    record_lengths : mapping
+        Length of each record in bases; what the file holds of other records is left out.
+    size : int
+        Bases to the bins into which the runs will be cut.
+
+    Yields
+    ------
+    records : int64[run]
+        Place of each run's record in `record_lengths`.
+    runs : RUN[run]
+        Ordered by record and position, as in the file.
+
+    Raises
+    ------
+    OutputError
+        If the file is no readable bigWig, or a record has another length in it.
+    """
+    rank = {name: number for number, name in enumerate(record_lengths)}
+    with explained_reading(path), BigWigReader(path) as file:
+        for name, length in file.record_lengths.items():
+            if record_lengths.get(name, length) != length:
+                raise OutputError(f"{path}: {name} has another length there; make it again")
+        ranks = np.array([rank.get(name, -1) for name in file.record_lengths], dtype=np.int64)
+        wanted = ((number, runs) for number, runs in file.runs() if ranks[number] >= 0)
+        for numbers, runs in in_batches(wanted, size):
+            yield ranks[numbers], runs
 
 
 @contextmanager

@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 from hmmseg.tracks import bbi, zoom
 from hmmseg.tracks.bbi import BLOCK, HEADER, RUN, SUMMARY, ZOOM, ZOOM_HEADER, Items
 
-__all__ = ["RUNS_IN_BLOCK", "BigWigReader", "BigWigWriter"]
+__all__ = ["RUNS_IN_BLOCK", "BigWigReader", "BigWigWriter", "in_batches"]
 
 # The layout of the file depends on these, so they are no options.
 RUNS_IN_BLOCK = 1024
@@ -122,7 +122,7 @@ class BigWigWriter:
         return np.array(entries, dtype=BLOCK), count
 
     def _pieces(self, blocks: Items, size: int) -> Iterator[Items]:
-        for records, runs in _batches(map(bbi.unpack_section, self._read_back(blocks)), size):
+        for records, runs in in_batches(map(bbi.unpack_section, self._read_back(blocks)), size):
             yield zoom.bins_of_runs(records, runs, size)
 
     def _rows(self, blocks: Items) -> Iterator[Items]:
@@ -143,10 +143,24 @@ class BigWigWriter:
         self._file.seek(end)
 
 
-def _batches(
+def in_batches(
     sections: Iterable[tuple[int, Items]], size: int
 ) -> Iterator[tuple[NDArray[np.int64], Items]]:
-    """Join sections: many small records are many small blocks, slow to take one by one."""
+    """Join sections: many small records are many small blocks, slow to take one by one.
+
+    Parameters
+    ----------
+    sections : iterable of (int, RUN[run])
+        Number of the record and its runs, in order.
+    size : int
+        Bases to the bins into which the runs will be cut.
+
+    Yields
+    ------
+    records : int64[run]
+        Number of the record of each run.
+    runs : RUN[run]
+    """
     records: list[NDArray[np.int64]] = []
     batch: list[Items] = []
     pieces = 0

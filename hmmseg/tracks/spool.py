@@ -55,12 +55,34 @@ class SpooledTrack:
             float64[position].
         """
         starts, ends, values = rounded_runs(posterior)
+        self.add_runs(record, starts + start, ends + start, values)
+
+    def add_runs(
+        self,
+        record: str,
+        starts: NDArray[np.int64],
+        ends: NDArray[np.int64],
+        values: NDArray[np.float64],
+    ) -> None:
+        """Add runs of a record, of which none overlap.
+
+        Parameters
+        ----------
+        record
+            Its name.
+        starts, ends
+            int64[run]: half-open, in ascending order.
+        values
+            float64[run]: from 0 up, rounded to three decimals.
+        """
         runs = np.empty(len(starts), _RUN)
-        runs["start"], runs["end"] = starts + start, ends + start
-        runs["level"] = np.rint(values * LEVELS)
+        runs["start"], runs["end"] = starts, ends
+        runs["level"] = np.floor(values * LEVELS + 0.5)
+        if not len(runs):
+            return
         with self._spool.open("ab") as file:
             file.write(runs.tobytes())
-        self._segments.append(_Segment(record, start, self._written, len(runs)))
+        self._segments.append(_Segment(record, int(starts[0]), self._written, len(runs)))
         self._written += len(runs)
 
     def finish(self, record_lengths: Mapping[str, int]) -> None:

@@ -28,7 +28,8 @@ FILES = {
     "calls/regions.gff3", "calls/chrom.sizes", "calls/summary.json", "calls/provenance.json",
     "comparison/comparison.json", "comparison/heldout.tsv", "comparison/heldout.svg",
     "comparison/heldout.png", "comparison/simulated.tsv", "comparison/simulated.svg",
-    "comparison/simulated.png", "comparison/provenance.json",
+    "comparison/simulated.png", "comparison/provenance.json", "survey/gc.bw", "report.html",
+    "report.provenance.json",
 }  # fmt: skip
 
 
@@ -124,6 +125,18 @@ def test_again_says_what_is_done_and_changes_nothing(
         "decode: already there",
     ]
     assert files_of(folder) == before
+
+
+def test_the_page_follows_the_files_beside_it(folder: Path) -> None:
+    """It is made again, without --force, when what it shows has changed; nobody else's is."""
+    features = GENOMES["chloroplast"][0].parent / "NC_000932.rna.bed"
+    before = (folder / "report.html").read_bytes()
+    assert run(folder, "--features", str(features)) == 0
+    assert (folder / "report.html").read_bytes() != before
+    (folder / "report.provenance.json").unlink()
+    (folder / "report.html").write_text("my own")
+    assert run(folder) == 1
+    assert (folder / "report.html").read_text() == "my own"
 
 
 def test_what_is_missing_is_completed(folder: Path, capsys: pytest.CaptureFixture[str]) -> None:
