@@ -16,6 +16,7 @@ rule all:
         surveys=expand(f"{RESULTS}/{{assembly}}/survey", assembly=ASSEMBLIES),
         comparisons=expand(f"{RESULTS}/{{assembly}}/comparison", assembly=COMPARED),
         selections=selections(),
+        pages=pages(),
 
 
 onsuccess:
@@ -28,3 +29,4 @@ include: "workflow/rules/train.smk"
 include: "workflow/rules/decode.smk"
 include: "workflow/rules/summary.smk"
 include: "workflow/rules/compare.smk"
+include: "workflow/rules/report.smk"

@@ -452,3 +452,20 @@ def reused_batches():
 def labelled_calls(wildcards):
     """NAME=FOLDER for each assembly."""
     return shlex.join(f"{name}={RESULTS}/{name}/calls" for name in ASSEMBLIES)
+
+
+def stages_of(wildcards):
+    """What the page of an assembly shows: all stages that it asks for."""
+    folder = f"{RESULTS}/{wildcards.assembly}"
+    stages = {"survey": "survey", "model": "model.json", "calls": "calls"}
+    if wildcards.assembly in COMPARED:
+        stages["comparison"] = "comparison"
+    if selections():
+        stages["selection"] = "selection"
+    return {stage: f"{folder}/{name}" for stage, name in stages.items()}
+
+
+def pages():
+    """A page for each assembly, and one that compares them if there are several."""
+    found = expand(f"{RESULTS}/{{assembly}}/report.html", assembly=ASSEMBLIES)
+    return [*found, f"{RESULTS}/report.html"] if len(ASSEMBLIES) > 1 else found
