@@ -17,7 +17,7 @@ LEVELS = 250
 NOTHING = 255
 """A bin in which no base has a value."""
 
-_MOST_BINS = 1_200_000
+_MOST_BINS = 2_000_000
 _NARROWEST = 10
 _STEPS = (1, 2, 5)
 

@@ -9,12 +9,12 @@ LIGHT = "#e4e7eb"
 STATES = (
     "#1f5f8b",
     "#d98324",
-    "#7a3e78",
-    "#37a39a",
-    "#b5433c",
-    "#e2c044",
-    "#4d5866",
-    "#8db8dd",
+    "#5cc4c4",
+    "#4c361f",
+    "#b060d0",
+    "#bfcc99",
+    "#8c7b69",
+    "#8c5823",
 )
 """One for each state. Neighbours differ in lightness, too, so that they survive a grey print."""
 

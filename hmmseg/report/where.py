@@ -24,17 +24,23 @@ _BLOCK_BINS = 100_000
 MOST_ROWS = 200_000
 """More regions would make a page that does not open."""
 
-_LABELS = {
-    "region_id": ("region", 110),
-    "record": ("record", 110),
-    "start": ("start", 86),
-    "length": ("length", 76),
-    "mean_posterior": ("posterior", 88),
-    "q_value": ("q", 72),
+_COLUMNS = {
+    "region_id": ("region", 96),
+    "record": ("record", 124),
+    "start": ("start", 84),
+    "length": ("length", 68),
+    "mean_posterior": ("posterior", 82),
+    "q_value": ("q", 78),
     "log_odds_bits": ("log-odds (bits)", 118),
     "state": ("state", 100),
-    "end": ("end", 86),
+    "end": ("end", 84),
+    "expected_wrong_bases": ("expected wrong", 118),
+    "gc": ("G+C", 68),
+    "cpg_ratio": ("CpG of expected", 122),
+    "soft_masked_fraction": ("lower case", 90),
 }
+"""What the table shows of ``regions.tsv``, with a heading and a width in pixels."""
+
 _WHOLE = ("start", "end", "length")
 
 
@@ -184,23 +190,24 @@ def _table(regions: pd.DataFrame, rank: Mapping[str, int]) -> tuple[list[dict[st
         odds = regions["log_odds_bits"].fillna(-np.inf)
         kept = odds.sort_values(ascending=False, kind="stable").index[:MOST_ROWS]
         regions = regions.loc[kept.sort_values()]
-    names = [name for name in _LABELS if name in regions.columns]
-    names += [str(name) for name in regions.columns if name not in _LABELS]
+    names = [name for name in _COLUMNS if name in regions.columns]
     columns, cells = [], []
     for name in names:
-        label, width = _LABELS.get(name, (name.replace("_", " "), 30 + 7 * len(name)))
+        label, width = _COLUMNS[name]
         number = name != "record" and pd.api.types.is_numeric_dtype(regions[name])
         columns.append(
             {"name": name, "label": label, "width": width, "number": number,
              "whole": name in _WHOLE}
         )  # fmt: skip
-        cells.append("\n".join(_cells(regions[name], rank if name == "record" else None)))
+        digits = 3 if name == "q_value" else 6
+        cells.append("\n".join(_cells(regions[name], rank if name == "record" else None, digits)))
     return columns, "\x1e".join(cells), left_out
 
 
-def _cells(column: "pd.Series[Any]", rank: Mapping[str, int] | None) -> Iterator[str]:
+def _cells(column: "pd.Series[Any]", rank: Mapping[str, int] | None, digits: int) -> Iterator[str]:
+    """Yield the cells of a column as text: records by their place, numbers rounded."""
     if rank is not None:
         return (str(rank[name]) for name in column)
     if not pd.api.types.is_float_dtype(column):
-        return (str(value).replace("\n", " ").replace("\x1e", " ") for value in column)
-    return ("NA" if isnan(value) else f"{value:.6g}" for value in column.tolist())
+        return (str(value) for value in column)
+    return ("NA" if isnan(value) else f"{value:.{digits}g}" for value in column.tolist())

@@ -29,7 +29,7 @@ FILES = {
     "comparison/comparison.json", "comparison/heldout.tsv", "comparison/heldout.svg",
     "comparison/heldout.png", "comparison/simulated.tsv", "comparison/simulated.svg",
     "comparison/simulated.png", "comparison/provenance.json", "survey/gc.bw", "report.html",
-    "report.provenance.json",
+    "report.provenance.json", "calls/composition.tsv", "calls/records.tsv",
 }  # fmt: skip
 
 

@@ -11,6 +11,9 @@ import pytest
 from tests.workflow.running import Project
 
 pytestmark = pytest.mark.xdist_group("workflow")
+PAGES = ("report", "pages")
+ALL_OF_THEM = ("summary", "pages")
+"""Rules that take all assemblies together."""
 
 
 @contextmanager
@@ -33,8 +36,8 @@ def test_a_second_run_does_nothing(finished: Project) -> None:
 def test_a_touched_assembly_reruns_only_its_part(finished: Project) -> None:
     with touched(finished.folder / "NC_001416.fa.gz"):
         planned = finished.planned()
-    assert {assembly for rule, assembly in planned if rule != "summary"} == {"lambda"}
-    assert {rule for rule, _ in planned} == {"survey", "train", "decode", "summary"}
+    assert {assembly for rule, assembly in planned if rule not in ALL_OF_THEM} == {"lambda"}
+    assert {rule for rule, _ in planned} == {"survey", "train", "decode", "summary", *PAGES}
 
 
 def test_a_touched_start_model_trains_and_calls_again_but_surveys_nothing(
@@ -42,8 +45,8 @@ def test_a_touched_start_model_trains_and_calls_again_but_surveys_nothing(
 ) -> None:
     with touched(finished.folder / "start.json"):
         planned = finished.planned()
-    assert {assembly for rule, assembly in planned if rule != "summary"} == {"demo"}
-    assert {rule for rule, _ in planned} == {"train", "batches", "gather", "summary"}
+    assert {assembly for rule, assembly in planned if rule not in ALL_OF_THEM} == {"demo"}
+    assert {rule for rule, _ in planned} == {"train", "batches", "gather", "summary", *PAGES}
 
 
 def test_a_changed_setting_of_the_calls_does_not_train_again(finished: Project) -> None:
@@ -52,7 +55,7 @@ def test_a_changed_setting_of_the_calls_does_not_train_again(finished: Project) 
     config.write_text(before + "defaults: {min_length: 50}\n")
     planned = finished.planned()
     config.write_text(before)
-    assert {rule for rule, _ in planned} == {"decode", "batches", "gather", "summary"}
+    assert {rule for rule, _ in planned} == {"decode", "batches", "gather", "summary", *PAGES}
 
 
 def test_batches_leave_their_results_behind_and_nothing_else(finished: Project) -> None:
@@ -71,7 +74,7 @@ def test_a_grid_is_selected_from_one_job_a_model(finished: Project) -> None:
     config.write_text(before + "select_states: [1, 2]\nselect_orders: [0, 1]\n")
     try:
         planned = finished.planned()
-        assert {rule for rule, _ in planned} == {"select", "recommend"}
+        assert {rule for rule, _ in planned} == {"select", "recommend", *PAGES}
         assert planned.count(("select", "lambda")) == 4
         assert planned.count(("recommend", "lambda")) == 1
         finished.snakemake("results/lambda/selection")

@@ -28,12 +28,20 @@ def recall_and_precision(
 @pytest.mark.parametrize("name", NAMES)
 def test_each_assembly_has_its_results(name: str, results: Path) -> None:
     folder = results / name
-    expected = {"calls", "model.json", "model.provenance.json", "survey"}
+    expected = {
+        "calls",
+        "figures",
+        "model.json",
+        "model.provenance.json",
+        "report.html",
+        "report.provenance.json",
+        "survey",
+    }
     if name in LARGE:
         expected.add("batches")
     assert {path.name for path in folder.iterdir()} == expected
     own = ("batches", "cut", "gather") if name in LARGE else ("decode",)
-    for rule in ("survey", "train", *own):
+    for rule in ("survey", "train", "report", *own):
         assert (results / "logs" / rule / f"{name}.log").is_file()
         assert "max_rss" in (results / "benchmarks" / rule / f"{name}.tsv").read_text()
     states = json.loads((folder / "model.json").read_text())["states"]
