@@ -6,6 +6,7 @@ from typing import Any
 import click
 
 from hmmseg.cli import options
+from hmmseg.cli.tables import print_table
 
 __all__ = ["batches", "cut", "decode", "diff", "gather", "summary", "verify"]
 
@@ -81,9 +82,13 @@ def decode(
 
 
 def print_regions(found: dict[str, Any]) -> None:
-    click.echo("state\tregions\tbases\tshare")
+    """Print the end of a decoding: what was called of each state."""
+    rows = []
     for state, numbers in found["regions"].items():
-        click.echo(f"{state}\t{numbers['count']}\t{numbers['bases']}\t{numbers['share']:.4f}")
+        count, bases = numbers["count"], numbers["bases"]
+        mean = f"{bases / count:.0f}" if count else "NA"
+        rows.append([state, str(count), str(bases), f"{numbers['share']:.4f}", mean])
+    print_table(["state", "regions", "bases", "share", "mean_length"], rows)
 
 
 _plan = click.option(

@@ -5,6 +5,7 @@ from typing import Any
 import click
 
 from hmmseg.cli import options
+from hmmseg.cli.tables import print_table
 from hmmseg.errors import UsageError
 
 __all__ = ["adopt", "explain", "presets", "print_findings", "score", "simulate", "survey", "train"]
@@ -143,19 +144,24 @@ def _check_start(
         raise UsageError("--start free needs --stranded: a symmetric model starts stationary")
 
 
+_FINDINGS = (
+    "state", "reported", "gc", "cpg_oe", "expected_length", "share", "words", "in_words",
+)  # fmt: skip
+
+
 def print_findings(findings: Any, cautions: Any) -> None:
     """Print what a model found, as a table and in words; cautions to standard error."""
     from hmmseg.progress import warn
 
-    click.echo("state\treported\tgc\tcpg_oe\texpected_length\tshare\twords\tin_words")
+    rows = []
     for row in findings:
         cpg = row.cpg_observed_expected
         words = ", ".join(f"{word} x{times:.2f}" for word, times in row.words)
-        click.echo(
-            f"{row.name}\t{'yes' if row.reported else 'no'}\t{row.gc:.3f}\t"
-            f"{'NA' if cpg is None else f'{cpg:.2f}'}\t{row.expected_length:.0f}\t"
-            f"{row.share:.4f}\t{words or 'NA'}\t{row.text}"
-        )
+        numbers = [f"{row.gc:.3f}", "NA" if cpg is None else f"{cpg:.2f}"]
+        numbers += [f"{row.expected_length:.0f}", f"{row.share:.4f}"]
+        reported = "yes" if row.reported else "no"
+        rows.append([row.name, reported, *numbers, words or "NA", row.text])
+    print_table(_FINDINGS, rows)
     for line in cautions:
         warn(line)
 

@@ -7,6 +7,7 @@ import click
 from hmmseg.cli import options
 from hmmseg.cli.calls import print_regions
 from hmmseg.cli.models import print_findings
+from hmmseg.cli.tables import print_table
 
 __all__ = ["annotate"]
 
@@ -51,6 +52,4 @@ def annotate(
     if found.verdict is not None:
         click.echo(found.verdict)
     if found.features:
-        click.echo("\t".join(COLUMNS))
-        for row in found.features:
-            click.echo("\t".join(row))
+        print_table(COLUMNS, found.features)

@@ -1,12 +1,12 @@
 """Measure the kernels beside named peers and print a table.
 
 Run ``python -m tests.benchmarks`` from the root of the project, with a C compiler at hand, and
-with names of sections behind it (``peers threads growth contigs memory decoding``) to measure
-only those. Peers and we take turns in the same process, on the same model and bases; each time
-is the least of five, after one that warms up; before anything is timed, log-likelihoods are
-compared to 1e-9 relative. What runs on one thread is measured in processor time, so that others
-who use the machine count little. Ratios hold within one run; nanoseconds depend on the machine.
-Nothing here is a test: no time is asserted.
+with names of sections behind it (``peers threads growth contigs memory decoding report``) to
+measure only those. Peers and we take turns in the same process, on the same model and bases;
+each time is the least of five, after one that warms up; before anything is timed,
+log-likelihoods are compared to 1e-9 relative. What runs on one thread is measured in processor
+time, so that others who use the machine count little. Ratios hold within one run; nanoseconds
+depend on the machine. Nothing here is a test: no time is asserted.
 """
 
 import sys
@@ -24,6 +24,7 @@ from hmmseg.model import Model
 from hmmseg.sequence.contigs import Contig
 from tests.benchmarks.cases import a_model, contigs
 from tests.benchmarks.memory import peak_megabytes
+from tests.benchmarks.pages import pages
 from tests.benchmarks.peers import Step, hmmlearn_compiled_step, hmmlearn_step, textbook_step
 
 REPEATS = 5
@@ -184,6 +185,7 @@ SECTIONS: dict[str, Callable[[], Iterator[str]]] = {
     "contigs": many_contigs,
     "decoding": decoding,
     "memory": memory,
+    "report": pages,
 }
 
 

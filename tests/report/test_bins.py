@@ -10,11 +10,13 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
+from hmmseg.cli import main
 from hmmseg.errors import OutputError
 from hmmseg.report.bins import LEVELS, NOTHING, Layout, read_binned
 from hmmseg.report.packing import packed, plain_json
 from hmmseg.report.where import longest_first
 from hmmseg.tracks.bigwig import PosteriorTrack
+from tests.report.large import large_folder
 
 LENGTHS = {"b": 50, "none": 7, "a.1": 31}
 
@@ -88,6 +90,23 @@ def test_another_length_of_a_record_is_told(tmp_path: Path) -> None:
     path = written(tmp_path / "x.bw", {n: [0.5] * k for n, k in LENGTHS.items()})
     with pytest.raises(OutputError, match=r"a\.1 has another length"):
         read_binned(path, Layout({**LENGTHS, "a.1": 99}, 10))
+
+
+@pytest.mark.parametrize(
+    ("bases", "records", "regions", "most"),
+    [
+        pytest.param(10_000_000, 1_200, 6_000, 4.5, id="10 Mb"),
+        pytest.param(100_000_000, 12_000, 60_000, 12, id="100 Mb", marks=pytest.mark.slow),
+    ],
+)
+def test_pages_of_large_assemblies_can_be_sent(
+    tmp_path: Path, bases: int, records: int, regions: int, most: float
+) -> None:
+    """The drawing library takes 1.4 MB of each, the bins at most 4."""
+    folder = large_folder(tmp_path / "large", bases, records, regions)
+    page = tmp_path / "page.html"
+    assert main(["report", str(folder), "--output", str(page)]) == 0
+    assert page.stat().st_size < most * 1_000_000
 
 
 @given(text=st.text(), name=st.text())
