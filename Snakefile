@@ -7,6 +7,7 @@ configfile: "config/config.yaml"
 
 
 include: "workflow/rules/common.smk"
+include: "workflow/rules/resources.smk"
 
 
 rule all:

@@ -23,6 +23,9 @@ def pytest_addoption(parser: pytest.Parser) -> None:
 def pytest_configure(config: pytest.Config) -> None:
     """Register the marker, and let no warning pass unseen."""
     config.addinivalue_line("markers", "slow: takes minutes; runs only with --slow")
+    config.addinivalue_line(
+        "markers", "slurm: runs on a Slurm that it starts, where one is installed"
+    )
     # In front, so that exceptions in pyproject.toml still count.
     config.getini("filterwarnings").insert(0, "error")
 

@@ -7,7 +7,7 @@ import shutil
 import subprocess
 import sys
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
 
@@ -16,7 +16,7 @@ import yaml
 __all__ = ["ROOT", "Project", "bed_bases", "dry_runs"]
 
 ROOT = Path(__file__).resolve().parents[2]
-_PROFILE = ROOT / "workflow" / "profiles" / "default"
+_PROFILES = ROOT / "workflow" / "profiles"
 
 
 def _environment() -> dict[str, str]:
@@ -36,9 +36,14 @@ def _environment() -> dict[str, str]:
 
 @dataclass(frozen=True)
 class Project:
-    """A folder with a configuration, a sample sheet and the sequence that it names."""
+    """A folder with a configuration, a sample sheet and the sequence that it names.
+
+    Snakemake runs there under a profile, with variables of the environment beside the usual ones.
+    """
 
     folder: Path
+    profile: str = "default"
+    variables: Mapping[str, str] = field(default_factory=dict)
 
     def add(self, *files: Path) -> None:
         """Copy files into the folder."""
@@ -58,7 +63,7 @@ class Project:
         """Arguments of Snakemake that every run shares."""
         return [
             f"--snakefile={ROOT / 'Snakefile'}",
-            f"--workflow-profile={_PROFILE}",
+            f"--workflow-profile={_PROFILES / self.profile}",
             f"--directory={self.folder}",
             f"--configfile={self.folder / 'config.yaml'}",
             "--cores=2",
@@ -66,12 +71,21 @@ class Project:
 
     def snakemake(self, *arguments: str) -> str:
         """Run Snakemake, and return what it printed; a failure shows all of it."""
-        call = [sys.executable, "-m", "snakemake", *self.arguments(), *arguments]
-        done = subprocess.run(
-            call, cwd=self.folder, env=_environment(), capture_output=True, text=True, check=False
+        process = self.start(*arguments)
+        said, _ = process.communicate()
+        assert process.returncode == 0, said
+        return said
+
+    def start(self, *arguments: str) -> subprocess.Popen[str]:
+        """Start Snakemake, and return its process, whose messages are all in its output."""
+        return subprocess.Popen(
+            [sys.executable, "-m", "snakemake", *self.arguments(), *arguments],
+            cwd=self.folder,
+            env={**_environment(), **self.variables},
+            stdout=subprocess.PIPE,
+            stderr=subprocess.STDOUT,
+            text=True,
         )
-        assert done.returncode == 0, done.stdout + done.stderr
-        return done.stdout + done.stderr
 
     def planned(self) -> list[tuple[str, str]]:
         """Rule and assembly of every job that a run would do now; `all` aside."""

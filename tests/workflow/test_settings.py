@@ -62,3 +62,15 @@ def test_the_linter_misses_only_conda_environments(tmp_path: Path) -> None:
     done = subprocess.run(call, cwd=tmp_path, capture_output=True, text=True, check=False)
     found = set(re.findall(r"^    \* (.*):$", done.stdout + done.stderr, flags=re.MULTILINE))
     assert found == {"Specify a conda environment or container for each rule."}
+
+
+def test_every_rule_asks_for_memory_and_time() -> None:
+    rules = ""
+    for file in sorted((ROOT / "workflow" / "rules").glob("*.smk")):
+        rules += file.read_text()
+    parts = re.split(r"^(?:rule|checkpoint) (\w+):\n", rules, flags=re.MULTILINE)[1:]
+    found = dict(zip(parts[::2], parts[1::2], strict=True))
+    assert len(found) > 5
+    for name, body in found.items():
+        assert f'mem_mb=memory_of("{name}"),' in body, name
+        assert f'runtime=minutes_of("{name}"),' in body, name

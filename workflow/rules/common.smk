@@ -235,10 +235,15 @@ def read_sheet():
     return settings
 
 
+def most_bases(fasta):
+    """Bases in an assembly, at the most, as the size of its file tells without reading it."""
+    letters = LETTERS_IN_A_BYTE if fasta.endswith((".gz", ".bgz")) else 1
+    return Path(fasta).stat().st_size * letters
+
+
 def is_small(fasta):
     """Whether all of an assembly fits into one batch, as far as the size of its file tells."""
-    letters = LETTERS_IN_A_BYTE if fasta.endswith((".gz", ".bgz")) else 1
-    return Path(fasta).stat().st_size * letters <= config["batch_bases"]
+    return most_bases(fasta) <= config["batch_bases"]
 
 
 def one_of(names):

@@ -14,6 +14,9 @@ rule compare:
     benchmark:
         f"{RESULTS}/benchmarks/compare/{{assembly}}.tsv"
     threads: config["threads"]
+    resources:
+        mem_mb=memory_of("compare"),
+        runtime=minutes_of("compare"),
     params:
         options=compare_options,
     shell:

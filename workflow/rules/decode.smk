@@ -17,6 +17,9 @@ rule decode:
     wildcard_constraints:
         assembly=one_of(SMALL),
     threads: config["threads"]
+    resources:
+        mem_mb=memory_of("decode"),
+        runtime=minutes_of("decode"),
     params:
         options=decode_options,
     shell:
@@ -36,6 +39,9 @@ checkpoint batches:
         f"{RESULTS}/logs/batches/{{assembly}}.log",
     benchmark:
         f"{RESULTS}/benchmarks/batches/{{assembly}}.tsv"
+    resources:
+        mem_mb=memory_of("batches"),
+        runtime=minutes_of("batches"),
     params:
         options=batches_options,
         parts=PARTS,
@@ -56,6 +62,9 @@ rule cut:
         f"{RESULTS}/logs/cut/{{assembly}}.log",
     benchmark:
         f"{RESULTS}/benchmarks/cut/{{assembly}}.tsv"
+    resources:
+        mem_mb=memory_of("cut"),
+        runtime=minutes_of("cut"),
     params:
         options=survey_options,
     shell:
@@ -75,6 +84,9 @@ rule decode_batch:
     benchmark:
         f"{RESULTS}/benchmarks/decode_batch/{{assembly}}/{{batch}}.tsv"
     threads: config["threads"]
+    resources:
+        mem_mb=memory_of("decode_batch"),
+        runtime=minutes_of("decode_batch"),
     params:
         options=batch_options,
         parts=PARTS,
@@ -97,6 +109,9 @@ rule gather:
         f"{RESULTS}/benchmarks/gather/{{assembly}}.tsv"
     wildcard_constraints:
         assembly=one_of(LARGE),
+    resources:
+        mem_mb=memory_of("gather"),
+        runtime=minutes_of("gather"),
     params:
         parts=PARTS,
     shell:

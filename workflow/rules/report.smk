@@ -24,6 +24,9 @@ rule report:
         f"{RESULTS}/logs/report/{{assembly}}.log",
     benchmark:
         f"{RESULTS}/benchmarks/report/{{assembly}}.tsv"
+    resources:
+        mem_mb=memory_of("report"),
+        runtime=minutes_of("report"),
     params:
         folder=f"{RESULTS}/{{assembly}}",
     shell:
@@ -43,6 +46,9 @@ rule pages:
         f"{RESULTS}/logs/pages.log",
     benchmark:
         f"{RESULTS}/benchmarks/pages.tsv"
+    resources:
+        mem_mb=memory_of("pages"),
+        runtime=minutes_of("pages"),
     params:
         folders=[f"{RESULTS}/{assembly}" for assembly in ASSEMBLIES],
     shell:

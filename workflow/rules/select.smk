@@ -13,6 +13,9 @@ rule select:
     benchmark:
         f"{RESULTS}/benchmarks/select/{{assembly}}/{{states}}-{{order}}.tsv"
     threads: config["threads"]
+    resources:
+        mem_mb=memory_of("select"),
+        runtime=minutes_of("select"),
     params:
         options=select_options,
     shell:
@@ -29,5 +32,8 @@ rule recommend:
         f"{RESULTS}/logs/recommend/{{assembly}}.log",
     benchmark:
         f"{RESULTS}/benchmarks/recommend/{{assembly}}.tsv"
+    resources:
+        mem_mb=memory_of("recommend"),
+        runtime=minutes_of("recommend"),
     shell:
         "hmmseg recommend {input.cells:q} --output {output.folder:q} > {log:q} 2>&1"

@@ -10,6 +10,9 @@ rule summary:
         f"{RESULTS}/logs/summary.log",
     benchmark:
         f"{RESULTS}/benchmarks/summary.tsv"
+    resources:
+        mem_mb=memory_of("summary"),
+        runtime=minutes_of("summary"),
     params:
         labelled=labelled_calls,
     shell:

@@ -12,6 +12,9 @@ rule survey:
         f"{RESULTS}/logs/survey/{{assembly}}.log",
     benchmark:
         f"{RESULTS}/benchmarks/survey/{{assembly}}.tsv"
+    resources:
+        mem_mb=memory_of("survey"),
+        runtime=minutes_of("survey"),
     params:
         options=survey_options,
     shell:

@@ -18,6 +18,9 @@ rule train:
     wildcard_constraints:
         assembly=one_of(TRAINED),
     threads: config["threads"]
+    resources:
+        mem_mb=memory_of("train"),
+        runtime=minutes_of("train"),
     params:
         options=train_options,
     shell:
@@ -37,5 +40,8 @@ rule adopt:
         f"{RESULTS}/benchmarks/adopt/{{assembly}}.tsv"
     wildcard_constraints:
         assembly=one_of(FROZEN),
+    resources:
+        mem_mb=memory_of("adopt"),
+        runtime=minutes_of("adopt"),
     shell:
         "hmmseg adopt {input.model:q} --output {output.model:q} > {log:q} 2>&1"
