@@ -16,6 +16,7 @@ rule all:
         models=expand(f"{RESULTS}/{{assembly}}/model.json", assembly=ASSEMBLIES),
         surveys=expand(f"{RESULTS}/{{assembly}}/survey", assembly=ASSEMBLIES),
         comparisons=expand(f"{RESULTS}/{{assembly}}/comparison", assembly=COMPARED),
+        calibrations=expand(f"{RESULTS}/{{assembly}}/calibration", assembly=CALIBRATED),
         selections=selections(),
         pages=pages(),
 
@@ -29,5 +30,6 @@ include: "workflow/rules/select.smk"
 include: "workflow/rules/train.smk"
 include: "workflow/rules/decode.smk"
 include: "workflow/rules/summary.smk"
+include: "workflow/rules/calibrate.smk"
 include: "workflow/rules/compare.smk"
 include: "workflow/rules/report.smk"

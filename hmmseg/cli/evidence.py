@@ -10,7 +10,7 @@ __all__ = ["calibrate"]
 
 
 @click.command()
-@click.argument("fasta", metavar="FASTA")
+@options.fasta
 @options.model
 @click.option("--calls", required=True, metavar="DIR", help="Folder of calls to judge.")
 @options.output
@@ -43,6 +43,12 @@ __all__ = ["calibrate"]
     help="Keep regions up to this q-value.",
 )
 @click.option(
+    "--others/--no-others",
+    default=True,
+    show_default=True,
+    help="Whether the nulls that do not judge are drawn, too.",
+)
+@click.option(
     "--seed", type=click.IntRange(0), default=1, show_default=True, metavar="S",
     help="Of all random draws.",
 )  # fmt: skip
@@ -50,8 +56,9 @@ __all__ = ["calibrate"]
 @options.threads
 @options.force
 def calibrate(
-    fasta: str, model: str, calls: str, output: str, null: str | None, null_bases: int | None,
-    null_refit: bool | None, q: float, seed: int, exclude: str | None, threads: int, force: bool,
+    fasta: tuple[str, ...], model: str, calls: str, output: str, null: str | None,
+    null_bases: int | None, null_refit: bool | None, q: float, others: bool, seed: int,
+    exclude: str | None, threads: int, force: bool,
 ) -> None:  # fmt: skip
     """Tell how many of the called regions chance alone would give.
 
@@ -61,7 +68,7 @@ def calibrate(
     """
     from hmmseg.jobs import calibrate as job
 
-    plan = job.NullPlan(null, null_bases, null_refit, q, seed)
+    plan = job.NullPlan(null, null_bases, null_refit, q, others, seed)
     found = job.calibrate(
         fasta, model, calls, output, plan, exclude=exclude, threads=threads, force=force
     )

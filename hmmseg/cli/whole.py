@@ -32,7 +32,7 @@ def annotate(
     sources: Any, output: str, preset: str | None, decisions: str | None,
     features: tuple[str, ...], threads: int, force: bool,
 ) -> None:  # fmt: skip
-    """Do the whole job: survey, decide, train, call regions, compare with chains, report.
+    """Do the whole job: survey, decide, train, call, calibrate, compare with chains, report.
 
     Decisions are written to DIR/decisions.yaml with their reasons. What is already done is not
     done again.
@@ -49,6 +49,9 @@ def annotate(
     )  # fmt: skip
     print_findings(found.model.findings, found.model.cautions)
     print_regions(found.calls)
+    if found.calibration is not None:
+        for statement in found.calibration["statements"].values():
+            click.echo(statement)
     if found.verdict is not None:
         click.echo(found.verdict)
     if found.features:

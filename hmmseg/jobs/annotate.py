@@ -11,6 +11,7 @@ from typing import Any
 
 from hmmseg.errors import HmmsegError, OutputError, UsageError
 from hmmseg.evidence.comparison import Settings
+from hmmseg.jobs.calibrate import NullPlan, calibrate
 from hmmseg.jobs.compare import compare_once
 from hmmseg.jobs.decide import decide
 from hmmseg.jobs.decisions import Decisions, read_decisions, to_yaml
@@ -35,6 +36,7 @@ _RESULTS = {
     "survey": "survey",
     "train": "model.json",
     "decode": "calls",
+    "calibrate": "calibration",
     "compare": "comparison",
     "report": "report.html",
 }
@@ -52,6 +54,8 @@ class Annotation:
         The model in words.
     calls : dict
         The document ``summary.json`` of the calls.
+    calibration : dict or None
+        The document ``calibration.json``; None if that was not asked.
     verdict : str or None
         Whether a hidden state gains anything over a chain; None if that was not asked.
     features : list of list of str
@@ -61,6 +65,7 @@ class Annotation:
 
     model: Explained
     calls: dict[str, Any]
+    calibration: dict[str, Any] | None
     verdict: str | None
     features: list[list[str]]
 
@@ -115,6 +120,7 @@ def annotate(
     )
     decisions = _decisions(job, surveyed, sources, preset, decisions_file)
     model, calls = job.model(sources, decisions), job.calls(sources, decisions)
+    sure = job.calibration(sources, decisions) if decisions["calibrate"] == "run" else None
     verdict = job.verdict(sources, decisions) if decisions["compare"] == "run" else None
     rows: list[list[str]] = []
     if features:
@@ -122,7 +128,7 @@ def annotate(
         rows = measure_features(folder / _RESULTS["decode"], features, table)
         say(f"features: done, {table}")
     job.report()
-    return Annotation(model, calls, verdict, rows)
+    return Annotation(model, calls, sure, verdict, rows)
 
 
 def _decisions(
@@ -217,6 +223,25 @@ class _Job:
             ),
         )
         return calls
+
+    def calibration(self, sources: Sources, decisions: Decisions) -> dict[str, Any]:
+        """Tell how sure the regions are, by the null that judges them alone."""
+        plan = NullPlan(bases=decisions["null_bases"], seed=decisions["seed"], others=False)
+        found: dict[str, Any] = self.stage(
+            "calibrate",
+            lambda replaces: calibrate(
+                sources.fasta,
+                str(self.folder / _RESULTS["train"]),
+                str(self.folder / _RESULTS["decode"]),
+                str(self.folder / _RESULTS["calibrate"]),
+                plan,
+                exclude=sources.exclude,
+                threads=self._threads,
+                force=replaces,
+                reuse=True,
+            ),
+        )
+        return found
 
     def verdict(self, sources: Sources, decisions: Decisions) -> str:
         """Compare with chains."""

@@ -1,6 +1,7 @@
 """The command ``calibrate``: how sure are the regions that were called."""
 
 import json
+from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -44,6 +45,8 @@ class NullPlan:
         trained on this very sequence.
     q
         Regions up to this q are kept.
+    others
+        Whether the nulls that do not judge are drawn, too.
     seed
         Of the draws.
     """
@@ -52,6 +55,7 @@ class NullPlan:
     bases: int | None = None
     refit: bool | None = None
     q: float = 0.05
+    others: bool = True
     seed: int = 1
 
 
@@ -61,7 +65,7 @@ def null_bases_of(bases: int) -> int:
 
 
 def calibrate(  # noqa: PLR0913 - as many as the command has
-    fasta: str,
+    fasta: Sequence[str],
     model_path: str,
     calls: str,
     output: str,
@@ -77,7 +81,7 @@ def calibrate(  # noqa: PLR0913 - as many as the command has
     Parameters
     ----------
     fasta
-        The sequence that was called.
+        Files of the sequence that was called.
     model_path
         The model that called.
     calls
@@ -109,10 +113,10 @@ def calibrate(  # noqa: PLR0913 - as many as the command has
     """
     if not reuse:
         check_target(output, force)
-    if fasta == "-":
+    if "-" in fasta:
         raise UsageError("calibrate compares the sequence with the calls; give a file, not '-'")
     model, called = load_model(model_path), read_called(calls)
-    given = [path for path in (fasta, model_path, exclude) if path]
+    given = [path for path in (*fasta, model_path, exclude) if path]
     inputs: list[str | Path] = [*given, Path(calls, PROVENANCE)]
     parameters = {
         "model": Path(model_path),
@@ -121,6 +125,7 @@ def calibrate(  # noqa: PLR0913 - as many as the command has
         "null_bases": plan.bases,
         "null_refit": plan.refit,
         "q": plan.q,
+        "others": plan.others,
     }
     if reuse and is_current(output, "calibrate", parameters, plan.seed, inputs):
         earlier: dict[str, Any] = json.loads((Path(output) / "calibration.json").read_bytes())
@@ -138,7 +143,7 @@ def calibrate(  # noqa: PLR0913 - as many as the command has
 def _outcome(
     called: Called,
     model: Model,
-    files: tuple[str, str, str | None],
+    files: tuple[Sequence[str], str, str | None],
     plan: NullPlan,
     threads: int,
 ) -> Outcome:
@@ -154,6 +159,8 @@ def _outcome(
             f"{model_path}: every state is reported, so there is no background to draw from; "
             "choose --null chain or drift"
         )
+    if not plan.others:
+        nulls = {chosen: nulls[chosen]}
     found = _found(called, model, assembly, nulls, scoring, refit, plan, threads)
     reported = {i: name for i, name in enumerate(model.names) if model.reported[i]}
     judged = {
@@ -181,7 +188,7 @@ def _kept(judged: Judged, q: float) -> int:
     return int((judged.regions["q_value"] <= q).sum())
 
 
-def _survey(called: Called, model: Model, fasta: str, exclude: str | None) -> Assembly:
+def _survey(called: Called, model: Model, fasta: Sequence[str], exclude: str | None) -> Assembly:
     """Read the sequence once, and make sure that the calls are of it."""
     odds = LogOdds(model, [i for i, kept in enumerate(model.reported) if kept])
     found, seen = Assembly(null_order(model.order)), set()
@@ -195,14 +202,14 @@ def _survey(called: Called, model: Model, fasta: str, exclude: str | None) -> As
 
 
 def _refit(
-    model: Model, model_path: str, fasta: str, plan: NullPlan, assembly: Assembly
+    model: Model, model_path: str, fasta: Sequence[str], plan: NullPlan, assembly: Assembly
 ) -> Refit | None:
     """Return how the model is trained anew; None if it is not."""
     wanted = plan.refit
     if wanted is None:
         known = "plan" in (model.training or {})
         small = assembly.bases < _REFITTED
-        wanted = small and known and trained_on(model, sha256_of(fasta))
+        wanted = small and known and all(trained_on(model, sha256_of(path)) for path in fasta)
     return refit_of(model, model_path) if wanted else None
 
 

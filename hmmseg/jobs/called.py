@@ -1,6 +1,6 @@
 """A folder of calls, and how they were made."""
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -83,13 +83,13 @@ class Called:
         """How many were decoded."""
         return int(self.summary["decoded_bases"])
 
-    def sources(self, fasta: str, exclude: str | None) -> Sources:
+    def sources(self, fasta: Sequence[str], exclude: str | None) -> Sources:
         """Return the sequence as it was read for the calls.
 
         Parameters
         ----------
         fasta
-            The sequence file.
+            The sequence files.
         exclude
             Intervals that were left out.
 
@@ -104,7 +104,7 @@ class Called:
             wanted = f"give --exclude {settings['exclude']}" if settings["exclude"] else "leave it"
             raise self._other("other intervals left out", wanted)
         return Sources(
-            (fasta,),
+            tuple(fasta),
             exclude=exclude,
             circular=tuple(settings["circular"]),
             gap_min=int(settings["gap_min"]),

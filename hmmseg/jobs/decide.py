@@ -25,6 +25,7 @@ _EXTREME = 0.25
 _COMPARABLE = 100_000
 _QUICKLY_COMPARED = 5_000_000
 _SHORT = 1_000
+_NULLS, _FEWEST_NULLS, _MOST_NULLS = 5, 3_000_000, 100_000_000
 
 
 def choose_preset(assembly: Mapping[str, Any]) -> tuple[str, str]:
@@ -106,6 +107,8 @@ def decide(survey: Mapping[str, Any], sources: Sources, preset: str | None) -> D
         "threshold": Decision(0.5, "rather inside than outside; for the posterior decoder only"),
         "min_length": Decision(wanted.min_length, proposed),
         "merge_gap": Decision(wanted.merge_gap, proposed),
+        "calibrate": Decision("run", "tells how many of the regions chance alone would give"),
+        "null_bases": _null_bases(assembly["known_bases"]),
         "compare": _comparison(assembly["known_bases"]),
     }  # fmt: skip
     return Decisions(made)
@@ -156,6 +159,15 @@ def _left_out(records: Sequence[Mapping[str, Any]], wanted: Specification) -> De
     if kept < sum(r["length"] for r in records) / 2:
         return Decision([], f"{'; '.join(reasons)}; but that is most of the assembly, so all train")
     return Decision(chosen, f"{'; '.join(reasons)}; they are called all the same")
+
+
+def _null_bases(bases: int) -> Decision:
+    chosen = min(max(_NULLS * bases, _FEWEST_NULLS), _MOST_NULLS)
+    return Decision(
+        chosen,
+        f"{chosen / bases:.2g} times the assembly, of one kind, which is quick; hmmseg calibrate "
+        "draws more and three kinds, so that a q can be smaller and is less by chance",
+    )
 
 
 def _comparison(bases: int) -> Decision:

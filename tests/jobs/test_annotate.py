@@ -1,5 +1,6 @@
 """The whole job in one command: its decisions, that they are obeyed, and what is done again."""
 
+import json
 import shutil
 from pathlib import Path
 
@@ -14,6 +15,7 @@ from hmmseg.jobs.decisions import KEYS, read_decisions, to_yaml
 from hmmseg.jobs.sources import Sources
 from hmmseg.jobs.survey import survey
 from hmmseg.model.presets import PRESETS
+from hmmseg.tracks.table import read_regions_table
 
 ROOT = Path(__file__).resolve().parents[2]
 GENOMES = {
@@ -30,6 +32,9 @@ FILES = {
     "comparison/heldout.png", "comparison/simulated.tsv", "comparison/simulated.svg",
     "comparison/simulated.png", "comparison/provenance.json", "survey/gc.bw", "report.html",
     "report.provenance.json", "calls/composition.tsv", "calls/records.tsv",
+    "calibration/regions.tsv", "calibration/regions.filtered.bed",
+    "calibration/false_regions.tsv", "calibration/calibration.json",
+    "calibration/provenance.json",
 }  # fmt: skip
 
 
@@ -108,8 +113,29 @@ def test_preset_by_what_the_genome_is_like(
 
 def test_everything_is_there_and_whole(done: Path) -> None:
     assert FILES | {"calls/gc-island.posterior.bw"} == set(files_of(done))
-    for name in ("survey", "calls"):
+    for name in ("survey", "calls", "calibration"):
         assert main(["verify", str(done / name)]) == 0
+
+
+def test_operons_are_as_sure_as_the_size_allows(done: Path) -> None:
+    """Both rRNA operons of the chloroplast (Sato et al. 1999), and no region as sure as they.
+
+    No null region reaches their score, so E is the least there is, and they share it.
+    """
+    document = json.loads((done / "calibration" / "calibration.json").read_text())
+    table = read_regions_table(done / "calibration" / "regions.tsv")
+    bed = (ROOT / "tests" / "data" / "NC_000932.operon.bed").read_text().splitlines()
+    operons = [tuple(map(int, line.split("\t")[1:3])) for line in bed]
+    found = table[table["length"] > 5000]
+    ends = zip(found["start"], found["end"], strict=True)
+    for (start, end), (first, last) in zip(ends, operons, strict=True):
+        assert start == pytest.approx(first, abs=200)
+        assert end == pytest.approx(last, abs=200)
+    least = document["bases"] / document["null_bases"]
+    assert found["expected_by_chance"].tolist() == pytest.approx([least, least], rel=1e-5)
+    assert found["q_value"].tolist() == pytest.approx([least / 2, least / 2], rel=1e-5)
+    assert document["kept"] >= 2
+    assert (table.loc[table["length"] < 5000, "q_value"] > least / 2).all()
 
 
 def test_again_says_what_is_done_and_changes_nothing(
@@ -118,11 +144,12 @@ def test_again_says_what_is_done_and_changes_nothing(
     before = files_of(folder)
     assert run(folder) == 0
     out = capsys.readouterr().out.splitlines()
-    assert [line.split(",")[0] for line in out[:4]] == [
+    assert [line.split(",")[0] for line in out[:5]] == [
         "survey: already there",
         f"decisions: as they stand in {folder / 'decisions.yaml'}",
         "train: already there",
         "decode: already there",
+        "calibrate: already there",
     ]
     assert files_of(folder) == before
 
@@ -163,7 +190,7 @@ def test_damaged_result_is_not_taken_for_done(
 def test_decisions_changed_in_place_are_obeyed_with_force(
     folder: Path, capsys: pytest.CaptureFixture[str]
 ) -> None:
-    change(folder / "decisions.yaml", min_length=5000, decoder="path")
+    change(folder / "decisions.yaml", min_length=5000, decoder="path", calibrate="skip")
     assert run(folder) == 1
     err = capsys.readouterr().err
     assert "calls: made from other sequence or by other decisions; give --force" in err
@@ -177,7 +204,14 @@ def test_decisions_changed_in_place_are_obeyed_with_force(
 def test_decisions_file_is_obeyed(done: Path, tmp_path: Path) -> None:
     other = tmp_path / "mine.yaml"
     shutil.copy(done / "decisions.yaml", other)
-    change(other, preset="gc-domain", states=2, circular=["NC_000932.1"], soft_mask="use")
+    change(
+        other,
+        calibrate="skip",
+        preset="gc-domain",
+        states=2,
+        circular=["NC_000932.1"],
+        soft_mask="use",
+    )
     assert run(tmp_path / "other", "--decisions", str(other)) == 0
     assert (tmp_path / "other" / "decisions.yaml").read_text() == other.read_text()
     assert (tmp_path / "other" / "calls" / "high-gc.posterior.bw").exists()
@@ -197,7 +231,7 @@ def test_preset_asked_for(folder: Path, capsys: pytest.CaptureFixture[str]) -> N
 def test_without_preset_states_are_found_by_themselves(done: Path, tmp_path: Path) -> None:
     other = tmp_path / "mine.yaml"
     shutil.copy(done / "decisions.yaml", other)
-    change(other, preset=None, states=2, order=0, max_iterations=3)
+    change(other, preset=None, states=2, order=0, max_iterations=3, calibrate="skip")
     assert run(tmp_path / "other", "--decisions", str(other)) == 0
     assert (tmp_path / "other" / "calls" / "regions.tsv").exists()
 

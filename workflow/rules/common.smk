@@ -259,6 +259,7 @@ ASSEMBLIES = list(SETTINGS)
 RESULTS = config["output"].rstrip("/")
 # Where results of batches are kept; assemblies and revisions of them share it.
 PARTS = (config["reuse"] or f"{RESULTS}/parts").rstrip("/")
+CALIBRATED = [name for name in ASSEMBLIES if SETTINGS[name]["calibrate"] == "run"]
 COMPARED = [name for name in ASSEMBLIES if SETTINGS[name]["compare"] == "run"]
 FROZEN = [name for name in ASSEMBLIES if SETTINGS[name]["model"] is not None]
 TRAINED = [name for name in ASSEMBLIES if SETTINGS[name]["model"] is None]
@@ -415,6 +416,13 @@ def decode_options(wildcards):
 def batches_options(wildcards):
     """Which records to decode and how, and how many bases in one job."""
     return f"{decode_options(wildcards)} --batch-bases {config['batch_bases']}"
+
+
+def calibrate_options(wildcards):
+    """What null sequence there is to be, and which regions are kept; settings are the calls'."""
+    kind = SETTINGS[wildcards.assembly]["null_kind"]
+    null = "" if kind is None else f"--null {kind} "
+    return null + options(wildcards, "null_bases", "q", "exclude", "seed")
 
 
 def compare_options(wildcards):
