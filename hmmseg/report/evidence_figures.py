@@ -20,8 +20,8 @@ __all__ = [
 
 
 @in_style
-def draw_null(table: pd.DataFrame, megabases: float) -> Any:
-    """Draw how many regions reach each score, found and expected by chance.
+def draw_null(table: pd.DataFrame, megabases: float) -> list[tuple[str, Any]]:
+    """Draw how many regions reach each score, found and expected by chance, for each state.
 
     Parameters
     ----------
@@ -30,29 +30,28 @@ def draw_null(table: pd.DataFrame, megabases: float) -> Any:
     megabases
         Of the sequence that was decoded.
     """
-    figure, axes = blank()
-    nulls = list(dict.fromkeys(table["null"]))
-    first = table[table["null"] == nulls[0]]
-    axes.step(
-        first["score"], first["real_regions"], where="post", color=INK, label="found", linewidth=2
-    )
-    lowest = 0.5
-    for number, null in enumerate(nulls):
-        own = table[table["null"] == null]
-        expected = own["null_regions_per_mb"] * megabases
-        upper = own["upper_per_mb"] * megabases
-        colour = colour_of(number)
-        axes.plot(
-            own["score"], expected.where(expected > 0), color=colour, label=f"by chance: {null}"
-        )
-        axes.plot(own["score"], upper.where(upper > 0), color=colour, linewidth=0.9, linestyle=":")
-        positive = expected[expected > 0]
-        lowest = min([lowest, *positive.tail(1)])
-    logarithmic(axes, "y")
-    axes.set_ylim(bottom=max(lowest / 2, 1e-3))
-    axes.set(xlabel="score at least (bits)", ylabel="regions")
-    legend(axes)
-    return figure
+    drawn = []
+    for state, own in _by_state(table, "score"):
+        figure, axes = blank()
+        nulls = list(dict.fromkeys(own["null"]))
+        first = own[own["null"] == nulls[0]]
+        axes.step(first["score"], first["real_regions"], where="pre", color=INK, label="found")
+        for number, null in enumerate(nulls):
+            drawn_null = own[own["null"] == null]
+            expected = drawn_null["null_regions_per_mb"] * megabases
+            upper = drawn_null["upper_per_mb"] * megabases
+            look = {"color": colour_of(number), "where": "pre"}
+            axes.step(drawn_null["score"], expected.where(expected > 0), label=null, **look)
+            axes.step(
+                drawn_null["score"], upper.where(upper > 0), linewidth=0.8, linestyle=":", **look
+            )
+        logarithmic(axes, "y")
+        if own["score"].min() > 0 and own["score"].max() > 30 * own["score"].min():
+            logarithmic(axes, "x")
+        axes.set(xlabel="score at least (bits)", ylabel="regions")
+        legend(axes)
+        drawn.append((state, figure))
+    return drawn
 
 
 @in_style

@@ -5,7 +5,7 @@ from collections.abc import Mapping
 import pandas as pd
 
 from hmmseg.report.bins import Binned
-from hmmseg.report.parts import Missing, Numbers, Part, Section, Table
+from hmmseg.report.parts import Item, Missing, Numbers, Part, Section, Table
 from hmmseg.report.results import Results
 from hmmseg.report.words import count, in_bases, listed, percent, plural, small
 
@@ -14,6 +14,7 @@ __all__ = ["SURE", "THRESHOLDS", "UNSURE", "found_section"]
 SURE, UNSURE = 0.95, 0.05
 THRESHOLDS = (UNSURE, SURE)
 
+_MOST_GONE = 50
 _DECODE = "hmmseg decode FASTA --model {folder}/model.json --output {folder}/calls"
 
 
@@ -42,6 +43,7 @@ def found_section(results: Results, tracks: Mapping[str, Binned]) -> Section:
         Part("", [_headline(results, rows), _states(rows)]),
         *_quality(results),
         *_features(results),
+        *_changes(results),
     ]
     return Section("found", title, _conclusion(rows, results.calls["decoded_bases"]), parts)
 
@@ -187,3 +189,46 @@ def _features(results: Results) -> list[Part]:
     shown = Table(list(map(str, table.columns)), rows, "Regions and known features.", max(words, 1))
     text = f"The regions were compared with {plural(len(rows), 'kind')} of known features."
     return [Part("Known features", [shown], text)]
+
+
+def _changes(results: Results) -> list[Part]:
+    """Return a part about what changed since an earlier version, if that was asked."""
+    if results.diff is None:
+        return []
+    regions = results.diff["regions"]
+    kinds = list(next(iter(regions.values()), {}))
+    rows = [[state, *(count(counts[kind]) for kind in kinds)] for state, counts in regions.items()]
+    items: list[Item] = [Table(["state", *kinds], rows, "Regions by what became of them.")]
+    table = results.changes
+    if table is not None:
+        gone = table[table["status"].isin(["lost", "gained"])]
+        if len(gone):
+            items.append(_gone(gone))
+    return [Part("Since the earlier version", items, str(results.diff["statement"]))]
+
+
+def _gone(table: pd.DataFrame) -> Table:
+    """Return the regions that were lost or gained, the longest first."""
+    side = table["status"].map({"lost": "old", "gained": "new"})
+    shown = pd.DataFrame(
+        {
+            "status": table["status"],
+            "state": table["state"],
+            **{
+                what: table[f"new_{what}"].where(side == "new", table[f"old_{what}"])
+                for what in ("region", "record", "start", "end")
+            },
+        }
+    )
+    length = shown["end"] - shown["start"]
+    longest = shown.loc[length.sort_values(ascending=False, kind="stable").index[:_MOST_GONE]]
+    rows = [
+        [status, state, region, record, count(start), count(end)]
+        for status, state, region, record, start, end in longest.to_numpy(dtype=object).tolist()
+    ]
+    cut = f"The longest {_MOST_GONE} of {len(shown):,}. " if len(shown) > _MOST_GONE else ""
+    return Table(
+        ["", "state", "region", "record", "start", "end"], rows,
+        f"{cut}Places of what was lost are those in the earlier version.", 4,
+        folded="Regions lost and gained",
+    )  # fmt: skip

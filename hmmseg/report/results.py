@@ -19,8 +19,11 @@ __all__ = ["Results", "read_results"]
 
 _SURVEY, _MODEL, _CALLS = "survey", "model.json", "calls"
 _CALIBRATION, _COMPARISON, _SELECTION = "calibration", "comparison", "selection"
-_STAGES = (_SURVEY, _MODEL, _CALLS, _CALIBRATION, _COMPARISON, _SELECTION)
+_DIFF = "diff"
+_STAGES = (_SURVEY, _MODEL, _CALLS, _CALIBRATION, _COMPARISON, _SELECTION, _DIFF)
 
+_WORDS = ("record", "state", "null", "old_record", "new_record", "old_region", "new_region")
+"""Columns that hold words even where they look like numbers."""
 _COMPARED = ("accuracy", "heldout", "simulated")
 _TABLES = (
     "false_regions",
@@ -73,6 +76,10 @@ class Results:
         What was decided for the whole job.
     features : DataFrame or None
         Overlap with known features.
+    diff : dict or None
+        What became of records and regions since an earlier version.
+    changes : DataFrame or None
+        The same region by region.
     provenance : dict
         Provenance of each stage by its name.
     files : tuple of Path
@@ -96,6 +103,8 @@ class Results:
     drawings: dict[str, bytes]
     decisions: dict[str, Any] | None
     features: pd.DataFrame | None
+    diff: dict[str, Any] | None
+    changes: pd.DataFrame | None
     provenance: dict[str, dict[str, Any]]
     files: tuple[Path, ...]
 
@@ -135,7 +144,7 @@ class _Reader:
         try:
             return pd.read_csv(
                 path, sep="\t", quoting=3, na_values=["NA"], keep_default_na=False,
-                dtype={"record": str, "state": str, "null": str},
+                dtype=dict.fromkeys(_WORDS, str),
             )  # fmt: skip
         except (ValueError, pd.errors.ParserError) as error:
             reason = str(error).splitlines()[0]
@@ -191,6 +200,8 @@ def read_results(folder: str | Path, name: str | None = None) -> Results:
         drawings=_drawings(reader),
         decisions=reader.document("decisions.yaml"),
         features=reader.table("features.tsv"),
+        diff=reader.document(_DIFF, "diff.json"),
+        changes=reader.table(_DIFF, "regions.tsv"),
         provenance=dict(_provenances(reader)),
         files=(),
     )

@@ -60,11 +60,12 @@ def _significance(results: Results) -> str:
     table = results.regions
     if table is None or "q_value" not in table.columns:
         return "The regions have been compared with what chance alone gives."
-    kept = int((table["q_value"] <= 0.05).sum())
-    return (
-        f"{plural(kept, 'region')} of {len(table):,} have a q-value of at most 0.05: of these, "
-        "about one in twenty is expected to be chance."
-    )
+    kept = table["q_value"][table["q_value"] <= 0.05]
+    text = f"{plural(len(kept), 'region')} of {len(table):,} have a q-value of at most 0.05"
+    if len(kept):
+        false = len(kept) * float(kept.max())
+        text += f"; of these, at most {max(false, 0.01):.2g} are expected to be chance"
+    return text + "."
 
 
 def _chance(results: Results, said: Mapping[str, str]) -> Part | None:
@@ -72,13 +73,16 @@ def _chance(results: Results, said: Mapping[str, str]) -> Part | None:
     table, regions = results.tables.get("false_regions"), results.regions
     if table is not None and len(table):
         bases = (results.calls or {}).get("decoded_bases", 0)
-        items.append(
+        items += [
             Picture(
-                "null", "Regions that reach each score: found in the assembly, and expected by "
-                "chance in as much sequence without regions; dotted, the upper limit of that.",
-                figures.draw_null(table, bases / 1e6),
+                f"null-{state}",
+                f"Regions of {state} that reach each score: found in the assembly, and expected by "
+                "chance in as much sequence without regions, of each kind; dotted, the upper limit "
+                "of that.",
+                drawn,
             )
-        )  # fmt: skip
+            for state, drawn in figures.draw_null(table, bases / 1e6)
+        ]
     if regions is not None and "q_value" in regions.columns and len(regions):
         items.append(
             Picture(

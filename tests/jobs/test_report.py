@@ -1,5 +1,6 @@
 """The command ``report``: what it writes, the same bytes, and what it refuses."""
 
+import html
 import json
 import re
 import shutil
@@ -119,15 +120,64 @@ def test_a_page_asks_for_nothing(folder: Path) -> None:
             assert value is None or value.startswith(("#", "data:")), (tag, value[:80])
 
 
-def test_stages_that_were_not_run_say_how(folder: Path) -> None:
+def test_stages_that_were_not_run_say_how(folder: Path, capsys: pytest.CaptureFixture[str]) -> None:
     """The commands are real: each option stands in the help of its command."""
     for gone in ("calls", "calibration", "survey"):
         shutil.rmtree(folder / gone)
-    text = "".join(parsed(page_of(folder)).text)
-    commands = re.findall(r"hmmseg ((?:decode|select|compare|calibrate)[^\n]*)", text)
+    page = page_of(folder)
+    commands = [html.unescape(text) for text in re.findall(r"<code>hmmseg ([^<]*)</code>", page)]
     assert {command.split()[0] for command in commands} == {
         "decode", "select", "compare", "calibrate",
     }  # fmt: skip
+    for command in commands:
+        capsys.readouterr()
+        assert main([command.split()[0], "--help"]) == 0
+        told = capsys.readouterr().out
+        options = re.findall(r"--[a-z-]+", command)
+        assert options
+        assert all(f"{option} " in told for option in options), command
+
+
+def test_what_changed_since_an_earlier_version(folder: Path, tmp_path: Path) -> None:
+    earlier = tmp_path / "earlier"
+    fasta = small_assembly(tmp_path / "assembly.fa")
+    decode = ["decode", str(fasta), "--model", str(folder / "model.json")]
+    assert main([*decode, "--min-length", "800", "--output", str(earlier)]) == 0
+    assert main(["diff", str(earlier), str(folder), "--output", str(folder / "diff")]) == 0
+    said = json.loads((folder / "diff" / "diff.json").read_text())
+    text = "".join(parsed(page_of(folder)).text)
+    assert said["statement"] in text
+    assert said["regions"]["island"]["gained"] > 3
+    assert "Regions lost and gained" in text
+
+
+def test_several_assemblies_side_by_side(folder: Path, tmp_path: Path) -> None:
+    other = Path(shutil.copytree(folder, tmp_path / "<b>other&"))
+    shutil.rmtree(other / "calibration")
+    page_of(folder)
+    (folder.parent / "page.html").rename(folder / "report.html")
+    output = tmp_path / "all.html"
+    call = ["report", str(folder), str(other), "--output", str(output)]
+    assert main([*call, "--figures", str(tmp_path / "f")]) == 0
+    page = output.read_text(encoding="utf-8")
+    found = parsed(page)
+    text = "".join(found.text)
+    assert "<b>other&" in text
+    assert not [tag for tag, _ in found.elements if tag == "b"]
+    assert "1 of 2 assemblies were not calibrated" in text
+    assert [a["href"] for t, a in found.elements if t == "a" and not a["href"].startswith("#")] == [
+        "small/report.html"
+    ]
+    assert (tmp_path / "f" / "shares.svg").exists()
+    assert main([*call, "--force"]) == 0
+    assert output.read_text(encoding="utf-8") == page
+
+
+def test_folders_of_one_name_are_told_apart(folder: Path, tmp_path: Path) -> None:
+    other = Path(shutil.copytree(folder, tmp_path / "later" / "small"))
+    output = tmp_path / "all.html"
+    assert main(["report", str(folder), str(other), "--output", str(output)]) == 0
+    assert "later/small" in output.read_text(encoding="utf-8")
 
 
 def test_only_a_survey_gives_a_page(folder: Path, tmp_path: Path) -> None:
@@ -147,7 +197,13 @@ def test_without_gc_the_map_has_two_panels(folder: Path) -> None:
 def test_figures_are_files(folder: Path, tmp_path: Path) -> None:
     page_of(folder, "--figures", str(tmp_path / "figures"))
     names = {path.name for path in (tmp_path / "figures").iterdir()}
-    assert {"null.svg", "null.png", "reliability.svg", "training.svg", "overview.png"} <= names
+    assert {
+        "null-island.svg",
+        "null-island.png",
+        "reliability.svg",
+        "training.svg",
+        "overview.png",
+    } <= names
     for path in (tmp_path / "figures").glob("*.svg"):
         text = path.read_text(encoding="utf-8")
         assert "<script" not in text

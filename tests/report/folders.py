@@ -66,11 +66,12 @@ def calibrate(folder: Path) -> None:
     tables = {
         "regions": rows,
         "false_regions": [
-            "null\tscore\tnull_regions\tnull_regions_per_mb\tupper_per_mb\treal_regions",
+            "null\tstate\tscore\tnull_regions\tnull_regions_per_mb\tupper_per_mb\treal_regions",
             *(
-                f"{null}\t{score}\t{40 >> score}\t{(40 >> score) / 2}\t{(44 >> score) / 2}"
+                f"{null}\t{state}\t{score}\t{40 >> score}\t{(40 >> score) / 2}\t{(44 >> score) / 2}"
                 f"\t{60 - 4 * score}"
                 for null in ("chain", "drift")
+                for state in states
                 for score in range(8)
             ),
         ],
