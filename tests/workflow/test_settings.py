@@ -74,3 +74,24 @@ def test_every_rule_asks_for_memory_and_time() -> None:
     for name, body in found.items():
         assert f'mem_mb=memory_of("{name}"),' in body, name
         assert f'runtime=minutes_of("{name}"),' in body, name
+
+
+def test_larger_sequence_asks_for_more(tmp_path: Path) -> None:
+    project = Project(tmp_path)
+    for name, bases in (("small", 1), ("large", 30_000_000)):
+        with (tmp_path / f"{name}.fa").open("wb") as handle:
+            handle.truncate(bases)
+    project.configure([{"assembly": name, "fasta": f"{name}.fa"} for name in ("small", "large")])
+    asked: dict[tuple[str, str], tuple[int, int]] = {}
+    for job in re.split(r"^rule ", project.snakemake("--dry-run"), flags=re.MULTILINE)[1:]:
+        needs = {
+            key: re.search(rf"\b{key}=(\w+)", job) for key in ("assembly", "mem_mb", "runtime")
+        }
+        if (assembly := needs["assembly"]) and (memory := needs["mem_mb"]):
+            time = needs["runtime"]
+            assert time is not None
+            asked[job.split(":")[0], assembly[1]] = int(memory[1]), int(time[1])
+    # As in workflow/rules/resources.smk, above 600 MB and 30 minutes.
+    assert asked["train", "small"] == (601, 31)
+    assert asked["train", "large"] == (600 + 5 * 30, 30 + 3 + 2 * 30)
+    assert asked["decode", "large"] == (600 + 10 * 30, 30 + 3 + 15)

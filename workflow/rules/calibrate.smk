@@ -14,6 +14,9 @@ rule calibrate:
     benchmark:
         f"{RESULTS}/benchmarks/calibrate/{{assembly}}.tsv"
     threads: config["threads"]
+    resources:
+        mem_mb=memory_of("calibrate"),
+        runtime=minutes_of("calibrate"),
     params:
         options=calibrate_options,
     shell:
