@@ -432,3 +432,32 @@ def plain_significance(
         chance = by_chance(own)
         found.append((chance, 1 - math.exp(-chance), min(1.0, *shares)))
     return found
+
+
+def plain_settled(
+    posterior: Sequence[float],
+    core: tuple[int, int],
+    step: int,
+    odds: float,
+    window: int,
+) -> int:
+    """Return the start (step -1) or end (step 1) of a region of an open contig.
+
+    That is the middle of the bases that most probably hold the outermost base of the run, but
+    the contig's last one if half of it lies there.
+    """
+    inside, inner = (core[0], core[1] - 1) if step < 0 else (core[1] - 1, core[0])
+    within = list(range(inside, inner - step, -step))
+    best = max(posterior[at] for at in within)
+    anchor = next(at for at in within if posterior[at] >= 0.99 * best)
+    path = list(range(anchor, -1 if step < 0 else len(posterior), step))
+    reached = [1.0]
+    for one, other in itertools.pairwise(path):
+        reached.append(reached[-1] * plain_staying(posterior[other], posterior[one], odds))
+    outermost = [x - y for x, y in itertools.pairwise([*reached, 0.0])]
+    held = [math.fsum(outermost[k : k + window]) for k in range(len(path))]
+    first = next(k for k, value in enumerate(held) if value > max(held) - 1e-9)
+    middle = path[min(first + (window - 1) // 2, len(path) - 1)]
+    if outermost[-1] >= held[first] / 2 and first + window >= len(path):
+        middle = path[-1]
+    return middle if step < 0 else middle + 1

@@ -46,6 +46,14 @@ def calling_options(function: Callable[..., Any]) -> Callable[..., Any]:
             metavar="G",
             help="Merge regions of one state at most this far apart, first of all.",
         ),
+        click.option(
+            "--end-window",
+            type=click.IntRange(0, 10_000),
+            default=0,
+            show_default=True,
+            metavar="W",
+            help="Posterior decoder: put an end amid the W bases most likely to hold it.",
+        ),
     ]
     for option in reversed(added):
         function = option(function)
@@ -67,13 +75,13 @@ def calling_options(function: Callable[..., Any]) -> Callable[..., Any]:
 @options.force
 def decode(
     sources: Any, model: str, output: str, decoder: str | None, threshold: float, min_length: int,
-    merge_gap: int, reuse: bool, threads: int, force: bool,
+    merge_gap: int, end_window: int, reuse: bool, threads: int, force: bool,
 ) -> None:  # fmt: skip
     """Call regions and write their posterior tracks."""
     from hmmseg.jobs import decode as job
     from hmmseg.regions.intervals import Filters
 
-    filters = Filters(min_length, merge_gap)
+    filters = Filters(min_length, merge_gap, end_window)
     found = (job.decode_once if reuse else job.decode)(
         sources, model, output, decoder=decoder, threshold=threshold, filters=filters,
         threads=threads, force=force,

@@ -217,7 +217,8 @@ def presets(name: str | None) -> None:
             (
                 "calls",
                 f"decode --decoder {wanted.decoder} --min-length {wanted.min_length} "
-                f"--merge-gap {wanted.merge_gap}",
+                f"--merge-gap {wanted.merge_gap}"
+                + (f" --end-window {wanted.end_window}" if wanted.end_window else ""),
             ),
             ("source", wanted.source),
         ):

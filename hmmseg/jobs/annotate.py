@@ -216,7 +216,9 @@ class _Job:
                 str(self.folder / _RESULTS["decode"]),
                 decoder=decisions["decoder"],
                 threshold=decisions["threshold"],
-                filters=Filters(decisions["min_length"], decisions["merge_gap"]),
+                filters=Filters(
+                    decisions["min_length"], decisions["merge_gap"], decisions["end_window"]
+                ),
                 threads=self._threads,
                 force=replaces,
                 reuse=True,

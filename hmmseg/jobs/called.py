@@ -75,8 +75,8 @@ class Called:
 
     @property
     def filters(self) -> Filters:
-        """Merging and shortest length."""
-        return Filters(int(self.settings["min_length"]), int(self.settings["merge_gap"]))
+        """Merging, shortest length, and where ends stand."""
+        return Filters(*(int(self.settings[name]) for name in Filters._fields))
 
     @property
     def bases(self) -> int:

@@ -113,7 +113,8 @@ def classify(
         **windows._asdict(),
         "threshold_bits": chosen,
         "labels": Path(labels) if labels is not None else None,
-        **filters._asdict(),
+        "min_length": filters.min_length,
+        "merge_gap": filters.merge_gap,
     }
     inputs = [*sources.files(), region, background, *([labels] if labels is not None else [])]
     with whole_folder(output, force=force) as folder:

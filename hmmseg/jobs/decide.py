@@ -107,6 +107,7 @@ def decide(survey: Mapping[str, Any], sources: Sources, preset: str | None) -> D
         "threshold": Decision(0.5, "rather inside than outside; for the posterior decoder only"),
         "min_length": Decision(wanted.min_length, proposed),
         "merge_gap": Decision(wanted.merge_gap, proposed),
+        "end_window": Decision(wanted.end_window, proposed),
         "calibrate": Decision("run", "tells how many of the regions chance alone would give"),
         "null_bases": _null_bases(assembly["known_bases"]),
         "compare": _comparison(assembly["known_bases"]),

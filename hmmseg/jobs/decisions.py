@@ -68,6 +68,7 @@ KEYS: Mapping[str, tuple[Callable[[Any], bool], str]] = {
     "threshold": (_is_fraction, "a number from 0 up and below 1"),
     "min_length": (_is_whole(1), "a whole number of bases"),
     "merge_gap": (_is_whole(0), "a whole number of bases"),
+    "end_window": (_is_whole(0), "a whole number of bases"),
     "calibrate": (lambda v: v in ("run", "skip"), "run or skip"),
     "null_bases": (_is_whole(1), "a whole number of bases"),
     "compare": (lambda v: v in ("run", "skip"), "run or skip"),

@@ -10,7 +10,7 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from hmmseg.errors import ModelError, OutputError
+from hmmseg.errors import ModelError, OutputError, UsageError
 from hmmseg.jobs.sources import Sources
 from hmmseg.model import load_model
 from hmmseg.outputs import PROVENANCE, check_target, whole_folder, write_json
@@ -144,6 +144,8 @@ def decode(  # noqa: PLR0913 - as many as the command has
     decoder = decoder or (POSTERIOR if staged else PATH)
     if staged and decoder == PATH:
         warn("a best path cannot see how long states with stages last; better decode by posterior")
+    if decoder == PATH and filters.end_window:
+        raise UsageError("an end window goes with the posterior decoder; give --decoder posterior")
     caller = Caller(model, decoder, threshold, filters, threads)
     if not caller.states:
         raise ModelError(f"{model_path}: no state is reported; set 'reported' of one to true")

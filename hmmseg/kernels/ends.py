@@ -12,12 +12,17 @@ References
 
 import math
 
-from hmmseg.kernels.compiling import kernel
+import numpy as np
 
-__all__ = ["ANCHOR", "search_ends", "staying"]
+from hmmseg.kernels.compiling import helper, kernel
+
+__all__ = ["ANCHOR", "NEXT_TO_NOTHING", "search_ends", "settle_ends", "staying"]
 
 ANCHOR = 0.99
 """Share of a region's highest posterior at which the region is taken to have begun."""
+
+NEXT_TO_NOTHING = 1e-6
+"""No end is looked for where fewer than so many runs go on."""
 
 
 @kernel
@@ -39,6 +44,18 @@ def staying(there, here, odds):
     away = (there - here) * more
     root = math.sqrt(max(1.0 + 2.0 * more * uneven + away * away, 0.0))
     return 2.0 * odds * there / (1.0 + (there + here) * more + root)
+
+
+@helper
+def _anchor(posterior, inside, inner, step):
+    """Return the first index from the end inwards that is within one per cent of the highest."""
+    best = 0.0
+    for here in range(inside, inner - step, -step):
+        best = max(best, posterior[here])
+    here = inside
+    while posterior[here] < ANCHOR * best:
+        here -= step
+    return here
 
 
 @kernel
@@ -70,12 +87,7 @@ def search_ends(posterior, insides, inners, outers, step, odds, tail, near, far)
         and beyond ``far`` with probability ``tail`` at most.
     """
     for region in range(insides.size):
-        best = 0.0
-        for here in range(insides[region], inners[region] - step, -step):
-            best = max(best, posterior[here])
-        here = insides[region]
-        while posterior[here] < ANCHOR * best:
-            here -= step
+        here = _anchor(posterior, insides[region], inners[region], step)
         near[region] = far[region] = here
         share = 1.0
         while here != outers[region]:
@@ -86,3 +98,38 @@ def search_ends(posterior, insides, inners, outers, step, odds, tail, near, far)
             far[region] = here
             if share >= 1.0 - tail:
                 near[region] = here
+
+
+@kernel
+def settle_ends(posterior, insides, inners, outers, step, odds, window, found):
+    """Find the middle of the bases that most probably hold the end of a run.
+
+    Parameters
+    ----------
+    posterior, insides, inners, outers, step, odds
+        As for `search_ends`.
+    window : int
+        How many neighbouring bases may hold the run's outermost one.
+    found : int64[region]
+        Filled: the middle one of them; but the last base that the run may reach, if half of what
+        they hold lies there.
+    """
+    for region in range(insides.size):
+        here = _anchor(posterior, insides[region], inners[region], step)
+        farthest = abs(outers[region] - here)
+        # shares[k] is P(the run reaches k bases beyond the anchor).
+        shares = np.empty(farthest + 1)
+        shares[0], count = 1.0, 1
+        while count <= farthest and shares[count - 1] > NEXT_TO_NOTHING:
+            at = here + step * count
+            shares[count] = shares[count - 1] * staying(posterior[at], posterior[at - step], odds)
+            count += 1
+        best, first = -1.0, 0
+        for k in range(count):
+            held = shares[k] - (shares[k + window] if k + window < count else 0.0)
+            if held > best:
+                best, first = held, k
+        reached = min(first + (window - 1) // 2, count - 1)
+        if count > farthest and first + window > farthest and 2.0 * shares[farthest] >= best:
+            reached = farthest
+        found[region] = here + step * reached

@@ -95,7 +95,7 @@ class Specification:
         follows the other.
     decoder : str
         Proposed for calling regions: ``"path"`` or ``"posterior"`` over 0.5.
-    min_length, merge_gap : int
+    min_length, merge_gap, end_window : int
         Likewise, in bases.
     purpose, finds, also_finds, source : str
         For people.
@@ -115,6 +115,7 @@ class Specification:
     decoder: str = "path"
     min_length: int = 1
     merge_gap: int = 0
+    end_window: int = 0
     purpose: str = ""
     finds: str = ""
     also_finds: str = ""

@@ -32,6 +32,7 @@ _STATE_KEYS = {
 _KEYS = {
     "purpose", "finds", "also_finds", "source", "order", "symmetric", "soft_mask", "anchor",
     "trained", "restarts", "pseudocount", "fixed", "never", "decoder", "min_length", "merge_gap",
+    "end_window",
     "states",
 }  # fmt: skip
 
@@ -178,6 +179,7 @@ def _specification(document: Any, name: str) -> Specification:
         decoder=keys.choice("decoder", DECODERS),
         min_length=keys.whole("min_length", 1, 1, 10**9),
         merge_gap=keys.whole("merge_gap", 0, 0, 10**9),
+        end_window=keys.whole("end_window", 0, 0, 10**4),
         **{key: keys.text(key) for key in ("purpose", "finds", "also_finds", "source")},
     )
 

@@ -11,8 +11,15 @@ from numpy.typing import NDArray
 from hmmseg.inference.path import best_runs
 from hmmseg.inference.posterior import posterior_windows
 from hmmseg.model import Model
-from hmmseg.regions.ends import EndSearch, limits_of_regions, odds_of_staying
-from hmmseg.regions.intervals import NO_FILTERS, Filters, StateIntervals, filtered, over_threshold
+from hmmseg.regions.ends import EndSearch, limits_of_regions, odds_of_staying, settled
+from hmmseg.regions.intervals import (
+    NO_FILTERS,
+    Filters,
+    StateIntervals,
+    filtered,
+    over_threshold,
+    together,
+)
 from hmmseg.regions.odds import LogOdds
 from hmmseg.sequence.contigs import Contig
 
@@ -109,7 +116,11 @@ class Caller:
         SequenceError
             The contig is impossible under the model.
         """
-        found = self._path_intervals(contig) if self.decoder == PATH else None
+        found = None
+        if self.decoder == PATH:
+            found = self._path_intervals(contig)
+        elif self.filters.end_window:
+            found = self._settled_intervals(contig)
         sums = {state: RunningSums(found, state) for state in self.states}
         ends = {
             state: EndSearch(odds, len(contig), contig.closed)
@@ -133,6 +144,24 @@ class Caller:
         everything = StateIntervals(runs.edges[:-1], runs.edges[1:], runs.states.astype(np.int64))
         return everything.taken(np.isin(everything.states, self.states))
 
+    def _settled_intervals(self, contig: Contig) -> StateIntervals:
+        """Return what is over the threshold, its ends where they most probably are."""
+        length, window = len(contig), self.filters.end_window
+        spans = {state: RunningSums(None, state) for state in self.states}
+        ends = {
+            state: EndSearch(odds, length, contig.closed, window=window)
+            for state, odds in self._staying.items()
+        }
+        for begin, posterior in posterior_windows(self.model, contig, self.threads):
+            for state, running in spans.items():
+                own = posterior[:, state]
+                running.grow(*over_threshold(own, self.threshold, begin))
+                ends[state].add(own, running.intervals(ends[state].pending))
+        found = {state: running.intervals() for state, running in spans.items()}
+        regions = filtered(together(found.values()), self.filters, length, contig.closed)
+        places = {state: (own, ends[state].finish(own)) for state, own in found.items()}
+        return settled(regions, limits_of_regions(regions, places, length), length, contig.closed)
+
 
 def scored(contig: Contig, sums: Mapping[int, "RunningSums"], filters: Filters) -> Calls:
     """Return the filtered intervals of a contig with their means and totals.
@@ -146,9 +175,7 @@ def scored(contig: Contig, sums: Mapping[int, "RunningSums"], filters: Filters) 
     filters
         Merging and shortest length.
     """
-    parts = [running.intervals() for running in sums.values()]
-    found = StateIntervals(*(np.concatenate(column) for column in zip(*parts, strict=True)))
-    found = found.taken(np.lexsort((found.states, found.starts)))
+    found = together(running.intervals() for running in sums.values())
     found = filtered(found, filters, len(contig), contig.closed)
     totals = np.array(
         [

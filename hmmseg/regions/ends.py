@@ -14,11 +14,18 @@ from collections.abc import Mapping
 import numpy as np
 from numpy.typing import NDArray
 
-from hmmseg.kernels.ends import search_ends
+from hmmseg.kernels.ends import search_ends, settle_ends
 from hmmseg.model import Model
 from hmmseg.regions.intervals import StateIntervals
 
-__all__ = ["REACH", "TAIL", "EndSearch", "limits_of_regions", "odds_of_staying"]
+__all__ = [
+    "REACH",
+    "TAIL",
+    "EndSearch",
+    "limits_of_regions",
+    "odds_of_staying",
+    "settled",
+]
 
 TAIL = 0.025
 """Probability beyond either limit of an interval."""
@@ -53,10 +60,16 @@ class EndSearch:
         Whether the contig is a circle.
     reach
         Bases on either side of an end that are looked at.
+    window
+        0: look for the limits of an interval that holds the end. Otherwise look for one place,
+        the middle of so many bases that most probably hold it.
     """
 
-    def __init__(self, odds: float, length: int, closed: bool, reach: int = REACH) -> None:
+    def __init__(
+        self, odds: float, length: int, closed: bool, reach: int = REACH, window: int = 0
+    ) -> None:
         self._odds, self._length, self._closed, self._reach = odds, length, closed, reach
+        self._window = window
         self._values = np.empty(0)
         self._first = 0
         self._head = np.empty(0)
@@ -105,13 +118,16 @@ class EndSearch:
         -------
         int64[interval, 4]
             Lowest and highest start, lowest and highest end, half-open. On a circle a limit may
-            lie before the first position or beyond the last.
+            lie before the first position or beyond the last. With a window int64[interval, 2],
+            start and end.
         """
         count, length = len(spans.starts), self._length
+        each = 1 if self._window else 2
         if count == 0:
-            return np.empty((0, 4), np.int64)
+            return np.empty((0, 2 * each), np.int64)
         if self._closed and count == 1 and spans.ends[0] - spans.starts[0] == length:
-            return np.array([[0, 0, length, length]])  # nowhere does it begin or end
+            # Nowhere does it begin or end.
+            return np.repeat(np.array([[0, length]]), each, axis=1)
         if self._closed:
             self._go_on()
         limits = []
@@ -135,7 +151,7 @@ class EndSearch:
             self._values, self._first = np.tile(self._head, 3), 0
 
     def _limits(self, spans: StateIntervals, end: int) -> _Limits:
-        """Return int64[interval, 2], the lower and the higher limit of starts or of ends."""
+        """Return the lower and the higher limit of starts or of ends; or their places."""
         last = self._first + len(self._values) - 1
         outwards = min(self._reach, self._length - 1)
         if end == 0:
@@ -145,12 +161,16 @@ class EndSearch:
             insides, step = spans.ends - 1, 1
             inners = np.maximum(spans.starts, spans.ends - self._reach)
         outers = np.clip(insides + step * outwards, self._first, last)
-        near, far = np.empty_like(insides), np.empty_like(insides)
-        search_ends(
+        where = (
             self._values, insides - self._first, inners - self._first, outers - self._first, step,
-            self._odds, TAIL, near, far,
+            self._odds,
         )  # fmt: skip
+        near, far = np.empty_like(insides), np.empty_like(insides)
         # An end is the position behind the last base.
+        if self._window:
+            settle_ends(*where, self._window, near)
+            return near[:, None] + (self._first + end)
+        search_ends(*where, TAIL, near, far)
         lower_first = (far, near) if end == 0 else (near, far)
         return np.stack(lower_first, axis=1) + (self._first + end)
 
@@ -184,16 +204,62 @@ def limits_of_regions(
 
     Returns
     -------
-    int64[region, 4]
+    int64[region, 4] or int64[region, 2]
         As from `EndSearch.finish`.
     """
-    limits = np.empty((len(regions.starts), 4), np.int64)
+    columns = {own.shape[1] for _, own in found.values()}.pop()
+    limits, half = np.empty((len(regions.starts), columns), np.int64), columns // 2
     for state, (spans, own) in found.items():
         mine = regions.states == state
         starts, ends = regions.starts[mine], regions.ends[mine]
         round_the_end = np.where(ends > length, length, 0)
         first = np.searchsorted(spans.starts, starts)
         last = np.searchsorted(spans.ends, ends - round_the_end)
-        limits[mine, :2] = own[first, :2]
-        limits[mine, 2:] = own[last, 2:] + round_the_end[:, None]
+        limits[mine, :half] = own[first, :half]
+        limits[mine, half:] = own[last, half:] + round_the_end[:, None]
     return limits
+
+
+def settled(
+    regions: StateIntervals, places: NDArray[np.int64], length: int, closed: bool
+) -> StateIntervals:
+    """Return regions with their ends moved, no two of them over one base.
+
+    Parameters
+    ----------
+    regions
+        Sorted by start, none over another.
+    places
+        int64[region, 2]: starts and ends.
+    length
+        Of the contig.
+    closed
+        Whether the contig is a circle; a region across its origin comes back in two.
+    """
+    count = len(regions.starts)
+    starts, ends = places[:, 0].copy(), places[:, 1].copy()
+    for one in range(count if closed and count > 1 else count - 1):
+        other, round_the_end = (one + 1) % count, length if one + 1 == count else 0
+        start = starts[other] + round_the_end
+        if start < ends[one]:
+            # Half way, but not into what was called of either.
+            last = regions.starts[other] + round_the_end
+            half = min(max((start + ends[one]) // 2, regions.ends[one]), last)
+            ends[one], starts[other] = half, half - round_the_end
+    moved = StateIntervals(starts, ends, regions.states)
+    return _cut_at_origin(moved, length) if closed else moved
+
+
+def _cut_at_origin(regions: StateIntervals, length: int) -> StateIntervals:
+    """Return intervals of a circle between its first and its last position."""
+    sizes = np.minimum(regions.ends - regions.starts, length)
+    # A whole circle begins where the circle does.
+    starts = np.where(sizes == length, 0, regions.starts % length)
+    beyond = np.maximum(starts + sizes - length, 0)
+    across = np.flatnonzero(beyond)
+    pieces = StateIntervals(
+        np.concatenate((np.zeros(len(across), np.int64), starts)),
+        np.concatenate((beyond[across], starts + sizes - beyond)),
+        np.concatenate((regions.states[across], regions.states)),
+    )
+    return pieces.taken(np.argsort(pieces.starts, kind="stable"))

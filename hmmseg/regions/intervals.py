@@ -1,11 +1,12 @@
 """Intervals of states on one contig: merged where close, dropped where short."""
 
+from collections.abc import Iterable
 from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["NO_FILTERS", "Filters", "StateIntervals", "filtered", "over_threshold"]
+__all__ = ["NO_FILTERS", "Filters", "StateIntervals", "filtered", "over_threshold", "together"]
 
 
 class StateIntervals(NamedTuple):
@@ -37,13 +38,23 @@ class Filters(NamedTuple):
         Shorter regions are dropped, after merging; bases.
     merge_gap : int
         Neighbouring regions of one state at most this far apart become one; bases.
+    end_window : int
+        With the posterior decoder: an end comes to stand in the middle of so many bases that
+        most probably hold it; 0: where the posterior crosses the threshold.
     """
 
     min_length: int = 1
     merge_gap: int = 0
+    end_window: int = 0
 
 
 NO_FILTERS = Filters()
+
+
+def together(parts: Iterable[StateIntervals]) -> StateIntervals:
+    """Return intervals of several states, sorted by start."""
+    found = StateIntervals(*(np.concatenate(column) for column in zip(*parts, strict=True)))
+    return found.taken(np.lexsort((found.states, found.starts)))
 
 
 def over_threshold(

@@ -403,6 +403,7 @@ def batch_options(wildcards):
         "threshold",
         "min_length",
         "merge_gap",
+        "end_window",
     )
     return options(wildcards, *keys)
 
