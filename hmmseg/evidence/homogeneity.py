@@ -185,7 +185,10 @@ class Judge:
         strong = sum(one.strong for one in self._records)
         found = [_described_by(one, known, strong) for one in self._records if not one.seen]
         for row, (one, (z, p)) in enumerate(zip(judged, raw, strict=True)):
-            lowest, effect = min(adjusted[2 * row : 2 * row + 2]), self._effect(one)
+            lowest, effect = (
+                min(adjusted[2 * row : 2 * row + 2]),
+                self._effect(one, one.known / known),
+            )
             verdict = DIFFERS if lowest <= _LEVEL and effect >= LARGE else FITS
             found.append(
                 replace(
@@ -200,11 +203,16 @@ class Judge:
         found.sort(key=lambda one: (one.verdict == TOO_SHORT, -_or_zero(one.effect)))
         return Homogeneity(tuple(found), *scales.longest())
 
-    def _effect(self, record: "_Record") -> float:
-        """Return the effect without what chance adds, which shrinks with length."""
+    def _effect(self, record: "_Record", share: float) -> float:
+        """Return the effect without what chance adds, which shrinks with length.
+
+        Words are taken from those of the whole assembly, of which the record is a part. Unless it
+        is the larger one, it is the rest that it is to be compared with.
+        """
         level = _level_of(record.known)
         noise = self._typical[level].noise * min((BLOCK << level) / record.known, 1.0)
-        return math.sqrt(max(record.square - noise, 0.0) / self._words.length)
+        rest = 1 - share if share < 0.5 else 1.0
+        return math.sqrt(max(record.square - noise, 0.0) / self._words.length) / rest
 
     def _scales(self) -> "_Scales":
         """Return by how much blocks of the assembly vary more than blocks drawn."""

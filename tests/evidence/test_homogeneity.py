@@ -104,6 +104,18 @@ def test_a_phage_and_the_ribosomal_operons_of_a_real_genome_are_named() -> None:
     assert found.surprise_dispersion > 2
 
 
+def test_the_smaller_part_is_what_differs() -> None:
+    """Two replicons apart by ten points of GC: the effect is on the smaller one, in full."""
+    records = assembly(9, [300_000], (200_000, 10.0))
+    found = judged(HOST, records)
+    assert named(found) == ["odd"]
+    by_name = {one.record: one for one in found.records}
+    apart = by_name["odd"].gc - by_name["host_0"].gc
+    centre = by_name["host_0"].gc * 0.6 + by_name["odd"].gc * 0.4
+    square = (apart / 2) ** 2 * (2 / (centre / 2) + 2 / ((1 - centre) / 2))
+    assert by_name["odd"].effect == pytest.approx(np.sqrt(square), rel=0.1)
+
+
 # Who is judged
 
 

@@ -48,7 +48,7 @@ def test_power_grows_with_length_and_difference() -> None:
     for length in lengths:
         for points in differences:
             found = [
-                named(judged(HOST, assembly(seed, [50_000] * 12, (length, points)), seed))
+                named(judged(HOST, assembly(seed, [50_000] * 12, (length, points))))
                 for seed in range(20)
             ]
             power[length, points] = sum("odd" in one for one in found) / 20
