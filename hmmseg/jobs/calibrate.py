@@ -13,6 +13,7 @@ from hmmseg.evidence.null_regions import Found, Scoring, call_nulls, replicates_
 from hmmseg.evidence.nulls import NULLS, Null, null_order
 from hmmseg.jobs.calibration_files import Outcome, write_calibration
 from hmmseg.jobs.called import Called, read_called
+from hmmseg.jobs.checks import check
 from hmmseg.jobs.refit import Refit, refit_of, trained_on
 from hmmseg.model import Model, load_model
 from hmmseg.outputs import PROVENANCE, check_target, sha256_of, whole_folder
@@ -134,7 +135,11 @@ def calibrate(  # noqa: PLR0913 - as many as the command has
     called.check_model(model_path, model)
     outcome = _outcome(called, model, (fasta, model_path, exclude), plan, threads)
     with whole_folder(output, force=force) as folder:
-        document = write_calibration(folder, outcome, called)
+        said = check(
+            called.sources(fasta, exclude), model, called.table, folder,
+            records=called.records, seed=plan.seed, threads=threads,
+        )  # fmt: skip
+        document = write_calibration(folder, outcome, called, said)
         written = sorted(path for path in folder.iterdir() if path.name != PROVENANCE)
         write_provenance(folder, "calibrate", parameters, plan.seed, inputs, written)
     return document

@@ -136,7 +136,9 @@ def _rounded(value: float | None) -> float | None:
     return None if value is None else float(f"{value:.6g}")
 
 
-def write_calibration(folder: Path, outcome: Outcome, called: Called) -> dict[str, Any]:
+def write_calibration(
+    folder: Path, outcome: Outcome, called: Called, said: Mapping[str, str]
+) -> dict[str, Any]:
     """Write the tables and return the document.
 
     Parameters
@@ -147,6 +149,8 @@ def write_calibration(folder: Path, outcome: Outcome, called: Called) -> dict[st
         What came of the calibration.
     called
         The calls.
+    said
+        What else there is to say, by what it is about.
     """
     regions = outcome.judged.regions
     write_regions_table(folder / "regions.tsv", regions)
@@ -157,6 +161,7 @@ def write_calibration(folder: Path, outcome: Outcome, called: Called) -> dict[st
     if outcome.judged.boundaries is not None:
         _write_table(folder / "boundaries.tsv", outcome.judged.boundaries)
     document = outcome.to_dict()
+    document["statements"] |= said
     write_json(folder / "calibration.json", document)
     return document
 

@@ -106,7 +106,7 @@ def _surveyed(
 
 
 def _read(sources: Sources, records: Collection[str] | None) -> Iterator[tuple[str, list[Contig]]]:
-    for record, contigs in sources.read_contigs():
+    for record, contigs in sources.read_contigs(again=True):
         if records is None or record.name in records:
             yield record.name, contigs
 

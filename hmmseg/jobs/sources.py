@@ -62,8 +62,8 @@ class Sources:
         selection = self._selection()
         yield from selection.apply(read_records(self.fasta))
 
-    def read_contigs(self) -> Iterator[tuple[Record, list[Contig]]]:
-        """Yield the selected records and their contigs; warn of records without any.
+    def read_contigs(self, again: bool = False) -> Iterator[tuple[Record, list[Contig]]]:
+        """Yield the selected records and their contigs; the first time, warn of records without.
 
         Raises
         ------
@@ -77,7 +77,7 @@ class Sources:
                 continue
             seen = _hidden(record) if self.soft_mask == "hide" else record
             contigs = split(seen, self.gap_min, selection.exclude.get(record.name))
-            if not contigs:
+            if not contigs and not again:
                 warn(f"record {record.name}: skipped, it has no known base outside gaps")
             found = found or bool(contigs)
             yield record, contigs

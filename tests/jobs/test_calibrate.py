@@ -91,6 +91,14 @@ def test_files_fit_one_another(made: Path, tmp_path: Path) -> None:
     row = table[(table["null"] == "drift") & (table["score"] == best["log_odds_bits"])].iloc[0]
     assert (row["null_regions"], row["real_regions"]) == (0, 1)
     assert f"{len(kept)} of {len(regions)} regions" in document["statements"]["significance"]
+    # What model and assembly say stands beside it, on the records that were called.
+    assert list(document["statements"]) == [
+        "significance", "resolution", "reliability", "homogeneity", "lengths",
+    ]  # fmt: skip
+    records = pd.read_csv(output / "homogeneity.tsv", sep="\t")
+    assert dict(zip(records["record"], records["bases"], strict=True)) == {
+        "one": 59_700, "two": 29_995, "ring": 8_000,
+    }  # fmt: skip
     assert main(["verify", str(output)]) == 0
 
 

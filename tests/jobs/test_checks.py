@@ -9,6 +9,8 @@ from hmmseg.cli import main
 from hmmseg.jobs.checks import check
 from hmmseg.jobs.sources import Sources
 from hmmseg.model import load_model
+from hmmseg.sequence.alphabet import decode
+from hmmseg.simulate import simulate
 from hmmseg.tracks.table import read_regions_table
 
 ROOT = Path(__file__).resolve().parents[2]
@@ -95,3 +97,18 @@ def test_a_chain_has_nothing_to_resolve(tmp_path: Path, regions: pd.DataFrame) -
     said = check(sources, chain, regions.iloc[:0], tmp_path, records=["scaffold_10"])
     assert "no state that could be told" in said["resolution"]
     assert pd.read_csv(tmp_path / "resolution.tsv", sep="\t").empty
+
+
+def test_a_record_without_bases_is_in_the_table_and_warned_of_no_more(
+    tmp_path: Path, capsys: pytest.CaptureFixture[str], regions: pd.DataFrame
+) -> None:
+    """The command has read the sequence before, and said so then."""
+    model = load_model(DEMO / "model.json")
+    (drawn,) = simulate(model, [30_000], 1)
+    fasta = tmp_path / "a.fa"
+    fasta.write_text(f">one\n{decode(drawn.bases)}\n>empty\n{'N' * 400}\n")
+    check(Sources((str(fasta),)), model, regions.iloc[:0], tmp_path)
+    assert "skipped" not in capsys.readouterr().err
+    table = pd.read_csv(tmp_path / "homogeneity.tsv", sep="\t").set_index("record")
+    assert table["bases"].to_dict() == {"one": 30_000, "empty": 0}
+    assert table.loc["empty", "verdict"] == "too short"
