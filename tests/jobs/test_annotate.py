@@ -34,7 +34,9 @@ FILES = {
     "report.provenance.json", "calls/composition.tsv", "calls/records.tsv",
     "calibration/regions.tsv", "calibration/regions.filtered.bed",
     "calibration/false_regions.tsv", "calibration/calibration.json",
-    "calibration/provenance.json",
+    "calibration/provenance.json", "calibration/resolution.tsv", "calibration/detection.tsv",
+    "calibration/reliability.tsv", "calibration/false_discovery.tsv",
+    "calibration/homogeneity.tsv", "calibration/lengths.tsv",
 }  # fmt: skip
 
 
