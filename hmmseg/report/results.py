@@ -11,6 +11,8 @@ import yaml
 
 from hmmseg.errors import OutputError
 from hmmseg.model import Model, load_model
+from hmmseg.outputs import sha256_of
+from hmmseg.progress import warn
 from hmmseg.provenance import provenance_path, read_provenance
 from hmmseg.tracks.sizes import read_chrom_sizes
 from hmmseg.tracks.table import read_regions_table
@@ -177,22 +179,21 @@ def read_results(folder: str | Path, name: str | None = None) -> Results:
     reader = _Reader(root)
     survey = reader.document(_SURVEY, "survey.json")
     calls = reader.document(_CALLS, "summary.json")
-    tables = {
-        name: table
-        for name in _TABLES
-        if (table := reader.table(_CALIBRATION, f"{name}.tsv")) is not None
-    }
+    regions = _regions(reader, calls)
+    judged = _judged(reader, regions)
+    stale = regions is not None and judged is None and (root / _CALIBRATION).exists()
+    tables = {} if stale else dict(_tables(reader))
     results = Results(
         folder=root,
         name=name or root.resolve().name,
         survey=survey,
         model=_model(reader),
         calls=calls,
-        regions=_regions(reader) if calls is not None else None,
+        regions=regions if judged is None else judged,
         record_lengths=_lengths(reader, survey),
         tracks=_tracks(reader, calls),
         gc_track=reader.found(_SURVEY, "gc.bw"),
-        calibration=reader.document(_CALIBRATION, "calibration.json"),
+        calibration=None if stale else reader.document(_CALIBRATION, "calibration.json"),
         tables=tables,
         comparison=reader.document(_COMPARISON, "comparison.json"),
         selection=reader.document(_SELECTION, "selection.json"),
@@ -205,6 +206,7 @@ def read_results(folder: str | Path, name: str | None = None) -> Results:
         provenance=dict(_provenances(reader)),
         files=(),
     )
+    _warn_of_other_model(results)
     object.__setattr__(results, "files", tuple(sorted(set(reader.files))))
     return results
 
@@ -214,24 +216,40 @@ def _model(reader: _Reader) -> Model | None:
     return None if path is None else load_model(path)
 
 
-def _regions(reader: _Reader) -> pd.DataFrame | None:
-    """Return the table of the calls; a calibration of the same calls has more columns."""
+def _regions(reader: _Reader, calls: Mapping[str, Any] | None) -> pd.DataFrame | None:
     path = reader.found(_CALLS, "regions.tsv")
-    if path is None:
+    return None if path is None or calls is None else read_regions_table(path)
+
+
+def _judged(reader: _Reader, regions: pd.DataFrame | None) -> pd.DataFrame | None:
+    """Return the table of the regions with what a calibration of the same regions says of each."""
+    path = reader.found(_CALIBRATION, "regions.tsv")
+    if path is None or regions is None:
         return None
-    table = read_regions_table(path)
-    more = reader.found(_CALIBRATION, "regions.tsv")
-    if more is None:
-        return table
-    richer = read_regions_table(more)
-    same = len(richer) == len(table) and all(
-        (richer[key] == table[key]).all() for key in ("region_id", "record", "start", "end")
+    judged = read_regions_table(path)
+    keys = ["region_id", "record", "start", "end", "mean_posterior"]
+    if len(judged) == len(regions) and bool((judged[keys] == regions[keys]).all(axis=None)):
+        return judged
+    warn(
+        f"{path}: not of the regions that stand in {reader.folder / _CALLS} now, so the page "
+        "leaves this calibration out; calibrate again"
     )
-    if not same:
-        raise OutputError(
-            f"{more}: not the regions of {path}; calibrate those calls again, or remove the folder"
-        )
-    return richer
+    return None
+
+
+def _tables(reader: _Reader) -> Iterator[tuple[str, pd.DataFrame]]:
+    for name in _TABLES:
+        table = reader.table(_CALIBRATION, f"{name}.tsv")
+        if table is not None:
+            yield name, table
+
+
+def _warn_of_other_model(results: Results) -> None:
+    """Warn if the calls were made by another model than the one beside them."""
+    path = results.folder / _MODEL
+    for entry in results.provenance.get(_CALLS, {}).get("inputs", ()):
+        if entry["name"] == _MODEL and path.is_file() and entry["sha256"] != sha256_of(path):
+            warn(f"{path}: not the model that made the calls beside it; call again")
 
 
 def _lengths(reader: _Reader, survey: Mapping[str, Any] | None) -> dict[str, int]:

@@ -217,16 +217,13 @@ def test_figures_are_files(folder: Path, tmp_path: Path) -> None:
         ("survey/survey.json", "[]", "not a document"),
         ("calls/summary.json", "nothing", "cannot be read"),
         ("calls/regions.tsv", "a\tb\n", "header"),
-        ("calibration/regions.tsv", None, "calibrate those calls again"),
         ("model.json", "{}", "model.json: format"),
     ],
 )
 def test_damaged_files_are_named(
-    folder: Path, capsys: pytest.CaptureFixture[str], name: str, content: str | None, told: str
+    folder: Path, capsys: pytest.CaptureFixture[str], name: str, content: str, told: str
 ) -> None:
-    path = folder / name
-    lines = path.read_text(encoding="utf-8").splitlines()
-    path.write_text("\n".join(lines[:-1]) + "\n" if content is None else content, encoding="utf-8")
+    (folder / name).write_text(content, encoding="utf-8")
     capsys.readouterr()
     output = folder.parent / "page.html"
     assert main(["report", str(folder), "--output", str(output)]) == 1
@@ -235,6 +232,28 @@ def test_damaged_files_are_named(
     assert error.count("\n") == 1
     assert told in error
     assert not list(folder.parent.glob("*page*"))
+
+
+def test_a_calibration_of_other_calls_is_left_out(
+    folder: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    path = folder / "calibration" / "regions.tsv"
+    lines = path.read_text(encoding="utf-8").splitlines()
+    path.write_text("\n".join(lines[:-1]) + "\n", encoding="utf-8")
+    capsys.readouterr()
+    text = "".join(parsed(page_of(folder)).text)
+    assert "this calibration out" in capsys.readouterr().err
+    assert "No test says yet" in text
+    assert "reliability" not in text
+
+
+def test_another_model_beside_the_calls_is_told(
+    folder: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    shutil.copy(ROOT / "demo_data" / "model.json", folder / "model.json")
+    capsys.readouterr()
+    page_of(folder)
+    assert "not the model that made the calls" in capsys.readouterr().err
 
 
 def test_refusals(folder: Path, tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:

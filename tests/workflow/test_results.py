@@ -137,3 +137,22 @@ def richest(results: Path, name: str) -> str:
     """Name of the state of the highest GC in an assembly's model of order 0."""
     states = json.loads((results / name / "model.json").read_text())["states"]
     return str(max(states, key=lambda state: state["joint"][1] + state["joint"][2])["name"])
+
+
+@pytest.mark.parametrize("name", NAMES)
+def test_each_assembly_has_a_page_that_names_it(name: str, results: Path) -> None:
+    page = (results / name / "report.html").read_text(encoding="utf-8")
+    assert f"<h1>{name}</h1>" in page
+    assert (results / name / "figures" / "overview.svg").is_file()
+    together = (results / "report.html").read_text(encoding="utf-8")
+    assert f'href="{name}/report.html"' in together
+
+
+def test_snakemakes_own_report_carries_pages_and_figures(finished: Project, tmp_path: Path) -> None:
+    output = tmp_path / "all.html"
+    finished.snakemake("--report", str(output))
+    text = output.read_text(encoding="utf-8")
+    for said in ("overview.svg", "training.svg", "All assemblies side by side"):
+        assert said in text
+    for name in NAMES:
+        assert f"What was found in {name}" in text

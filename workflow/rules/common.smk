@@ -472,6 +472,8 @@ def stages_of(wildcards):
     """What the page of an assembly shows: all stages that it asks for."""
     folder = f"{RESULTS}/{wildcards.assembly}"
     stages = {"survey": "survey", "model": "model.json", "calls": "calls"}
+    if wildcards.assembly in CALIBRATED:
+        stages["calibration"] = "calibration"
     if wildcards.assembly in COMPARED:
         stages["comparison"] = "comparison"
     if selections():
