@@ -135,7 +135,9 @@ def draw_lengths(table: pd.DataFrame) -> list[tuple[str, Any]]:
             own["length"], own["observed"], color=colour_of(number), marker="o", markersize=3.5,
             linestyle="none", label="observed",
         )  # fmt: skip
-        axes.plot(own["length"], own["expected"], color=INK, linewidth=1.2, label="expected")
+        axes.step(
+            own["length"], own["expected"], where="mid", color=INK, linewidth=1.2, label="expected"
+        )
         if len(own) and own["length"].min() > 0:
             logarithmic(axes, "x")
         axes.set(xlabel="length (bases)", ylabel="regions", title=state)

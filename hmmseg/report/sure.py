@@ -45,12 +45,11 @@ def sure_section(results: Results) -> Section:
         _resolution(results, said),
         _fit(results, said),
     ]
-    whole = [said[key] for key in ("significance", "reliability") if said.get(key)]
     shown = [part for part in parts if part is not None]
     missing = [name for part, name in zip(parts, _NAMES, strict=True) if part is None]
     if missing:
         shown.append(Part("", [Missing(listed(missing), command)]))
-    return Section("sure", title, " ".join(whole) or _significance(results), shown)
+    return Section("sure", title, said.get("significance") or _significance(results), shown)
 
 
 _NAMES = ("Chance", "Posterior", "Resolution", "Records that do not fit")
@@ -164,7 +163,8 @@ def _fit(results: Results, said: Mapping[str, str]) -> Part | None:
     worst = differs.sort_values(["adjusted_p", "record"], kind="stable").head(_MOST_RECORDS)
     cut = "" if len(worst) == len(differs) else f" The first {_MOST_RECORDS} of {len(differs):,}."
     rows = _differing(worst)
-    heads = ["record", "bases", "G+C", "surprise, z", "composition, p", "adjusted p", "effect"]
+    heads = ["record", "bases", "G+C", "G+C of the rest", "surprise, z", "composition, p",
+             "adjusted p", "effect"]  # fmt: skip
     return Part(
         _NAMES[3],
         [
@@ -184,6 +184,7 @@ def _differing(table: pd.DataFrame) -> list[list[str]]:
             str(row["record"]),
             _length(row.get("bases")),
             percent(row.get("gc")),
+            percent(row.get("gc_rest")),
             decimals(row.get("surprise_z"), 1),
             small(row.get("composition_p")),
             small(row.get("adjusted_p")),

@@ -26,11 +26,11 @@ MOST_ROWS = 200_000
 
 _COLUMNS = {
     "region_id": ("region", 96),
-    "record": ("record", 124),
-    "start": ("start", 84),
-    "length": ("length", 68),
+    "record": ("record", 118),
+    "start": ("start", 82),
+    "length": ("length", 66),
     "mean_posterior": ("posterior", 82),
-    "q_value": ("q", 78),
+    "q_value": ("q", 92),
     "log_odds_bits": ("log-odds (bits)", 118),
     "state": ("state", 100),
     "end": ("end", 84),
