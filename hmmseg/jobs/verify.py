@@ -17,12 +17,14 @@ from hmmseg.regions.composition import WORDS
 from hmmseg.tracks.bed import BedLine, bed_lines, read_bed
 from hmmseg.tracks.bigwig import summarize_track
 from hmmseg.tracks.counts import read_counts, read_names
+from hmmseg.tracks.records import read_record_table
 from hmmseg.tracks.sizes import read_chrom_sizes
 from hmmseg.tracks.table import DECIMALS, read_regions_table, region_problems
 
 __all__ = ["verify"]
 
 _GFF3_COLUMNS = 9
+_SHA256 = re.compile("[0-9a-f]{64}")
 # The score in the BED file is rounded from the exact mean, the table's mean to its decimals.
 _SCORE_TOLERANCE = 0.5 + 1000 * 0.5 * 10.0 ** -DECIMALS["mean_posterior"] + 1e-9
 
@@ -108,6 +110,8 @@ def _content_checks(root: Path) -> Iterator[tuple[str, _Check]]:
             yield "regions.gff3", _check_gff3
         if (root / "composition.tsv").is_file():
             yield "composition.tsv", _check_counts
+    if has_sizes and (root / "records.tsv").is_file():
+        yield "records.tsv", _check_records
     if has_sizes and any(root.glob("*.posterior.bw")):
         yield "posterior tracks", _check_tracks
     if has_table and (root / "summary.json").is_file():
@@ -122,6 +126,18 @@ def _check_table(root: Path, problems: list[str]) -> str:
     table, lengths = _read(root)
     problems += [f"regions.tsv: {problem}" for problem in region_problems(table, lengths)]
     return f"{len(table)} regions lie inside their records, sorted, each with a name of its own"
+
+
+def _check_records(root: Path, problems: list[str]) -> str:
+    rows = read_record_table(root / "records.tsv")
+    lengths = read_chrom_sizes(root / "chrom.sizes")
+    if [(row.name, row.length) for row in rows] != list(lengths.items()):
+        problems.append("records.tsv: its records are not those of chrom.sizes")
+    sums = {text for row in rows for text in row.sequence}
+    problems += [
+        f"records.tsv: {text!r} is no SHA-256" for text in sums if not _SHA256.fullmatch(text)
+    ]
+    return "records.tsv has the records of chrom.sizes, with checksums"
 
 
 def _check_bed(root: Path, problems: list[str]) -> str:

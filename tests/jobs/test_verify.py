@@ -12,6 +12,7 @@ from hmmseg.jobs.verify import verify
 from hmmseg.outputs import write_json
 from hmmseg.provenance import write_provenance
 from hmmseg.regions.composition import WORDS
+from hmmseg.sequence.identity import Checksums, KnownRecord
 from hmmseg.tracks import (
     PosteriorTrack,
     write_chrom_sizes,
@@ -20,6 +21,7 @@ from hmmseg.tracks import (
     write_regions_table,
 )
 from hmmseg.tracks.counts import write_counts
+from hmmseg.tracks.records import write_record_table
 from tests.tracks.regions import CIRCULAR, LENGTHS, table_of
 
 TABLE = table_of(
@@ -241,4 +243,26 @@ def test_provenance_alone_is_not_enough_to_hide_a_change(result: Path) -> None:
     document["outputs"] = []
     (result / "provenance.json").write_text(json.dumps(document))
     with pytest.raises(OutputError, match=r"chrom\.sizes is not listed.*\(and 6 more\)"):
+        verify(result)
+
+
+@pytest.mark.parametrize(
+    ("old", "new", "message"),
+    [
+        ("", "", None),
+        ("plasmid", "plasmix", r"records\.tsv: its records are not those of chrom\.sizes"),
+        ("0f", "xx", r"records\.tsv: '.*xx.*' is no SHA-256"),
+        ("topology", "form", r"records\.tsv: .*cannot be read as a table of records"),
+    ],
+)
+def test_table_of_records(result: Path, old: str, new: str, message: str | None) -> None:
+    sums = Checksums("0f" * 32, "1e" * 32)
+    rows = [KnownRecord(name, length, name in CIRCULAR, sums) for name, length in LENGTHS.items()]
+    write_record_table(result / "records.tsv", rows)
+    edit(result / "records.tsv", old, new)
+    seal(result)
+    if message is None:
+        assert "records.tsv has the records of chrom.sizes, with checksums" in verify(result)
+        return
+    with pytest.raises(OutputError, match=message):
         verify(result)

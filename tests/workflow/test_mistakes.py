@@ -9,6 +9,8 @@ from tests.workflow.running import Project, dry_runs
 
 SHEETS = {
     # text of the sheet: row and column that the message must name, and a word of the reason
+    "assembly\tfasta\na\ta\udce4.fa\n": (2, "2", "no text"),
+    "assembly\tfasta\na\ta\x00.fa\n": (2, "2", "no text"),
     "assembly\tfasta\tcolour\na\ta.fa\tred\n": (1, "colour", "not known"),
     "assembly\na\n": (1, "fasta", "missing"),
     "fasta\na.fa\n": (1, "assembly", "missing"),
@@ -67,7 +69,7 @@ def answers(tmp_path_factory: pytest.TempPathFactory) -> dict[str, tuple[int, st
     project.configure([{"assembly": "a", "fasta": "a.fa"}])
     calls: dict[str, list[str]] = {"sound": []}
     for number, sheet in enumerate(SHEETS):
-        (folder / f"{number}.tsv").write_text(sheet)
+        (folder / f"{number}.tsv").write_bytes(sheet.encode("utf-8", "surrogateescape"))
         calls[sheet] = ["--config", f"assemblies={number}.tsv"]
     calls |= {config: ["--config", config] for config in CONFIGS}
     common = [*project.arguments(), "--dry-run", "--quiet"]

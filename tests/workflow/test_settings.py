@@ -95,3 +95,25 @@ def test_larger_sequence_asks_for_more(tmp_path: Path) -> None:
     assert asked["train", "small"] == (601, 31)
     assert asked["train", "large"] == (600 + 5 * 30, 30 + 3 + 2 * 30)
     assert asked["decode", "large"] == (600 + 10 * 30, 30 + 3 + 15)
+
+
+def test_what_a_row_says_of_training_reaches_the_command(tmp_path: Path) -> None:
+    project = Project(tmp_path)
+    for name in ("a.fa", "s.yaml", "known.bed"):
+        (tmp_path / name).write_text("")
+    project.configure(
+        [
+            {"assembly": "a", "fasta": "a.fa", "spec": "s.yaml", "fix": "x.length, start"},
+            {"assembly": "b", "fasta": "a.fa", "train_labels": "known.bed", "train_bases": "0"},
+        ]
+    )
+    said = project.snakemake("--dry-run", "--printshellcmds")
+    [of_a] = re.findall(r"hmmseg train .* results/a/model.json .*", said)
+    [of_b] = re.findall(r"hmmseg train .* results/b/model.json .*", said)
+    assert "--spec s.yaml " in of_a
+    assert "--fix=x.length --fix=start " in of_a
+    assert "--train-bases 50000000 " in of_a
+    assert "--states" not in of_a
+    assert "--labels known.bed " in of_b
+    assert "--train-bases 0 " in of_b
+    assert "--states 2 " in of_b

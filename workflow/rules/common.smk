@@ -110,12 +110,19 @@ def sheet_rows():
     if not path.is_file():
         raise config_error("assemblies", f"there is no file {path}")
     header = None
-    with path.open(newline="", encoding="utf-8-sig") as handle:
+    # A byte that is no text stays in its cell, so that the cell can be named.
+    reading = {"encoding": "utf-8-sig", "errors": "surrogateescape"}
+    with path.open(newline="", **reading) as handle:
         lines = csv.reader(handle, delimiter="\t", quoting=csv.QUOTE_NONE)
         for row, cells in enumerate(lines, start=1):
             cells = [cell.strip() for cell in cells]
             if not any(cells) or cells[0].startswith("#"):
                 continue
+            for column, cell in enumerate(cells, start=1):
+                if not cell.isprintable():
+                    raise sheet_error(
+                        row, column, "is no text; save the sheet as UTF-8"
+                    )
             if header is None:
                 header = check_header(cells, row)
                 continue
