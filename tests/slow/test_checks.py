@@ -1,5 +1,10 @@
 """What the model and the assembly say about calls holds in simulation, over many seeds."""
 
+import os
+import subprocess
+import sys
+from pathlib import Path
+
 import numpy as np
 import pytest
 
@@ -7,6 +12,7 @@ from hmmseg.evidence.resolution import resolution
 from tests.evidence.planted import LIMIT_MODELS, island_model, plain_share_detected
 from tests.evidence.records import HOST, assembly, judged, named, trained
 from tests.evidence.test_durations import drawn as drawn_durations
+from tests.kernels.test_kernels_bits import ENVIRONMENTS
 
 pytestmark = pytest.mark.slow
 
@@ -77,3 +83,21 @@ def test_lengths_of_the_true_model_seldom_seem_to_misfit(name: str) -> None:
     print(f"{name}: {np.mean(chances < 0.05)} below 0.05, {np.mean(chances < 0.01)} below 0.01")
     assert np.mean(chances < 0.05) <= 0.05 + 3 * np.sqrt(0.05 * 0.95 / 200)
     assert np.mean(chances < 0.01) <= 0.01 + 3 * np.sqrt(0.01 * 0.99 / 200)
+
+
+def _printed(changes: dict[str, str], cache: Path) -> str:
+    # A cache of its own, or code compiled for another processor would be found there.
+    environment = {**os.environ, **changes, "NUMBA_CACHE_DIR": str(cache)}
+    call = [sys.executable, "-m", "tests.evidence.printed"]
+    folder = Path(__file__).resolve().parents[2]
+    return subprocess.run(
+        call, cwd=folder, env=environment, check=True, capture_output=True, text=True
+    ).stdout
+
+
+def test_same_bits_on_any_processor(tmp_path: Path) -> None:
+    """Every number that the checks find, in full."""
+    here = _printed({}, tmp_path / "here")
+    assert here.count("0x1.") > 100
+    for name, changes in ENVIRONMENTS.items():
+        assert _printed(changes, tmp_path / name.replace(" ", "_")) == here, name
