@@ -25,6 +25,7 @@ from numpy.typing import NDArray
 from hmmseg.evidence.stretches import BLOCK, LEVELS, Ladder, Words, stretches_of
 from hmmseg.evidence.tails import beyond, holm, normal_tail
 from hmmseg.evidence.typical import Seen, Typical, chi_square_of_shares
+from hmmseg.kernels.elementary import log_array
 from hmmseg.model import Model
 from hmmseg.sequence.composition import JUDGED_LENGTH
 from hmmseg.sequence.contigs import Contig
@@ -54,6 +55,7 @@ _MEDIAN_SQUARE = 0.4549364231195736
 
 _MOST_NAMED = 5
 _MUCH = 2.0
+_MOST_WORDS, _TELLING = 3, 1.05
 
 
 @dataclass(frozen=True)
@@ -81,6 +83,9 @@ class RecordFit:
         word (Cohen 1988, Statistical Power Analysis for the Behavioral Sciences, chapter 7).
     verdict : str
         ``fits``, ``differs`` or ``too short``.
+    words : str
+        The words that tell most for the record against the assembly, and how many times as
+        frequent they are in it.
     """
 
     record: str
@@ -93,6 +98,7 @@ class RecordFit:
     adjusted_p: float = math.nan
     effect: float = math.nan
     verdict: str = TOO_SHORT
+    words: str = ""
 
 
 _COLUMNS = [column.name for column in fields(RecordFit)]
@@ -166,14 +172,24 @@ class Judge:
         for contig in contigs:
             counts += np.bincount(contig.bases, minlength=5)
         seen: tuple[Seen, ...] = ()
-        square = math.nan
+        square, telling = math.nan, ""
         if whole is not None and whole.known >= JUDGED_LENGTH:
             seen = tuple(typical.seen(whole, self._centre) for typical in self._typical)
             square = chi_square_of_shares(whole.word_shares, self._centre)
+            telling = self._telling(whole.word_shares)
         known, strong = int(counts[:4].sum()), int(counts[1] + counts[2])
-        self._records.append(_Record(name, known, strong, seen, square))
+        self._records.append(_Record(name, known, strong, seen, square, telling))
         if whole is not None:
             self._states += whole.states
+
+    def _telling(self, shares: NDArray[np.float64]) -> str:
+        used = (shares > 0) & (self._centre > 0)
+        ratio = np.where(used, shares, 1.0) / np.where(used, self._centre, 1.0)
+        weight = np.where(used, shares, 0.0) * log_array(ratio)
+        most = np.argsort(-weight, kind="stable")[:_MOST_WORDS]
+        return ", ".join(
+            f"{self._words.name(int(at))} x{ratio[at]:.2f}" for at in most if ratio[at] >= _TELLING
+        )
 
     def judgement(self) -> Homogeneity:
         """Return how the records taken in so far fit."""
@@ -242,6 +258,7 @@ class _Record(NamedTuple):
     strong: int
     seen: tuple[Seen, ...]
     square: float
+    words: str
 
 
 def _described_by(one: _Record, known: int, strong: int) -> RecordFit:
@@ -252,6 +269,7 @@ def _described_by(one: _Record, known: int, strong: int) -> RecordFit:
         one.strong / one.known if one.known else math.nan,
         (strong - one.strong) / (known - one.known) if known > one.known else math.nan,
         one.known / max(known, 1),
+        words=one.words,
     )
 
 

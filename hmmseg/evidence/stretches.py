@@ -21,6 +21,7 @@ from hmmseg.model.contexts import (
     missing_code,
     reverse_complement_words,
 )
+from hmmseg.sequence.alphabet import SYMBOLS
 from hmmseg.sequence.contigs import Contig
 
 __all__ = ["BLOCK", "LEVELS", "Ladder", "Stretch", "Words", "stretches_of"]
@@ -64,6 +65,14 @@ class Words:
             words = np.minimum(words, reverse_complement_words(length))
         kept, classes = np.unique(words, return_inverse=True)
         return cls(length, classes.astype(np.int64), len(kept))
+
+    def name(self, number: int) -> str:
+        """Return a class's words as letters, such as ``CA/TG``."""
+        alike = np.flatnonzero(self.classes == number).tolist()
+        return "/".join(
+            "".join(SYMBOLS[(word >> (2 * place)) & 3] for place in reversed(range(self.length)))
+            for word in alike
+        )
 
     def counts(self, contig: Contig, begin: int, stop: int) -> NDArray[np.int64]:
         """Return int64[class]: the words that end within a stretch of a contig.

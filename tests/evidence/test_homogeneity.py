@@ -34,6 +34,9 @@ def test_a_planted_record_is_named_and_described() -> None:
     assert "1 of 30 records judged differs from the others: odd (GC 4" in words
     assert f"against {100 * found.records[0].gc_rest:.1f} %" in words
     assert "too short" not in words
+    assert {part.split(" ")[0] for part in found.records[0].words.split(", ")} <= {
+        "CC/GG", "CG", "GC",
+    }  # fmt: skip
 
 
 def test_none_is_named_where_all_are_alike() -> None:
@@ -179,6 +182,9 @@ def test_words_are_counted_as_letters_are(name: str) -> None:
             plain[min(word, other)] += 1
     assert sorted(counted[counted > 0]) == sorted(plain.values())
     assert counted.sum() == sum(plain.values())
+    by_name = {words.name(at): count for at, count in enumerate(counted.tolist())}
+    for letters, count in by_name.items():
+        assert count == plain[min(letters.split("/"))]
 
 
 def test_words_of_high_orders_have_six_bases() -> None:

@@ -21,7 +21,7 @@ HEADERS = {
     "reliability.tsv": "state low high bases mean_posterior observed_fraction",
     "false_discovery.tsv": "state threshold bases nominal_fdr observed_fdr",
     "homogeneity.tsv": (
-        "record bases gc gc_rest share surprise_z composition_p adjusted_p effect verdict"
+        "record bases gc gc_rest share surprise_z composition_p adjusted_p effect verdict words"
     ),
     "lengths.tsv": "state length up_to observed expected",
 }
