@@ -10,7 +10,7 @@ from hmmseg.errors import SequenceError
 from hmmseg.evidence.nulls import Null, Piece
 from hmmseg.inference.streams import in_threads
 from hmmseg.model import Model
-from hmmseg.regions.calling import Caller, Calls
+from hmmseg.regions.calling import Caller
 from hmmseg.sequence.contigs import Contig
 
 __all__ = ["Found", "Replicates", "Scoring", "boundary_scores", "call_nulls", "replicates_of"]
@@ -67,9 +67,10 @@ class Scoring:
     boundaries: bool
     pooled: bool
 
-    def of(self, calls: Calls, closed: bool) -> tuple[NDArray[np.int64], NDArray[np.float64]]:
-        """Return the class and the score of everything that counts in one contig's calls."""
-        states, bits = calls.intervals.states, calls.log_odds_bits
+    def of(
+        self, states: NDArray[np.int64], bits: NDArray[np.float64], closed: bool
+    ) -> tuple[NDArray[np.int64], NDArray[np.float64]]:
+        """Return the class and the score of everything that counts among one contig's regions."""
         if self.boundaries:
             _, bits = boundary_scores(states, bits, closed)
         classes = np.zeros(len(bits), np.int64)
@@ -186,14 +187,14 @@ def call_nulls(
 
     def call(own: Caller, contig: Contig) -> Found:
         try:
-            calls = own.call(contig, _nothing)
+            intervals, bits = own.scores(contig)
         except SequenceError:
             # The chain drew what the model holds for impossible; that piece tells nothing.
             return Found(0, np.empty(0, np.int64), np.empty(0))
         finally:
             if watch is not None:
                 watch(len(contig))
-        return Found(len(contig), *scoring.of(calls, contig.closed))
+        return Found(len(contig), *scoring.of(intervals.states, bits, contig.closed))
 
     def whole(number: int) -> list[Found]:
         contigs = [drawn(number, int(at)) for at in replicates.chosen[number]]
@@ -215,7 +216,3 @@ def call_nulls(
         np.concatenate([one.classes for one in found]),
         np.concatenate([one.scores for one in found]),
     )
-
-
-def _nothing(begin: int, posterior: NDArray[np.float64]) -> None:
-    """Let a window of posteriors pass; null sequence has no tracks."""

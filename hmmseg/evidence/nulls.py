@@ -127,13 +127,13 @@ class ChainNull:
     order
         Context length.
     table
-        float64[row, symbol], as of :func:`~hmmseg.kernels.drifting.draw_chain`.
+        float32[row, symbol], as of :func:`~hmmseg.kernels.drifting.draw_chain`.
     factors
         float64[window] of each record, on the odds of G+C; None: 1 everywhere.
     """
 
     order: int
-    table: NDArray[np.float64]
+    table: NDArray[np.float32]
     factors: Sequence[NDArray[np.float64]] | None = None
 
     def drawn(self, piece: Piece, random: np.random.Generator) -> Contig:
@@ -269,6 +269,6 @@ def _settled(machine: ChainMachine) -> NDArray[np.float64]:
     return shares
 
 
-def _rows(chain: Model) -> NDArray[np.float64]:
+def _rows(chain: Model) -> NDArray[np.float32]:
     """Return P(base | context) in the order of codes."""
-    return np.ascontiguousarray(chain.emissions[0, :-1].reshape(-1, 4))
+    return chain.emissions[0, :-1].reshape(-1, 4).astype(np.float32)

@@ -17,8 +17,9 @@ def draw_chain(table, factors, window, order, memory, uniforms, bases):
 
     Parameters
     ----------
-    table : float64[row, symbol]
-        P(base | context) in the order of codes: contexts of no base first, whole ones last.
+    table : float32[row, symbol]
+        P(base | context) in the order of codes: contexts of no base first, whole ones last. Half
+        the width keeps a large table in the processor's cache; sums are of full width.
     factors : float64[window]
         On the odds of G+C, for each window.
     window : int
@@ -49,7 +50,7 @@ def draw_chain(table, factors, window, order, memory, uniforms, bases):
             stop = at + 1
         for position in range(at, stop):
             row = offset + context
-            below_c = table[row, 0]
+            below_c = np.float64(table[row, 0])
             below_g = below_c + factor * table[row, 1]
             below_t = below_g + factor * table[row, 2]
             reached = uniforms[position] * (below_t + table[row, 3])

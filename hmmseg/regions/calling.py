@@ -9,7 +9,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hmmseg.inference.path import best_runs
-from hmmseg.inference.posterior import posterior_windows
+from hmmseg.inference.posterior import WINDOW_BLOCKS, posterior_windows
+from hmmseg.inference.streams import BLOCK
 from hmmseg.model import Model
 from hmmseg.regions.ends import EndSearch, limits_of_regions, odds_of_staying, settled
 from hmmseg.regions.intervals import (
@@ -27,6 +28,9 @@ __all__ = ["PATH", "POSTERIOR", "Caller", "Calls", "RunningSums", "scored"]
 
 PATH = "path"
 POSTERIOR = "posterior"
+
+_WINDOW = WINDOW_BLOCKS * BLOCK
+"""Bases in a window of posteriors, so that sums are taken over the same pieces without any."""
 
 _Watch = Callable[[int, NDArray[np.float64]], None]
 
@@ -138,6 +142,37 @@ class Caller:
         spans = {state: running.intervals() for state, running in sums.items()}
         limits = {state: (own, ends[state].finish(own)) for state, own in spans.items()}
         return replace(calls, limits=limits_of_regions(calls.intervals, limits, len(contig)))
+
+    def scores(self, contig: Contig) -> tuple[StateIntervals, NDArray[np.float64]]:
+        """Return the intervals and log-odds of :meth:`call`, and nothing that costs more.
+
+        A best path needs no posteriors.
+
+        Parameters
+        ----------
+        contig
+            The sequence.
+
+        Raises
+        ------
+        SequenceError
+            The contig is impossible under the model.
+        """
+        found = self._path_intervals(contig) if self.decoder == PATH else None
+        sums = {state: RunningSums(found, state) for state in self.states}
+        if found is not None:
+            for begin in range(0, len(contig) if len(found.starts) else 0, _WINDOW):
+                bits = self._odds.window(contig, begin, min(begin + _WINDOW, len(contig)))
+                for running, own in zip(sums.values(), bits, strict=True):
+                    running.add(begin, own, own)
+        else:
+            for begin, posterior in posterior_windows(self.model, contig, self.threads):
+                bits = self._odds.window(contig, begin, begin + len(posterior))
+                for (state, running), own in zip(sums.items(), bits, strict=True):
+                    running.grow(*over_threshold(posterior[:, state], self.threshold, begin))
+                    running.add(begin, own, own)
+        calls = scored(contig, sums, self.filters)
+        return calls.intervals, calls.log_odds_bits
 
     def _path_intervals(self, contig: Contig) -> StateIntervals:
         runs = best_runs(self.model, contig, self.threads)

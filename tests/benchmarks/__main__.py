@@ -1,8 +1,8 @@
 """Measure the kernels beside named peers and print a table.
 
 Run ``python -m tests.benchmarks`` from the root of the project, with a C compiler at hand, and
-with names of sections behind it (``peers threads growth contigs memory decoding report``) to
-measure only those. Peers and we take turns in the same process, on the same model and bases;
+with names of sections behind it (``peers threads growth contigs memory decoding calibration
+report``) to measure only those. Peers and we take turns in the same process, on the same model and bases;
 each time is the least of five, after one that warms up; before anything is timed,
 log-likelihoods are compared to 1e-9 relative. What runs on one thread is measured in processor
 time, so that others who use the machine count little. Ratios hold within one run; nanoseconds
@@ -12,15 +12,19 @@ depend on the machine. Nothing here is a test: no time is asserted.
 import sys
 import time
 from collections.abc import Callable, Iterator
+from dataclasses import replace
 from functools import partial
 
 import numpy as np
 
+from hmmseg.evidence.assembly import Assembly
+from hmmseg.evidence.null_regions import Scoring, call_nulls, replicates_of
 from hmmseg.inference.expectation import expect
 from hmmseg.inference.path import best_runs
 from hmmseg.inference.posterior import posterior_windows
 from hmmseg.inference.streams import Corpus
 from hmmseg.model import Model
+from hmmseg.regions.calling import Caller
 from hmmseg.sequence.contigs import Contig
 from tests.benchmarks.cases import a_model, contigs
 from tests.benchmarks.memory import peak_megabytes
@@ -170,6 +174,36 @@ def decoding() -> Iterator[str]:
             )
 
 
+def calibration() -> Iterator[str]:
+    """Null sequence: drawing it, and drawing and judging it beside drawing and decoding it."""
+    (contig,) = contigs([10 * MEGA])
+    for order, symmetric, decoder in (
+        (0, True, "path"), (0, True, "posterior"), (1, True, "path"), (1, True, "posterior"),
+        (3, True, "posterior"), (6, False, "path"),
+    ):  # fmt: skip
+        model = a_model(2, order, symmetric)
+        model = replace(model, reported=(False, True))
+        assembly = Assembly.of(model, [contig])
+        null, replicates = assembly.nulls(model)[0]["drift"], replicates_of(assembly.pieces, 1, 1)
+        caller, piece = Caller(model, decoder), assembly.pieces[0]
+
+        def draw() -> Contig:
+            return null.drawn(piece, np.random.Generator(np.random.PCG64(1)))  # noqa: B023
+
+        drawn = draw()
+        times = least_times(
+            [
+                draw,
+                lambda: caller.call(drawn, lambda *_: None),  # noqa: B023
+                lambda: call_nulls(null, replicates, caller, Scoring(False, False), [1, 0]),  # noqa: B023
+            ]
+        )
+        yield (
+            f"{f'order {order}, by {decoder}':<22} drawn {len(contig) / times[0] / MEGA:5.1f} Mb/s, "
+            f"judged in {times[2] / (times[0] + times[1]):.2f} x drawing and decoding"
+        )
+
+
 def memory() -> Iterator[str]:
     """Peak memory of fresh processes."""
     for what in ("expect", "posterior", "path"):
@@ -184,6 +218,7 @@ SECTIONS: dict[str, Callable[[], Iterator[str]]] = {
     "growth": growth,
     "contigs": many_contigs,
     "decoding": decoding,
+    "calibration": calibration,
     "memory": memory,
     "report": pages,
 }

@@ -27,6 +27,7 @@ from hmmseg.kernels.drifting import draw_chain
 from hmmseg.model import Model
 from hmmseg.model.chain import chain_machine
 from hmmseg.regions.calling import Caller
+from hmmseg.regions.intervals import Filters
 from hmmseg.sequence.contigs import Contig
 from hmmseg.training.chains import fit_chain
 from tests.reference import plain_chain_bases
@@ -56,7 +57,7 @@ def some_chain(order: int, seed: int = 1, length: int = 60_000) -> Model:
 def test_kernel_is_its_twin(order: int, window: int, place: int, seed: int) -> None:
     random = np.random.default_rng(seed)
     rows = (4 ** (order + 1) - 1) // 3
-    table = random.dirichlet([1.0] * 4, rows)
+    table = random.dirichlet([1.0] * 4, rows).astype(np.float32)
     uniforms = random.random(60)
     factors = random.choice([0.25, 1.0, 3.0], 120)
     bases, cut = np.empty(60, np.uint8), int(random.integers(0, 61))
@@ -131,7 +132,7 @@ def test_pieces_keep_places_and_missing_bases() -> None:
 
 def test_factors_go_round_the_origin() -> None:
     factors = [np.arange(1.0, 5.0)]
-    null = ChainNull(0, np.full((1, 4), 0.25), factors)
+    null = ChainNull(0, np.full((1, 4), 0.25, np.float32), factors)
     contig = Contig("r", 3 * WINDOW + 100, np.zeros(2 * WINDOW, np.uint8), False, 4 * WINDOW)
     (piece,) = pieces_of(contig, 0, 10**8)
     used, place = null._factors(piece)
@@ -182,6 +183,30 @@ def test_replicates_hold_the_bases_asked_for() -> None:
     assert len(part) < 3
     assert sum(pieces[at].length for at in part) >= 1_000
     assert len(replicates_of(pieces, 1_000, 1, whole=True).chosen[0]) == 3
+
+
+@pytest.mark.parametrize("decoder", ["path", "posterior"])
+@pytest.mark.parametrize("closed", [False, True])
+def test_scores_are_those_of_whole_calls(decoder: str, closed: bool) -> None:
+    random = np.random.default_rng(6)
+    levels = np.repeat(random.choice([0.3, 0.5], 80), 10_000)
+    strong, other = random.random(len(levels)) < levels, random.integers(0, 2, len(levels))
+    bases = np.where(strong, 1 + other, 3 * other).astype(np.uint8)
+    bases[1_000:1_005] = 4
+    table = np.array([[0.35, 0.15, 0.15, 0.35], [0.25, 0.25, 0.25, 0.25]])
+    model = Model(
+        names=("a", "b"), reported=(False, True), order=0, symmetric=True,
+        start_kind="stationary", transitions=np.array([[0.999, 0.001], [0.002, 0.998]]),
+        joint=table,
+    )  # fmt: skip
+    contig = contig_of(bases, closed=closed)
+    caller = Caller(model, decoder, filters=Filters(50, 10))
+    whole = caller.call(contig, lambda *_: None)
+    intervals, bits = caller.scores(contig)
+    assert len(bits) > 20
+    for one, other in zip(intervals, whole.intervals, strict=True):
+        assert (one == other).all()
+    assert (bits == whole.log_odds_bits).all()
 
 
 def test_nulls_do_not_depend_on_threads() -> None:
