@@ -36,7 +36,7 @@ class Judged:
     boundaries : DataFrame or None
         Boundaries between regions, where these are judged instead.
     smallest_q : mapping of str to float
-        Of each class, what q its best region could have if no null region came near.
+        Of each class that has any, what q a region could have if no null region came near.
     """
 
     regions: pd.DataFrame
@@ -117,7 +117,8 @@ def judge(
     for kind, name, rows in _groups(table, scoring, reported):
         real = table["log_odds_bits"].to_numpy(np.float64)[rows]
         columns[rows] = np.column_stack(significance(real, null.of(kind), ratio))
-        least[name] = smallest_q(len(real), ratio)
+        if len(real):
+            least[name] = smallest_q(len(real), ratio)
     return Judged(_with(table, columns), None, least)
 
 
@@ -141,8 +142,9 @@ def _judge_boundaries(
     for side in ("left", "right"):
         rows = boundaries[side].to_numpy(np.int64)
         columns[rows] = np.fmax(columns[rows], chance)
+    least = {"boundary": smallest_q(len(real), ratio)} if len(real) else {}
     shown = _with(boundaries.drop(columns=["left", "right"]), chance)
-    return Judged(_with(table, columns), shown, {"boundary": smallest_q(len(real), ratio)})
+    return Judged(_with(table, columns), shown, least)
 
 
 def _with(table: pd.DataFrame, columns: NDArray[np.float64]) -> pd.DataFrame:

@@ -99,7 +99,7 @@ class Outcome:
 
     def statement(self) -> str:
         """Return in words how sure the regions are."""
-        return " ".join([self._found(), *self._too_small()])
+        return " ".join([self._found(), *self._too_small(), *self._too_long()])
 
     def _found(self) -> str:
         what = "boundaries" if self.boundaries else "regions"
@@ -111,6 +111,18 @@ class Outcome:
             f"{', the model trained anew on each replicate' if self.refitted else ''}) gave "
             f"{count} {what}, {count / drawn * 1e6 if drawn else 0:.3g} a Mb, of any score."
         )
+
+    def _too_long(self) -> list[str]:
+        """Say which regions a null that follows slow changes cannot judge."""
+        longest = SPAN // 2
+        count = int((self.judged.regions["length"] > longest).sum())
+        if self.null != "drift" or not count:
+            return []
+        return [
+            f"{count} {'region is' if count == 1 else 'regions are'} longer than "
+            f"{longest // 1000} kb, which this null takes for drift, so a high q says little of "
+            "them; --null chain asks whether they are more than chance in sequence without drift."
+        ]
 
     def _too_small(self) -> list[str]:
         said = []

@@ -2,8 +2,8 @@
 
 Run ``python -m tests.benchmarks`` from the root of the project, with a C compiler at hand, and
 with names of sections behind it (``peers threads growth contigs memory decoding calibration
-report``) to measure only those. Peers and we take turns in the same process, on the same model and bases;
-each time is the least of five, after one that warms up; before anything is timed,
+report``) to measure only those. Peers and we take turns in the same process, on the same model
+and bases; each time is the least of five, after one that warms up; before anything is timed,
 log-likelihoods are compared to 1e-9 relative. What runs on one thread is measured in processor
 time, so that others who use the machine count little. Ratios hold within one run; nanoseconds
 depend on the machine. Nothing here is a test: no time is asserted.
@@ -199,7 +199,7 @@ def calibration() -> Iterator[str]:
             ]
         )
         yield (
-            f"{f'order {order}, by {decoder}':<22} drawn {len(contig) / times[0] / MEGA:5.1f} Mb/s, "
+            f"{f'order {order}, by {decoder}':<22} drawn {10 / times[0]:5.1f} Mb/s, "
             f"judged in {times[2] / (times[0] + times[1]):.2f} x drawing and decoding"
         )
 

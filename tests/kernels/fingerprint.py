@@ -11,6 +11,7 @@ from collections.abc import Iterator
 
 import numpy as np
 
+from hmmseg.evidence.assembly import Assembly
 from hmmseg.inference.expectation import expect
 from hmmseg.inference.path import best_runs
 from hmmseg.inference.posterior import posterior
@@ -52,6 +53,10 @@ def _results(threads: int, longest: int) -> Iterator[tuple[str, str]]:
                 yield f"{states} {order} {what} {number}", _digest(getattr(counts, what))
             model, _ = step(model, contigs, threads)
         yield f"{states} {order} learnt", _digest(model.transitions) + _digest(model.joint)
+        assembly = Assembly.of(model, contigs)
+        for name, null in assembly.nulls(model)[0].items():
+            drawn = null.drawn(assembly.pieces[0], np.random.Generator(np.random.PCG64(1)))
+            yield f"{states} {order} null {name}", _digest(drawn.bases)
         for which, contig in enumerate(contigs):
             yield f"{states} {order} posterior {which}", _digest(posterior(model, contig, threads))
             runs = best_runs(model, contig, threads)
