@@ -1,6 +1,7 @@
 """One self-contained page from sections: markup, style, data and program in a single file."""
 
 import base64
+import re
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field
 from importlib import resources
@@ -55,7 +56,7 @@ class Page:
             autoescape=True, undefined=StrictUndefined, trim_blocks=True, lstrip_blocks=True
         )
         environment.filters["groups"] = _groups
-        environment.globals["image"] = _image
+        environment.globals.update(image=_image, width=_width)
         template = environment.from_string(_text("page.html"))
         with_map = self.data is not None
         # Our own files are markup; all else is text and is escaped.
@@ -89,6 +90,12 @@ def _image(picture: Picture) -> str:
     """Return a figure as a data URL: nothing in an image can run."""
     coded = base64.b64encode(svg_of(picture.drawing)).decode("ascii")
     return f"data:image/svg+xml;base64,{coded}"
+
+
+def _width(picture: Picture) -> int:
+    """Return the width of a figure in pixels, at which its letters have their size."""
+    found = re.search(rb'<svg[^>]* width="([0-9.]+)pt"', svg_of(picture.drawing))
+    return round(float(found[1]) * 4 / 3) if found else 640
 
 
 def _groups(items: Sequence[Item]) -> list[dict[str, Any]]:

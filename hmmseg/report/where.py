@@ -16,7 +16,7 @@ from hmmseg.report.parts import Item, Map, Missing, Part, Section
 from hmmseg.report.results import Results
 from hmmseg.report.words import called, count, in_bases, percent, plural
 
-__all__ = ["PRELOADED", "Carried", "carried", "longest_first", "where_section"]
+__all__ = ["MOST_ROWS", "PRELOADED", "Carried", "carried", "longest_first", "where_section"]
 
 PRELOADED = 50
 """So many of the longest records are opened with the page."""
@@ -25,21 +25,21 @@ MOST_ROWS = 200_000
 """More regions would make a page that does not open."""
 
 _COLUMNS = {
-    "region_id": ("region", 96),
-    "record": ("record", 118),
-    "start": ("start", 82),
-    "length": ("length", 66),
-    "mean_posterior": ("posterior", 82),
-    "q_value": ("q", 92),
-    "log_odds_bits": ("log-odds (bits)", 118),
-    "state": ("state", 100),
-    "end": ("end", 84),
-    "expected_wrong_bases": ("expected wrong", 118),
-    "gc": ("G+C", 68),
-    "cpg_ratio": ("CpG of expected", 122),
-    "soft_masked_fraction": ("lower case", 90),
+    "region_id": ("region", 96, ""),
+    "record": ("record", 114, ""),
+    "start": ("start", 82, ""),
+    "length": ("length", 66, ""),
+    "mean_posterior": ("posterior", 88, ".4f"),
+    "q_value": ("q", 92, ".3g"),
+    "log_odds_bits": ("log-odds (bits)", 118, ".1f"),
+    "state": ("state", 100, ""),
+    "end": ("end", 84, ""),
+    "expected_wrong_bases": ("expected wrong", 124, ".1f"),
+    "gc": ("G+C", 68, ".3f"),
+    "cpg_ratio": ("CpG of expected", 128, ".2f"),
+    "soft_masked_fraction": ("lower case", 92, ".2f"),
 }
-"""What the table shows of ``regions.tsv``, with a heading and a width in pixels."""
+"""What the table shows of ``regions.tsv``: a heading, a width in pixels, a format of numbers."""
 
 _WHOLE = ("start", "end", "length")
 
@@ -193,21 +193,20 @@ def _table(regions: pd.DataFrame, rank: Mapping[str, int]) -> tuple[list[dict[st
     names = [name for name in _COLUMNS if name in regions.columns]
     columns, cells = [], []
     for name in names:
-        label, width = _COLUMNS[name]
+        label, width, form = _COLUMNS[name]
         number = name != "record" and pd.api.types.is_numeric_dtype(regions[name])
         columns.append(
             {"name": name, "label": label, "width": width, "number": number,
              "whole": name in _WHOLE}
         )  # fmt: skip
-        digits = 3 if name == "q_value" else 6
-        cells.append("\n".join(_cells(regions[name], rank if name == "record" else None, digits)))
+        cells.append("\n".join(_cells(regions[name], rank if name == "record" else None, form)))
     return columns, "\x1e".join(cells), left_out
 
 
-def _cells(column: "pd.Series[Any]", rank: Mapping[str, int] | None, digits: int) -> Iterator[str]:
+def _cells(column: "pd.Series[Any]", rank: Mapping[str, int] | None, form: str) -> Iterator[str]:
     """Yield the cells of a column as text: records by their place, numbers rounded."""
     if rank is not None:
         return (str(rank[name]) for name in column)
     if not pd.api.types.is_float_dtype(column):
         return (str(value) for value in column)
-    return ("NA" if isnan(value) else f"{value:.{digits}g}" for value in column.tolist())
+    return ("NA" if isnan(value) else format(value, form) for value in column.tolist())

@@ -78,7 +78,8 @@ def _selection(results: Results) -> Part:
         )  # fmt: skip
     if results.candidates is not None:
         rows = [
-            [_cell(value) for value in row] for row in results.candidates.itertuples(index=False)
+            ["" if cell == NOT_KNOWN and head == "remark" else cell for head, cell in row.items()]
+            for row in results.candidates.map(_cell).to_dict(orient="records")
         ]
         heads = [str(head).replace("_", " ") for head in results.candidates.columns]
         items.append(Table(heads, rows, "All models tried.", 0))

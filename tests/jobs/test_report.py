@@ -1,11 +1,13 @@
 """The command ``report``: what it writes, the same bytes, and what it refuses."""
 
+import base64
 import html
 import json
 import re
 import shutil
 import subprocess
 import sys
+import zlib
 from html.parser import HTMLParser
 from pathlib import Path
 
@@ -15,6 +17,8 @@ import pytest
 
 from hmmseg.cli import main
 from hmmseg.provenance import read_provenance
+from hmmseg.report import where
+from hmmseg.tracks.table import read_regions_table
 from tests.report.folders import HOSTILE, ROOT, calibrate, called, small_assembly
 
 
@@ -192,6 +196,20 @@ def test_only_a_survey_gives_a_page(folder: Path, tmp_path: Path) -> None:
 def test_without_gc_the_map_has_two_panels(folder: Path) -> None:
     (folder / "survey" / "gc.bw").unlink()
     assert '"gc":false' in page_of(folder)
+
+
+def test_of_very_many_regions_the_surest_are_shown(
+    folder: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    table = read_regions_table(folder / "calls" / "regions.tsv")
+    monkeypatch.setattr(where, "MOST_ROWS", 5)
+    page = page_of(folder)
+    assert f'"left_out":{len(table) - 5}' in page
+    content = re.search(r'id="regions-data">([^<]*)<', page)
+    assert content is not None
+    ids = zlib.decompress(base64.b64decode(content[1])).decode().split("\x1e")[0].split("\n")
+    surest = table.sort_values("log_odds_bits", ascending=False)["region_id"].head(5)
+    assert sorted(ids) == sorted(surest)
 
 
 def test_figures_are_files(folder: Path, tmp_path: Path) -> None:

@@ -43,9 +43,14 @@ class Watched:
     @property
     def view(self) -> tuple[int, int, int]:
         """Record, start and end that the map shows."""
-        self.page.wait_for_timeout(150)
-        found = self.page.evaluate("({...document.getElementById('panels').dataset})")
-        return int(found["record"]), int(found["start"]), int(found["end"])
+        before = None
+        for _ in range(100):
+            self.page.wait_for_timeout(80)
+            found = self.page.evaluate("({...document.getElementById('panels').dataset})")
+            if found == before:
+                return int(found["record"]), int(found["start"]), int(found["end"])
+            before = found
+        raise AssertionError("the map does not come to rest")
 
     @property
     def shown(self) -> str:
@@ -177,6 +182,23 @@ def test_zoom_and_move_by_button_key_and_wheel(wide: Watched) -> None:
     assert wide.view[0] == 1
 
 
+def test_what_lies_under_the_pointer_is_told(wide: Watched) -> None:
+    """The tip of a region bar gives its name, as text, and its place."""
+    page = wide.page
+    page.locator("#table .row").nth(5).click()
+    _, left, right = wide.view
+    row = page.locator("#table .row.chosen")
+    name = row.locator(".cell").nth(0).inner_text()
+    start = int(row.locator(".cell").nth(2).inner_text().replace(",", ""))
+    page.locator("#panels").scroll_into_view_if_needed()
+    box = page.locator("#panels").bounding_box()
+    inside = box["width"] - 58 - 12
+    at = 58 + inside * (start - left) / (right - left) + 6
+    page.mouse.move(box["x"] + at, box["y"] + 25)
+    page.mouse.move(box["x"] + at + 2, box["y"] + 26)
+    page.get_by_text(name, exact=True).nth(1).wait_for(timeout=5000)
+
+
 def test_drag_moves_the_map(wide: Watched) -> None:
     page = wide.page
     page.click("#in")
@@ -208,7 +230,7 @@ def test_table_by_keyboard(wide: Watched) -> None:
 def test_hostile_names_are_text(wide: Watched, name: str) -> None:
     page = wide.page
     page.fill("#record", name)
-    page.wait_for_timeout(150)
+    assert wide.view
     assert page.inner_text("#where-now strong") == name
     # The page's own text has it, too, wherever it stands.
     assert page.evaluate("document.querySelectorAll('img[onerror]').length") == 0
