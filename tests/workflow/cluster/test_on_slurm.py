@@ -38,11 +38,17 @@ def on(slurm: Slurm, profile: str, folder: Path, **config: int) -> Project:
 
 
 def files(folder: Path) -> dict[str, bytes]:
-    """Return all results in a folder; logs and benchmarks, which tell times, are none."""
+    """Return all results in a folder.
+
+    Logs and benchmarks, which tell times, are none, nor is what a killed job had begun to write
+    beside its result, under a hidden name.
+    """
+    found = {path.relative_to(folder): path for path in folder.rglob("*") if path.is_file()}
     return {
-        str(path.relative_to(folder)): path.read_bytes()
-        for path in folder.rglob("*")
-        if path.is_file() and path.relative_to(folder).parts[0] not in ("logs", "benchmarks")
+        str(name): path.read_bytes()
+        for name, path in found.items()
+        if name.parts[0] not in ("logs", "benchmarks")
+        and not any(part.startswith(".partial-") for part in name.parts)
     }
 
 
