@@ -31,7 +31,7 @@ _COLUMNS = {
     "length": ("length", 66, ""),
     "mean_posterior": ("posterior", 88, ".4f"),
     "q_value": ("q", 92, ".3g"),
-    "log_odds_bits": ("log-odds (bits)", 118, ".1f"),
+    "log_odds_bits": ("log-odds (bits)", 128, ".1f"),
     "state": ("state", 100, ""),
     "end": ("end", 84, ""),
     "expected_wrong_bases": ("expected wrong", 124, ".1f"),

@@ -79,9 +79,14 @@ async function openMap(records, regions) {
   const hidden = [chance, gc].map((plot) => plot.quad({
     left: { field: "left" }, right: { field: "right" }, bottom: 0, top: 1, source: cells, fill_alpha: 0, line_alpha: 0,
   }));
-  const tip = (plot, renderer, rows) => plot.add_tools(new Bokeh.HoverTool({ renderers: [renderer], tooltips: rows, mode: "mouse" }));
-  tip(lanes, drawn, [["region", "@id"], ["from", "@from"], ["to", "@to"], ["posterior", "@posterior"]]);
-  hidden.forEach((r, i) => tip([chance, gc][i], r, [["bases", "@where"], ...(count ? [["posterior", "@said"]] : []), ...(data.gc ? [["G+C", "@gc"]] : [])]));
+  // Fields are escaped by the library.
+  const tip = (plot, renderer, lines) => plot.add_tools(new Bokeh.HoverTool({
+    renderers: [renderer], mode: "mouse",
+    tooltips: `<div style="color:#1c2530;font-size:12px;line-height:1.5">${lines.join("<br>")}</div>`,
+  }));
+  tip(lanes, drawn, ["<b>@id</b>", "@from to @to", "posterior @posterior"]);
+  const lines = ["<b>@where</b>", ...(count ? ["@said"] : []), ...(data.gc ? ["G+C @gc"] : [])];
+  hidden.forEach((renderer, i) => tip([chance, gc][i], renderer, lines));
 
   let record = -1, tracks = null, gaps = [];
   const size = data.bin;
