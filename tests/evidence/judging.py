@@ -111,12 +111,12 @@ def plant(seed: int, count: int, size: int, contrast: float, drift: float = 0.0)
     """Plant regions whose GC exceeds that of their surroundings by the contrast.
 
     The surroundings have 40 % GC, and around it a drift of that standard deviation which is
-    forgotten over 60 kb: an autoregressive process at every 10 kb, with straight lines between.
+    forgotten over 150 kb: an autoregressive process at every 10 kb, with straight lines between.
     """
     random = np.random.default_rng([seed, 7])
     knots = np.arange(0, MEGA + 20_000, 10_000)
     levels = random.standard_normal(len(knots))
-    memory = np.exp(-10_000 / 60_000)
+    memory = np.exp(-10_000 / 150_000)
     for i in range(1, len(knots)):
         levels[i] = memory * levels[i - 1] + np.sqrt(1 - memory**2) * levels[i]
     gc = 0.4 + drift * np.interp(np.arange(MEGA), knots, levels)
