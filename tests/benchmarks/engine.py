@@ -24,10 +24,11 @@ COMMAND = """#!/bin/bash
 # Makes the output of a command of the package, without its content.
 command=$1; batches=__BATCHES__
 while [ $# -gt 0 ]; do
-    case $1 in --output) output=$2 ;; esac
+    case $1 in --output) output=$2 ;; --figures) mkdir -p "$2" ;; esac
     shift
 done
 case $command in
+    report) : > "$output"; : > "${output%.html}.provenance.json" ;;
     adopt) printf '{}' > "$output"; printf '{}' > "${output%.json}.provenance.json" ;;
     summary) : > "$output" ;;
     batches)
