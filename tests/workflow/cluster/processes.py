@@ -8,7 +8,7 @@ from contextlib import suppress
 from dataclasses import dataclass
 from pathlib import Path
 
-__all__ = ["Payload", "end_process", "holders", "payload", "tree", "wait_until"]
+__all__ = ["Payload", "alive", "end_process", "holders", "payload", "tree", "wait_until"]
 
 
 def wait_until(true: Callable[[], object], seconds: float, what: str) -> None:
@@ -51,18 +51,19 @@ def holders(file: Path) -> list[int]:
     return found
 
 
+def alive(pid: int) -> bool:
+    """Return whether a process runs; one that has ended and that nobody waits for does not."""
+    try:
+        return _fields(Path(f"/proc/{pid}"))[0] not in "XZ"
+    except OSError:
+        return False
+
+
 def end_process(pid: int, number: int = signal.SIGTERM) -> None:
-    """Signal a process, and wait until it is gone, or is a zombie that nobody waits for."""
-
-    def gone() -> bool:
-        try:
-            return _fields(Path(f"/proc/{pid}"))[0] in "XZ"
-        except OSError:
-            return True
-
+    """Signal a process, and wait until it is gone."""
     with suppress(ProcessLookupError):
         os.kill(pid, number)
-    wait_until(gone, 20, f"process {pid} goes on")
+    wait_until(lambda: not alive(pid), 20, f"process {pid} goes on")
 
 
 @dataclass(frozen=True)

@@ -13,7 +13,7 @@ from pathlib import Path
 
 import pytest
 
-from tests.workflow.cluster.processes import Payload, payload, wait_until
+from tests.workflow.cluster.processes import Payload, alive, payload, wait_until
 from tests.workflow.cluster.slurm import NODES, Slurm
 from tests.workflow.conftest import DATA, ROWS
 from tests.workflow.running import ROOT, Project
@@ -111,7 +111,7 @@ def cancel(slurm: Slurm, work: Payload) -> None:
 def take_down(slurm: Slurm, work: Payload) -> None:
     """Take the node out of service, and back into it when it has let go of the job."""
     slurm.run("scontrol", "update", f"nodename={work.node}", "state=down", "reason=test")
-    wait_until(lambda: not Path(f"/proc/{work.pid}").exists(), 30, f"{work.job} is not ended")
+    wait_until(lambda: not alive(work.pid), 30, f"{work.job} is not ended")
     slurm.resume_node(work.node)
 
 
@@ -207,7 +207,7 @@ def test_a_dead_run_is_resumed_as_the_readme_says(
     _, script = stop.split()
     said = slurm.run("sh", str(ROOT / script), folder=tmp_path)
     assert work.job in said.split()
-    assert not Path(f"/proc/{work.pid}").exists()
+    wait_until(lambda: not alive(work.pid), 5, f"{work.job} is not ended")
     project.snakemake("--unlock")
     project.snakemake("--jobs=6", QUICKLY[profile])
     assert_same(project, finished, "lambda")
