@@ -75,7 +75,8 @@ def _paragraph(results: Results) -> tuple[str, list[str]]:
         cited += ["hmm", "baum", "durbin"] if model.states > 1 else ["durbin"]
     if results.calls is not None:
         sentences += _calling_words(results.provenance.get("calls"))
-        cited.append("viterbi")
+        if "Viterbi" in sentences[-1]:
+            cited.append("viterbi")
     if results.calibration is not None:
         sentences += _calibration_words(results)
         cited.append("fdr")
@@ -137,10 +138,11 @@ def _training_words(model: Model, provenance: Mapping[str, Any] | None) -> list[
 def _calling_words(provenance: Mapping[str, Any] | None) -> list[str]:
     parameters = (provenance or {}).get("parameters", {})
     if parameters.get("decoder") == "posterior":
-        how = f"bases whose posterior is above {parameters['threshold']:g}"
+        text = f"Regions are bases whose posterior is above {parameters['threshold']:g}"
+    elif parameters.get("decoder") == "path":
+        text = "Regions are stretches of one state on the most probable path (Viterbi 1967)"
     else:
-        how = "stretches of one state on the most probable path (Viterbi 1967)"
-    text = f"Regions are {how}"
+        text = "Regions are as they were called"
     if parameters.get("merge_gap"):
         text += f", joined if at most {count(parameters['merge_gap'])} bases apart"
     if parameters.get("min_length", 1) > 1:
@@ -186,13 +188,13 @@ def _short(value: Any) -> str:
 
 
 def _checksums(results: Results) -> Part | None:
-    found: dict[str, tuple[str, str]] = {}
+    found: set[tuple[str, str, str]] = set()
     for entry in results.provenance.values():
         for item in entry["inputs"]:
             known = item["sha256"] is not None
             size = count(item["bytes"]) if known else "not known"
-            found[item["name"]] = (size, item["sha256"] if known else "standard input")
-    rows: list[list[str]] = [[name, *rest] for name, rest in sorted(found.items())]
+            found.add((item["name"], size, item["sha256"] if known else "standard input"))
+    rows = [list(row) for row in sorted(found)]
     if not rows:
         return None
     items: list[Item] = [Table(["file", "bytes", "SHA-256"], rows, "What the stages have read.", 3)]

@@ -18,6 +18,7 @@ import pytest
 from hmmseg.cli import main
 from hmmseg.provenance import read_provenance
 from hmmseg.report import where
+from hmmseg.report.methods import CAUTION
 from hmmseg.tracks.table import read_regions_table
 from tests.report.folders import HOSTILE, ROOT, calibrate, called, small_assembly
 
@@ -182,6 +183,31 @@ def test_folders_of_one_name_are_told_apart(folder: Path, tmp_path: Path) -> Non
     output = tmp_path / "all.html"
     assert main(["report", str(folder), str(other), "--output", str(output)]) == 0
     assert "later/small" in output.read_text(encoding="utf-8")
+
+
+def test_methods_say_what_was_done_and_cite_what_they_name(folder: Path) -> None:
+    page = page_of(folder)
+    paragraph = re.search(r'<p class="quote">([^<]*)</p>', page)
+    assert paragraph is not None
+    text = html.unescape(paragraph[1])
+    model = json.loads((folder / "model.json").read_text())
+    assert f"{len(model['states'])} states" in text
+    assert "3 starts with seed 1" in text
+    assert "chain" in text
+    names = re.findall(r"([A-Z][a-z]+)(?: et al\.| & [A-Z][a-z]+)? (?:19|20)\d\d", text)
+    assert len(names) >= 4
+    references = page[page.index("References</h3>") :]
+    for name in names:
+        assert f"{name} " in references, name
+    for entry in read_provenance(folder / "model.json")["inputs"]:
+        assert entry["sha256"] in page
+
+
+def test_caution_is_that_of_the_readme(folder: Path) -> None:
+    readme = (ROOT / "README.md").read_text(encoding="utf-8")
+    caution = readme.partition("## Caution")[2].strip().split("\n\n")[0]
+    assert " ".join(caution.split()) == CAUTION
+    assert CAUTION in html.unescape(page_of(folder))
 
 
 def test_only_a_survey_gives_a_page(folder: Path, tmp_path: Path) -> None:
