@@ -25,7 +25,8 @@ _EXTREME = 0.25
 _COMPARABLE = 100_000
 _QUICKLY_COMPARED = 5_000_000
 _SHORT = 1_000
-_NULLS, _FEWEST_NULLS, _MOST_NULLS = 5, 3_000_000, 100_000_000
+# With fewer nulls not even a single region could have an E of one twentieth.
+_NULLS, _FEWEST_NULLS, _MOST_NULLS = 20, 3_000_000, 100_000_000
 
 
 def choose_preset(assembly: Mapping[str, Any]) -> tuple[str, str]:
@@ -166,8 +167,8 @@ def _null_bases(bases: int) -> Decision:
     chosen = min(max(_NULLS * bases, _FEWEST_NULLS), _MOST_NULLS)
     return Decision(
         chosen,
-        f"{chosen / bases:.2g} times the assembly, of one kind, which is quick; hmmseg calibrate "
-        "draws more and three kinds, so that a q can be smaller and is less by chance",
+        f"{chosen / bases:.2g} times the assembly, of the kind that judges; hmmseg calibrate "
+        "draws all three kinds, and more of them for a small or a very large assembly",
     )
 
 

@@ -140,7 +140,9 @@ def draw_lengths(table: pd.DataFrame) -> list[tuple[str, Any]]:
         )
         if len(own) and own["length"].min() > 0:
             logarithmic(axes, "x")
-        axes.set(xlabel="length (bases)", ylabel="regions", title=state)
+        axes.set(xlabel="length (bases)", ylabel="regions")
+        # Beside the legend, which is on the left.
+        axes.set_title(state, loc="right")
         axes.set_ylim(bottom=0)
         legend(axes)
         drawn.append((state, figure))

@@ -186,7 +186,12 @@ def _features(results: Results) -> list[Part]:
         for row in table.itertuples(index=False)
     ]
     words = sum(not pd.api.types.is_numeric_dtype(kind) for kind in table.dtypes)
-    shown = Table(list(map(str, table.columns)), rows, "Regions and known features.", max(words, 1))
+    shown = Table(
+        [str(name).replace("_", " ") for name in table.columns],
+        rows,
+        "Regions and known features.",
+        max(words, 1),
+    )
     text = f"The regions were compared with {plural(len(rows), 'kind')} of known features."
     return [Part("Known features", [shown], text)]
 

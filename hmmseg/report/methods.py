@@ -31,9 +31,8 @@ _REFERENCES = {
     "461-464.",
     "bootstrap": "Efron B., Tibshirani R. J. (1993). An Introduction to the Bootstrap. Chapman & "
     "Hall.",
-    "fdr": "Benjamini Y., Hochberg Y. (1995). Controlling the false discovery rate: a practical "
-    "and powerful approach to multiple testing. Journal of the Royal Statistical Society B 57, "
-    "289-300.",
+    "fdr": "Barber R. F., Candès E. J. (2015). Controlling the false discovery rate via "
+    "knockoffs. Annals of Statistics 43, 2055-2085.",
 }
 
 
@@ -147,6 +146,11 @@ def _calling_words(provenance: Mapping[str, Any] | None) -> list[str]:
         text += f", joined if at most {count(parameters['merge_gap'])} bases apart"
     if parameters.get("min_length", 1) > 1:
         text += f", of at least {count(parameters['min_length'])} bases"
+    if parameters.get("end_window"):
+        text += (
+            f", each end in the middle of the {count(parameters['end_window'])} bases most likely "
+            "to hold it"
+        )
     return [text + "; posteriors are given the whole contig."]
 
 
@@ -159,7 +163,10 @@ def _calibration_words(results: Results) -> list[str]:
     provenance = results.provenance.get("calibration") or {}
     if provenance.get("seed") is not None:
         text += f", seed {provenance['seed']}"
-    return [f"{text}; q-values control the false discovery rate (Benjamini & Hochberg 1995)."]
+    return [
+        f"{text}; a region's q-value is the share of false ones to "
+        "be expected among those that score as high (Barber & Candès 2015)."
+    ]
 
 
 def _versions(results: Results) -> Part | None:

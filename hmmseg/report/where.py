@@ -26,20 +26,24 @@ MOST_ROWS = 200_000
 
 _COLUMNS = {
     "region_id": ("region", 96, ""),
-    "record": ("record", 114, ""),
-    "start": ("start", 82, ""),
+    "record": ("record", 80, ""),
+    "start": ("start", 66, ""),
     "length": ("length", 66, ""),
     "mean_posterior": ("posterior", 88, ".4f"),
-    "q_value": ("q", 92, ".3g"),
+    "q_value": ("q", 74, ".3g"),
     "log_odds_bits": ("log-odds (bits)", 128, ".1f"),
     "state": ("state", 100, ""),
-    "end": ("end", 84, ""),
+    "end": ("end", 66, ""),
     "expected_wrong_bases": ("expected wrong", 124, ".1f"),
     "gc": ("G+C", 68, ".3f"),
     "cpg_ratio": ("CpG of expected", 128, ".2f"),
     "soft_masked_fraction": ("lower case", 92, ".2f"),
 }
-"""What the table shows of ``regions.tsv``: a heading, a width in pixels, a format of numbers."""
+"""What the table shows of ``regions.tsv``: a heading, a least width in pixels, a format of
+numbers."""
+
+_LETTER, _PADDING, _WIDEST = 7.3, 18, 240
+"""Pixels of a letter, around a cell's text, and of a column at most."""
 
 _WHOLE = ("start", "end", "length")
 
@@ -193,7 +197,8 @@ def _table(regions: pd.DataFrame, rank: Mapping[str, int]) -> tuple[list[dict[st
     names = [name for name in _COLUMNS if name in regions.columns]
     columns, cells = [], []
     for name in names:
-        label, width, form = _COLUMNS[name]
+        label, least, form = _COLUMNS[name]
+        width = max(least, _needed(regions[name], name in _WHOLE))
         number = name != "record" and pd.api.types.is_numeric_dtype(regions[name])
         columns.append(
             {"name": name, "label": label, "width": width, "number": number,
@@ -201,6 +206,17 @@ def _table(regions: pd.DataFrame, rank: Mapping[str, int]) -> tuple[list[dict[st
         )  # fmt: skip
         cells.append("\n".join(_cells(regions[name], rank if name == "record" else None, form)))
     return columns, "\x1e".join(cells), left_out
+
+
+def _needed(column: "pd.Series[Any]", whole: bool) -> int:
+    """Return the pixels that show the longest cell of a column, within reason."""
+    if whole:
+        longest = len(f"{int(column.max()):,}") if len(column) else 0
+    elif pd.api.types.is_numeric_dtype(column):
+        longest = 0
+    else:
+        longest = int(column.astype(str).str.len().max()) if len(column) else 0
+    return min(int(_LETTER * longest) + _PADDING, _WIDEST)
 
 
 def _cells(column: "pd.Series[Any]", rank: Mapping[str, int] | None, form: str) -> Iterator[str]:
