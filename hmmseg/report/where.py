@@ -29,8 +29,8 @@ _COLUMNS = {
     "record": ("record", 80, ""),
     "start": ("start", 66, ""),
     "length": ("length", 66, ""),
-    "mean_posterior": ("posterior", 88, ".4f"),
     "q_value": ("q", 74, ".3g"),
+    "mean_posterior": ("posterior", 88, ".4f"),
     "log_odds_bits": ("log-odds (bits)", 128, ".1f"),
     "state": ("state", 100, ""),
     "end": ("end", 66, ""),
@@ -42,7 +42,7 @@ _COLUMNS = {
 """What the table shows of ``regions.tsv``: a heading, a least width in pixels, a format of
 numbers."""
 
-_LETTER, _PADDING, _WIDEST = 7.3, 18, 240
+_LETTER, _PADDING, _WIDEST = 8.3, 18, 240
 """Pixels of a letter, around a cell's text, and of a column at most."""
 
 _WHOLE = ("start", "end", "length")
