@@ -4,11 +4,13 @@ Block edges depend on the contig alone, never on threads, so that sums are alway
 same order and results have the same bits on any number of threads.
 """
 
+import os
 from collections.abc import Callable, Iterable, Sequence
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass, replace
+from functools import cache
 from itertools import pairwise
-from threading import Lock
+from threading import Lock, local
 from typing import TypeVar
 
 import numpy as np
@@ -31,12 +33,35 @@ _Result = TypeVar("_Result")
 def in_threads(
     function: Callable[[_Item], _Result], items: Iterable[_Item], threads: int
 ) -> list[_Result]:
-    """Apply a function that releases the interpreter's lock; results in the items' order."""
+    """Apply a function that releases the interpreter's lock; results in the items' order.
+
+    Threads are kept from call to call, as starting them costs a tenth of a short step. What runs
+    in one of them and wants threads itself gets new ones: if it waited for its own kind, all of
+    them could come to wait.
+    """
     items = list(items)
     if threads <= 1 or len(items) <= 1:
         return [function(item) for item in items]
-    with ThreadPoolExecutor(min(threads, len(items))) as pool:
-        return list(pool.map(function, items))
+    if getattr(_OF_THIS_THREAD, "works", False):
+        with ThreadPoolExecutor(min(threads, len(items)), initializer=_mark) as pool:
+            return list(pool.map(function, items))
+    return list(_kept_pool(threads).map(function, items))
+
+
+_OF_THIS_THREAD = local()
+
+
+def _mark() -> None:
+    _OF_THIS_THREAD.works = True
+
+
+@cache
+def _kept_pool(threads: int) -> ThreadPoolExecutor:
+    return ThreadPoolExecutor(threads, initializer=_mark)
+
+
+# A forked process has no threads but the one that forked.
+os.register_at_fork(after_in_child=_kept_pool.cache_clear)
 
 
 def block_edges(

@@ -226,6 +226,8 @@ SECTIONS: dict[str, Callable[[], Iterator[str]]] = {
 
 def main(names: list[str]) -> None:
     """Print the table."""
+    if unknown := [name for name in names if name not in SECTIONS]:
+        sys.exit(f"no section {unknown[0]}; there are {', '.join(SECTIONS)}")
     for name in names or SECTIONS:
         section = SECTIONS[name]
         print(f"\n{(section.__doc__ or '').splitlines()[0]}", flush=True)
