@@ -16,7 +16,7 @@ from hmmseg.kernels.elementary import LN2, log
 from hmmseg.model import Model
 from hmmseg.model.contexts import code_offset, missing_code
 from hmmseg.model.dimension import chain_parameters
-from hmmseg.sequence.alphabet import MISSING
+from hmmseg.sequence.alphabet import count_known
 from hmmseg.training.chains import chain_of_words, code_counts, fit_chain, log_probability_of_counts
 from hmmseg.training.labelled import half_counts
 from hmmseg.training.restarts import Plan, fit_restarts
@@ -56,7 +56,7 @@ class HeldOut:
 
 def known_bases(pieces: Sequence[Piece]) -> NDArray[np.int64]:
     """Return int64[piece]: how many bases are not missing."""
-    return np.array([int(np.count_nonzero(p.contig.bases != MISSING)) for p in pieces])
+    return np.array([count_known(p.contig.bases) for p in pieces])
 
 
 def chain_heldout(

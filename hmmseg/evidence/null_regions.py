@@ -8,7 +8,7 @@ from numpy.typing import NDArray
 
 from hmmseg.errors import SequenceError
 from hmmseg.evidence.nulls import Null, Piece
-from hmmseg.inference.streams import in_threads
+from hmmseg.inference.threads import in_threads
 from hmmseg.model import Model
 from hmmseg.regions.calling import Caller
 from hmmseg.sequence.contigs import Contig

@@ -25,7 +25,7 @@ from hmmseg.inference.expectation import log_likelihoods
 from hmmseg.inference.streams import Corpus
 from hmmseg.kernels.elementary import LN2, log
 from hmmseg.model.dimension import free_parameters
-from hmmseg.sequence.alphabet import MISSING
+from hmmseg.sequence.alphabet import count_known
 from hmmseg.sequence.contigs import Contig
 from hmmseg.training.baum_welch import fit
 from hmmseg.training.constraints import Prior
@@ -146,7 +146,7 @@ def cut_blocks(contigs: Sequence[Contig], folds: int, seed: int) -> list[Block]:
     whole = many and max(len(contig) for contig in contigs) <= _LARGEST_SHARE * total
     length = max(SHORTEST_BLOCK, total // _PIECES)
     pieces = list(contigs) if whole else [p for contig in contigs for p in _cut(contig, length)]
-    known = [int(np.count_nonzero(piece.bases != MISSING)) for piece in pieces]
+    known = [count_known(piece.bases) for piece in pieces]
     random = np.random.Generator(np.random.PCG64(np.random.SeedSequence([seed, 2])))
     lightest = [(0, fold) for fold in range(folds)]
     chosen = [0] * len(pieces)

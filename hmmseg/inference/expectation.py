@@ -8,8 +8,9 @@ from numpy.typing import NDArray
 
 from hmmseg.inference.exact import exact_pass
 from hmmseg.inference.passes import BlockEnds, find_ends
-from hmmseg.inference.streams import Corpus, Stream, in_threads
+from hmmseg.inference.streams import Corpus, Stream
 from hmmseg.inference.tables import Tables, preferred_word, tables_for
+from hmmseg.inference.threads import in_threads
 from hmmseg.kernels.blocks import block_kernels
 from hmmseg.kernels.matrices import add_heads, unfold_kernel
 from hmmseg.model import Model

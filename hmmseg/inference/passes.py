@@ -10,8 +10,9 @@ from typing import NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
-from hmmseg.inference.streams import Stream, in_threads
+from hmmseg.inference.streams import Stream
 from hmmseg.inference.tables import Tables
+from hmmseg.inference.threads import in_threads
 from hmmseg.kernels.blocks import block_kernels
 from hmmseg.kernels.chains import chain_kernel, chains_pay
 from hmmseg.kernels.scan import log_scaled, log_trace_of_power, scan_closed, scan_contigs

@@ -8,8 +8,9 @@ from numpy.typing import NDArray
 
 from hmmseg.errors import ModelError
 from hmmseg.inference.exact import impossible
-from hmmseg.inference.streams import BLOCK, build_stream, in_threads
+from hmmseg.inference.streams import BLOCK, build_stream
 from hmmseg.inference.tables import preferred_word
+from hmmseg.inference.threads import in_threads
 from hmmseg.kernels.elementary import log_array
 from hmmseg.kernels.paths import (
     IMPOSSIBLE,
@@ -29,6 +30,9 @@ __all__ = ["Runs", "best_path", "best_runs", "path_log_probability", "runs_of"]
 
 _GROUP = 64
 """Blocks whose best earlier states are held at once."""
+
+_PIECE = 8
+"""Blocks that a thread takes at once."""
 
 
 class Runs(NamedTuple):
@@ -226,11 +230,13 @@ class _Decoder:
         run = state
         for last in range(len(marks), 0, -_GROUP):
             first = max(last - _GROUP, 0)
-            backs = in_threads(
-                lambda block: self._states_before(block, marks[block]),
-                range(first, last),
+            pieces = [range(at, min(at + _PIECE, last)) for at in range(first, last, _PIECE)]
+            found = in_threads(
+                lambda piece: [self._states_before(block, marks[block]) for block in piece],
+                pieces,
                 self.threads,
             )
+            backs = [back for some in found for back in some]
             for block, back in zip(range(last - 1, first - 1, -1), reversed(backs), strict=True):
                 begin, stop = bounds[block : block + 2]
                 begins = np.empty(positions[block + 1] - positions[block], np.int64)

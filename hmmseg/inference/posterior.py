@@ -7,8 +7,9 @@ from numpy.typing import NDArray
 
 from hmmseg.inference.exact import exact_pass
 from hmmseg.inference.passes import BlockEnds, find_ends
-from hmmseg.inference.streams import BLOCK, Stream, build_stream, in_threads
+from hmmseg.inference.streams import BLOCK, Stream, build_stream
 from hmmseg.inference.tables import Tables, preferred_word, tables_for
+from hmmseg.inference.threads import in_threads
 from hmmseg.kernels.posteriors import posterior_kernel
 from hmmseg.model import Model
 from hmmseg.model.machine import Machine

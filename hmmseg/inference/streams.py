@@ -4,64 +4,24 @@ Block edges depend on the contig alone, never on threads, so that sums are alway
 same order and results have the same bits on any number of threads.
 """
 
-import os
-from collections.abc import Callable, Iterable, Sequence
-from concurrent.futures import ThreadPoolExecutor
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
-from functools import cache
 from itertools import pairwise
-from threading import Lock, local
-from typing import TypeVar
+from threading import Lock
 
 import numpy as np
 from numpy.typing import NDArray
 
+from hmmseg.inference.threads import in_threads
 from hmmseg.kernels.tokens import base_codes, code_total, token_count, tokenise
 from hmmseg.model.contexts import code_dtype
-from hmmseg.sequence.alphabet import MISSING, reverse_complement
+from hmmseg.sequence.alphabet import MISSING, count_known, reverse_complement
 from hmmseg.sequence.contigs import Contig
 
-__all__ = ["BLOCK", "Corpus", "Stream", "block_edges", "build_stream", "in_threads"]
+__all__ = ["BLOCK", "Corpus", "Stream", "block_edges", "build_stream"]
 
 BLOCK = 8192
 """Bases in a block."""
-
-_Item = TypeVar("_Item")
-_Result = TypeVar("_Result")
-
-
-def in_threads(
-    function: Callable[[_Item], _Result], items: Iterable[_Item], threads: int
-) -> list[_Result]:
-    """Apply a function that releases the interpreter's lock; results in the items' order.
-
-    Threads are kept from call to call, as starting them costs a tenth of a short step. What runs
-    in one of them and wants threads itself gets new ones: if it waited for its own kind, all of
-    them could come to wait.
-    """
-    items = list(items)
-    if threads <= 1 or len(items) <= 1:
-        return [function(item) for item in items]
-    if getattr(_OF_THIS_THREAD, "works", False):
-        with ThreadPoolExecutor(min(threads, len(items)), initializer=_mark) as pool:
-            return list(pool.map(function, items))
-    return list(_kept_pool(threads).map(function, items))
-
-
-_OF_THIS_THREAD = local()
-
-
-def _mark() -> None:
-    _OF_THIS_THREAD.works = True
-
-
-@cache
-def _kept_pool(threads: int) -> ThreadPoolExecutor:
-    return ThreadPoolExecutor(threads, initializer=_mark)
-
-
-# A forked process has no threads but the one that forked.
-os.register_at_fork(after_in_child=_kept_pool.cache_clear)
 
 
 def block_edges(
@@ -250,7 +210,7 @@ class Corpus:
         self._threads = threads
         self._lock = Lock()
         self._streams: dict[int, list[Stream]] = {}
-        self.known = [int(np.count_nonzero(c.bases != MISSING)) for c in self.contigs]
+        self.known = [count_known(c.bases) for c in self.contigs]
 
     @property
     def bases(self) -> int:

@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hmmseg.inference.exact import impossible
-from hmmseg.inference.streams import in_threads
+from hmmseg.inference.threads import in_threads
 from hmmseg.kernels.surprise import log_table, surprise
 from hmmseg.kernels.tokens import base_codes
 from hmmseg.model import Model

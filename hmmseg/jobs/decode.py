@@ -11,6 +11,7 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from hmmseg.errors import ModelError, OutputError, UsageError
+from hmmseg.inference.threads import aside
 from hmmseg.jobs.sources import Sources
 from hmmseg.model import load_model
 from hmmseg.outputs import PROVENANCE, check_target, whole_folder, write_json
@@ -244,6 +245,10 @@ class RegionCaller(Protocol):
     def states(self) -> list[int]:
         """Indices of the reported states."""
 
+    @property
+    def threads(self) -> int:
+        """Threads to use."""
+
     def call(self, contig: Contig, watch: Watch) -> Calls | None:
         """Call regions, and hand posteriors to ``watch``; None if the contig cannot be called."""
 
@@ -282,7 +287,7 @@ class Run:
                 self._record(record, contigs)
                 progress.advance(len(record), record.name)
         for track in self._tracks.values():
-            track.finish(self._lengths)
+            track.finish(self._lengths, self._caller.threads)
         result = Summary(
             record_lengths=self._lengths,
             sequences=self._sequences,
@@ -296,7 +301,7 @@ class Run:
 
     def _record(self, record: Record, contigs: list[Contig]) -> None:
         self._lengths[record.name] = len(record)
-        self._sequences[record.name] = checksums(record.bases)
+        sequence = aside(checksums, record.bases, self._caller.threads)
         if record.circular:
             self._circular.append(record.name)
         if not contigs:
@@ -316,6 +321,7 @@ class Run:
             starts, ends = table["start"], table["end"]
             self._tables.append(table)
         self._counts.append(counts_of_record(record, starts, ends))
+        self._sequences[record.name] = sequence()
 
     def _follower(self, contig: Contig) -> Watch:
         """Return what takes the posteriors of a contig to the tracks."""

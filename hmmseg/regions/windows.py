@@ -18,7 +18,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hmmseg.errors import ModelError, UsageError
-from hmmseg.inference.streams import in_threads
+from hmmseg.inference.threads import in_threads
 from hmmseg.kernels.elementary import LN2, log_array
 from hmmseg.kernels.tokens import base_codes
 from hmmseg.kernels.windows import (

@@ -24,10 +24,12 @@ __all__ = [
     "LOWER",
     "MISSING",
     "SYMBOLS",
+    "count_known",
     "decode",
     "encode",
     "foreign_letter",
     "letter_kinds",
+    "letters",
     "reverse_complement",
     "text_chunks",
 ]
@@ -66,6 +68,7 @@ def _tables() -> tuple[bytes, bytes]:
 
 
 _CODES, _KINDS = _tables()
+_LETTERS = b"ACGTN" + b"?" * 251
 
 
 def text_chunks(text: bytes | str) -> Iterator[tuple[int, bytes]]:
@@ -140,7 +143,21 @@ def encode(text: bytes | str) -> npt.NDArray[np.uint8]:
 
 def decode(codes: npt.NDArray[np.uint8]) -> str:
     """Turn codes (uint8[position]) into upper-case letters, missing bases into N."""
-    return codes.tobytes().translate(b"ACGTN" + b"?" * 251).decode("ascii")
+    return letters(codes).decode("ascii")
+
+
+def letters(codes: npt.NDArray[np.uint8]) -> bytes:
+    """Do as :func:`decode` does; return ASCII."""
+    return codes.tobytes().translate(_LETTERS)
+
+
+def count_known(codes: npt.NDArray[np.uint8]) -> int:
+    """Return how many codes (uint8[position]) are of A C G T."""
+    # Piece by piece: a mask of a whole record costs more than the counting.
+    return sum(
+        int(np.count_nonzero(codes[at : at + CHUNK] != MISSING))
+        for at in range(0, len(codes), CHUNK)
+    )
 
 
 def reverse_complement(codes: npt.NDArray[np.uint8]) -> npt.NDArray[np.uint8]:

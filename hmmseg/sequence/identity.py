@@ -7,7 +7,7 @@ from typing import NamedTuple
 import numpy as np
 import numpy.typing as npt
 
-from hmmseg.sequence.alphabet import CHUNK, decode, reverse_complement
+from hmmseg.sequence.alphabet import CHUNK, letters, reverse_complement
 from hmmseg.sequence.reading import Record
 
 __all__ = ["Checksums", "KnownRecord", "checksums", "record_digest", "strand_digest"]
@@ -55,7 +55,7 @@ def checksums(bases: Bases) -> Checksums:
     for other in (False, True):
         digest = hashlib.sha256()
         for piece in _pieces(bases, other):
-            digest.update(decode(piece).encode("ascii"))
+            digest.update(letters(piece))
         found.append(digest.hexdigest())
     return Checksums(*found)
 

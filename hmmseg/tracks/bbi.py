@@ -38,6 +38,7 @@ __all__ = [
     "Items",
     "name_types",
     "pack_section",
+    "packed_block",
     "unpack_section",
     "write_block",
     "write_index",
@@ -114,11 +115,15 @@ def name_types(size: int) -> tuple[np.dtype[np.void], np.dtype[np.void]]:
     return leaf, np.dtype([("key", f"S{size}"), ("offset", "<u8")])
 
 
+def packed_block(content: bytes) -> bytes:
+    """Return the content of a block compressed."""
+    return zlib.compress(content, _EFFORT)
+
+
 def write_block(
-    file: BinaryIO, extent: tuple[int, int, int, int], content: bytes
+    file: BinaryIO, extent: tuple[int, int, int, int], packed: bytes
 ) -> tuple[int, ...]:
-    """Write `content` compressed, and return the entry of the index (BLOCK) for it."""
-    packed = zlib.compress(content, _EFFORT)
+    """Write a compressed block, and return the entry of the index (BLOCK) for it."""
     entry = (*extent, file.tell(), len(packed))
     file.write(packed)
     return entry

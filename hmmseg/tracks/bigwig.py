@@ -83,6 +83,8 @@ class PosteriorTrack:
         The file to write.
     record_lengths : mapping
         Length of each record in bases, in the order in which runs will come.
+    threads : int
+        Threads to use; the bytes do not depend on it.
 
     Raises
     ------
@@ -91,7 +93,9 @@ class PosteriorTrack:
         written.
     """
 
-    def __init__(self, path: str | Path, record_lengths: Mapping[str, int]) -> None:
+    def __init__(
+        self, path: str | Path, record_lengths: Mapping[str, int], threads: int = 1
+    ) -> None:
         for name, length in record_lengths.items():
             if not 1 <= length <= MAX_LENGTH:
                 raise OutputError(f"{path}: bigWig cannot hold {name} of {length} bases")
@@ -103,7 +107,7 @@ class PosteriorTrack:
         self._record = ""
         self._pending = _no_runs()
         with self._explained():
-            self._file = BigWigWriter(path, self.record_lengths)
+            self._file = BigWigWriter(path, self.record_lengths, threads)
 
     def add(
         self,

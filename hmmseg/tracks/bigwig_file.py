@@ -3,14 +3,17 @@
 import mmap
 import struct
 import zlib
-from collections.abc import Iterable, Iterator, Mapping
+from collections import deque
+from collections.abc import Callable, Iterable, Iterator, Mapping
 from contextlib import suppress
 from functools import cached_property
 from pathlib import Path
+from typing import BinaryIO
 
 import numpy as np
 from numpy.typing import NDArray
 
+from hmmseg.inference.threads import aside
 from hmmseg.tracks import bbi, zoom
 from hmmseg.tracks.bbi import BLOCK, HEADER, RUN, SUMMARY, ZOOM, ZOOM_HEADER, Items
 
@@ -26,6 +29,33 @@ LEVEL_FACTOR = 4
 # About how many runs and bins are taken at once: tens of megabytes.
 PIECES_AT_ONCE = 2**17
 
+# Blocks that are compressed or wait to be written, for each thread.
+_WAITING = 8
+
+
+class _Packing:
+    """Compresses blocks, in other threads if there are any, and writes them in their order."""
+
+    def __init__(self, file: BinaryIO, threads: int) -> None:
+        self._file, self._threads = file, threads
+        self._waiting: deque[tuple[tuple[int, int, int, int], Callable[[], bytes]]] = deque()
+        self._entries: list[tuple[int, ...]] = []
+
+    def add(self, extent: tuple[int, int, int, int], content: bytes) -> None:
+        self._waiting.append((extent, aside(bbi.packed_block, content, self._threads)))
+        if len(self._waiting) > _WAITING * self._threads:
+            self._write()
+
+    def finish(self) -> Items:
+        """Write what waits; return the entries of the index of all blocks."""
+        while self._waiting:
+            self._write()
+        return np.array(self._entries, dtype=BLOCK)
+
+    def _write(self) -> None:
+        extent, packed = self._waiting.popleft()
+        self._entries.append(bbi.write_block(self._file, extent, packed()))
+
 
 class BigWigWriter:
     """Writes runs of records, given in order, and then what else a bigWig file has.
@@ -38,17 +68,21 @@ class BigWigWriter:
         The file, which is overwritten.
     record_lengths : mapping
         Length of each record in bases, in the order in which runs will come; not empty.
+    threads : int
+        Threads to use.
     """
 
-    def __init__(self, path: str | Path, record_lengths: Mapping[str, int]) -> None:
+    def __init__(
+        self, path: str | Path, record_lengths: Mapping[str, int], threads: int = 1
+    ) -> None:
         self.runs = 0
         self.bases = 0
         self.total = 0.0
         self._squares, self._lowest, self._highest = 0.0, np.inf, -np.inf
         self._longest = max(record_lengths.values())
-        self._blocks: list[tuple[int, ...]] = []
-        self._path = path
+        self._path, self._threads = path, threads
         self._file = open(path, "wb")  # noqa: SIM115  (closed by finish)
+        self._packing = _Packing(self._file, threads)
         self._summary_at = HEADER.size + bbi.MAX_LEVELS * ZOOM_HEADER.size
         self._file.write(bytes(self._summary_at + SUMMARY.size))
         self._names_at = self._file.tell()
@@ -59,7 +93,7 @@ class BigWigWriter:
     def write_runs(self, record: int, runs: Items) -> None:
         """Write at most `RUNS_IN_BLOCK` runs (RUN[run]) of the record of that number."""
         extent = (record, int(runs["start"][0]), record, int(runs["end"][-1]))
-        self._blocks.append(bbi.write_block(self._file, extent, bbi.pack_section(record, runs)))
+        self._packing.add(extent, bbi.pack_section(record, runs))
         lengths, values = runs["end"] - runs["start"], runs["value"].astype(np.float64)
         self.runs += len(runs)
         self.bases += int(lengths.sum(dtype=np.int64))
@@ -70,7 +104,7 @@ class BigWigWriter:
 
     def finish(self) -> None:
         """Write index, zoom levels, summary and header, and close the file."""
-        blocks = np.array(self._blocks, dtype=BLOCK)
+        blocks = self._packing.finish()
         index_at = bbi.write_index(self._file, blocks, RUNS_IN_BLOCK)
         levels = self._write_levels(blocks) if self.runs > FEW else []
         self._file.write(struct.pack("<I", bbi.MAGIC))
@@ -113,13 +147,13 @@ class BigWigWriter:
         return levels
 
     def _write_rows(self, batches: Iterable[Items]) -> tuple[Items, int]:
-        entries, count = [], 0
+        packing, count = _Packing(self._file, self._threads), 0
         for rows in _in_blocks(batches):
             first, last = rows[0], rows[-1]
             extent = (first["record"], first["start"], last["record"], last["end"])
-            entries.append(bbi.write_block(self._file, extent, rows.astype(ZOOM).tobytes()))
+            packing.add(extent, rows.astype(ZOOM).tobytes())
             count += len(rows)
-        return np.array(entries, dtype=BLOCK), count
+        return packing.finish(), count
 
     def _pieces(self, blocks: Items, size: int) -> Iterator[Items]:
         for records, runs in in_batches(map(bbi.unpack_section, self._read_back(blocks)), size):

@@ -85,13 +85,15 @@ class SpooledTrack:
         self._segments.append(_Segment(record, int(starts[0]), self._written, len(runs)))
         self._written += len(runs)
 
-    def finish(self, record_lengths: Mapping[str, int]) -> None:
+    def finish(self, record_lengths: Mapping[str, int], threads: int = 1) -> None:
         """Write the bigWig.
 
         Parameters
         ----------
         record_lengths
             Length of every record in bases, in order.
+        threads
+            Threads to use; the bytes do not depend on it.
 
         Raises
         ------
@@ -100,7 +102,7 @@ class SpooledTrack:
         """
         rank = {name: number for number, name in enumerate(record_lengths)}
         ordered = sorted(self._segments, key=lambda segment: (rank[segment.record], segment.start))
-        with PosteriorTrack(self._path, record_lengths) as track:
+        with PosteriorTrack(self._path, record_lengths, threads) as track:
             for record, runs in self._pieces(ordered):
                 track.add(record, runs["start"], runs["end"], runs["level"] / LEVELS)
         self._spool.unlink()

@@ -6,7 +6,8 @@ from dataclasses import dataclass
 import numpy as np
 
 from hmmseg.errors import TrainingError
-from hmmseg.inference.streams import Corpus, in_threads
+from hmmseg.inference.streams import Corpus
+from hmmseg.inference.threads import in_threads
 from hmmseg.model import Model
 from hmmseg.training.baum_welch import Fit, fit
 from hmmseg.training.chains import fit_chain

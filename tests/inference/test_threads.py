@@ -6,7 +6,7 @@ import time
 
 import pytest
 
-from hmmseg.inference.streams import in_threads
+from hmmseg.inference.threads import aside, in_threads
 
 
 @pytest.mark.parametrize("threads", [1, 2, 3])
@@ -70,3 +70,16 @@ def test_a_forked_process_has_threads_of_its_own() -> None:
     os.kill(child, 9)
     os.waitpid(child, 0)
     pytest.fail("the forked process waits for threads that it does not have")
+
+
+@pytest.mark.parametrize("threads", [1, 2])
+def test_something_done_aside(threads: int) -> None:
+    assert aside(abs, -3, threads)() == 3
+    failed = None
+    try:
+        failed = aside(lambda n: 1 // n, 0, threads)
+    except ZeroDivisionError:
+        assert threads == 1
+    if failed is not None:
+        with pytest.raises(ZeroDivisionError):
+            failed()
