@@ -19,6 +19,7 @@ from hmmseg.outputs import PROVENANCE, sha256_of, whole_file, write_json
 __all__ = [
     "FORMAT",
     "VERSION",
+    "earlier_document",
     "is_current",
     "is_intact",
     "provenance_path",
@@ -105,6 +106,34 @@ def is_current(
     if json.loads(json.dumps(expected)) != {k: v for k, v in found.items() if k != "outputs"}:
         return False
     return is_intact(result, found)
+
+
+def earlier_document(
+    name: str,
+    folder: str | Path,
+    command: str,
+    parameters: Mapping[str, Any],
+    seed: int | None,
+    inputs: Sequence[str | Path],
+) -> dict[str, Any] | None:
+    """Return the JSON document of a result that is what the same call would make again.
+
+    Parameters
+    ----------
+    name
+        Of the document in the result's folder.
+    folder, command, parameters, seed, inputs
+        As for `is_current`.
+
+    Returns
+    -------
+    dict or None
+        None if there is no such result.
+    """
+    if not is_current(folder, command, parameters, seed, inputs):
+        return None
+    found: dict[str, Any] = json.loads((Path(folder) / name).read_bytes())
+    return found
 
 
 def is_intact(folder_or_file: str | Path, document: Mapping[str, Any]) -> bool:

@@ -9,7 +9,7 @@ from numpy.typing import NDArray
 from hmmseg.kernels.sampling import draw
 from hmmseg.model import Model
 
-__all__ = ["Drawn", "simulate"]
+__all__ = ["Drawn", "drawn_from", "simulate"]
 
 _CHUNK = 1 << 18
 
@@ -49,19 +49,33 @@ def simulate(model: Model, lengths: Sequence[int], seed: int) -> Iterator[Drawn]
     Drawn
         One for each length.
     """
+    for number, length in enumerate(lengths):
+        seeds = np.random.SeedSequence([seed, number])
+        yield drawn_from(model, length, np.random.Generator(np.random.PCG64(seeds)))
+
+
+def drawn_from(model: Model, length: int, random: np.random.Generator) -> Drawn:
+    """Draw one sequence.
+
+    Parameters
+    ----------
+    model
+        Where it comes from.
+    length
+        In bases.
+    random
+        Source of uniform numbers.
+    """
     machine = model.machine
     following = np.cumsum(np.vstack([machine.transitions, machine.start_probabilities]), axis=1)
     emissions = np.cumsum(machine.emissions[:, :-1].reshape(machine.states, -1, 4), axis=2)
-    owners = machine.owners.astype(np.uint8)
-    for number, length in enumerate(lengths):
-        random = np.random.Generator(np.random.PCG64(np.random.SeedSequence([seed, number])))
-        drawn = Drawn(np.empty(length, np.uint8), np.empty(length, np.uint8))
-        memory = np.array([machine.states, 0, 0], dtype=np.int64)
-        for begin in range(0, length, _CHUNK):
-            piece = slice(begin, min(begin + _CHUNK, length))
-            uniforms = random.random((piece.stop - piece.start, 2))
-            draw(
-                following, emissions, model.order, memory, uniforms,
-                drawn.path[piece], drawn.bases[piece],
-            )  # fmt: skip
-        yield drawn._replace(path=owners[drawn.path])
+    drawn = Drawn(np.empty(length, np.uint8), np.empty(length, np.uint8))
+    memory = np.array([machine.states, 0, 0], dtype=np.int64)
+    for begin in range(0, length, _CHUNK):
+        piece = slice(begin, min(begin + _CHUNK, length))
+        uniforms = random.random((piece.stop - piece.start, 2))
+        draw(
+            following, emissions, model.order, memory, uniforms,
+            drawn.path[piece], drawn.bases[piece],
+        )  # fmt: skip
+    return drawn._replace(path=machine.owners.astype(np.uint8)[drawn.path])

@@ -266,14 +266,7 @@ def orders(
     metavar="B",
     help="Bootstrap replicates.",
 )
-@click.option(
-    "--seed",
-    type=click.IntRange(0),
-    default=1,
-    show_default=True,
-    metavar="S",
-    help="Of all random draws.",
-)
+@options.seed
 @options.sequence_options()
 @options.threads
 @options.force

@@ -48,10 +48,7 @@ __all__ = ["calibrate"]
     show_default=True,
     help="Whether the nulls that do not judge are drawn, too.",
 )
-@click.option(
-    "--seed", type=click.IntRange(0), default=1, show_default=True, metavar="S",
-    help="Of all random draws.",
-)  # fmt: skip
+@options.seed
 @click.option("--exclude", metavar="BED", help="The intervals that the calls left out.")
 @options.threads
 @options.force

@@ -65,14 +65,7 @@ def survey(sources: Any, output: str, force: bool) -> None:
     metavar="R",
     help="Fits from different starts.  [default: 5; 1 with a start or labels]",
 )
-@click.option(
-    "--seed",
-    type=click.IntRange(0),
-    default=1,
-    show_default=True,
-    metavar="S",
-    help="Of everything random.",
-)
+@options.seed
 @click.option(
     "--max-iterations",
     type=click.IntRange(0),

@@ -91,6 +91,11 @@ force = click.option("--force", is_flag=True, help="Replace an earlier result.")
 output = click.option("--output", required=True, metavar="DIR", help="Folder to write.")
 model = click.option("--model", required=True, metavar="MODEL.json", help="Model to use.")
 
+seed = click.option(
+    "--seed", type=click.IntRange(0), default=1, show_default=True, metavar="S",
+    help="Of all random draws.",
+)  # fmt: skip
+
 train_bases = click.option(
     "--train-bases", type=click.IntRange(0), default=50_000_000, show_default=True, metavar="N",
     help="Train on a random sample of about so many bases; 0 for everything.",

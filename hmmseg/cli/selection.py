@@ -73,14 +73,7 @@ class _Numbers(click.ParamType):
     metavar="R",
     help="Fits of each model from different starts.",
 )
-@click.option(
-    "--seed",
-    type=click.IntRange(0),
-    default=1,
-    show_default=True,
-    metavar="S",
-    help="Of everything random.",
-)
+@options.seed
 @click.option(
     "--max-iterations",
     type=click.IntRange(1),

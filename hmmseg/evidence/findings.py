@@ -1,6 +1,7 @@
 """What a trained model found, state by state, in numbers and in words."""
 
 from dataclasses import dataclass
+from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -9,7 +10,15 @@ from hmmseg.kernels.elementary import LN2, log_array
 from hmmseg.model import Model
 from hmmseg.model.contexts import joint_levels, reverse_complement_words
 
-__all__ = ["StateFinding", "describe", "expected_lengths", "in_bases", "shares"]
+__all__ = [
+    "StateFinding",
+    "WordsBeside",
+    "describe",
+    "expected_lengths",
+    "in_bases",
+    "shares",
+    "words_beside",
+]
 
 _MOST_WORDS = 3
 _ENRICHED = 1.05
@@ -120,29 +129,58 @@ def _cpg(model: Model, state: int) -> float | None:
     return float(pairs[4 * 1 + 2]) / product if product > 0 else None
 
 
-def _words(model: Model, state: int, share: NDArray[np.float64]) -> tuple[tuple[str, float], ...]:
-    """Return the words that tell most for a state and against the background.
+class WordsBeside(NamedTuple):
+    """Words of ``order + 1`` bases in a state and in what it is compared with.
+
+    Attributes
+    ----------
+    names : list of str
+        A word and its reverse complement are one where the model is symmetric.
+    own, rest : float64[word]
+        Probabilities, none of them 0.
+    """
+
+    names: list[str]
+    own: NDArray[np.float64]
+    rest: NDArray[np.float64]
+
+
+def words_beside(model: Model, state: int, share: NDArray[np.float64]) -> WordsBeside:
+    """Compare a state's words with those of the background.
 
     A state that is background itself is compared with the whole sequence.
+
+    Parameters
+    ----------
+    model
+        The model.
+    state
+        Index of the state.
+    share
+        float64[state]: how much of the sequence each state holds.
     """
-    if model.states == 1:
-        return ()
     others = list(model.background) if model.reported[state] else []
     others = others or list(range(model.states))
     weights = share[others] if share[others].sum() > 0 else np.ones(len(others))
     rest = (weights[:, None] * model.joint[others]).sum(axis=0) / weights.sum()
-    own = model.joint[state].copy()
-    mirror = reverse_complement_words(model.order + 1)
+    own = model.joint[state]
     names = [_letters(word, model.order + 1) for word in range(own.size)]
-    known = np.arange(own.size)
+    words = np.arange(own.size)
     if model.symmetric:
-        known = known[known <= mirror]
+        mirror = reverse_complement_words(model.order + 1)
+        words = words[words <= mirror]
         names = [n if mirror[i] == i else f"{n}/{names[mirror[i]]}" for i, n in enumerate(names)]
-    possible = known[(own[known] > 0) & (rest[known] > 0)]
-    ratio = np.ones(own.size)
-    ratio[possible] = own[possible] / rest[possible]
-    telling = own * log_array(ratio) / LN2
-    order = possible[np.argsort(-telling[possible], kind="stable")][:_MOST_WORDS]
+    words = words[(own[words] > 0) & (rest[words] > 0)]
+    return WordsBeside([names[word] for word in words], own[words], rest[words])
+
+
+def _words(model: Model, state: int, share: NDArray[np.float64]) -> tuple[tuple[str, float], ...]:
+    """Return the words that tell most for a state and against the background."""
+    if model.states == 1:
+        return ()
+    names, own, rest = words_beside(model, state, share)
+    ratio = own / rest
+    order = np.argsort(-own * log_array(ratio) / LN2, kind="stable")[:_MOST_WORDS]
     return tuple((names[i], float(ratio[i])) for i in order if ratio[i] >= _ENRICHED)
 
 

@@ -22,12 +22,12 @@ from numpy.typing import NDArray
 from hmmseg.evidence.drift import WINDOW, Drift
 from hmmseg.kernels.drifting import draw_chain
 from hmmseg.kernels.elementary import exp
-from hmmseg.kernels.sampling import draw
 from hmmseg.model import Model
 from hmmseg.model.chain import ChainMachine, chain_machine
 from hmmseg.model.parameters import FREE, MAX_ORDER
 from hmmseg.sequence.alphabet import MISSING
 from hmmseg.sequence.contigs import Contig
+from hmmseg.simulate import drawn_from
 
 __all__ = [
     "NULLS",
@@ -171,17 +171,7 @@ class BackgroundNull:
 
     def drawn(self, piece: Piece, random: np.random.Generator) -> Contig:
         """Return a piece with bases drawn."""
-        machine = self.model.machine
-        rows = np.vstack([machine.transitions, machine.start_probabilities])
-        following = np.cumsum(rows, axis=1)
-        emissions = np.cumsum(machine.emissions[:, :-1].reshape(machine.states, -1, 4), axis=2)
-        bases, path = np.empty(piece.length, np.uint8), np.empty(_CHUNK, np.uint8)
-        memory = np.array([machine.states, 0, 0], dtype=np.int64)
-        for begin in range(0, piece.length, _CHUNK):
-            part = bases[begin : begin + _CHUNK]
-            uniforms = random.random((len(part), 2))
-            draw(following, emissions, self.model.order, memory, uniforms, path[: len(part)], part)
-        return piece.filled(bases)
+        return piece.filled(drawn_from(self.model, piece.length, random).bases)
 
 
 def null_order(order: int) -> int:

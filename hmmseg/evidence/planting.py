@@ -7,16 +7,11 @@ from numpy.typing import NDArray
 
 from hmmseg.kernels.sampling import draw
 from hmmseg.model import Model
+from hmmseg.regions.odds import rest_of
 
-__all__ = ["planted", "rest_of"]
+__all__ = ["planted"]
 
 _LONGEST_CONTIG = 1 << 19
-
-
-def rest_of(model: Model, state: int) -> list[int]:
-    """Return the states a region is told from: background, or all others where there is none."""
-    others = [i for i in model.background if i != state]
-    return others or [i for i in range(model.states) if i != state]
 
 
 def planted(
@@ -27,7 +22,7 @@ def planted(
     Parameters
     ----------
     model
-        The model; outside regions it keeps to the states of :func:`rest_of`.
+        The model; outside regions it keeps to the states of :func:`~hmmseg.regions.odds.rest_of`.
     state
         The regions' state.
     length, flank

@@ -15,13 +15,13 @@ from numpy.typing import NDArray
 
 from hmmseg.errors import ModelError
 from hmmseg.evidence.calibration import fitted_scale
-from hmmseg.evidence.planting import planted, rest_of
+from hmmseg.evidence.planting import planted
 from hmmseg.inference.posterior import posterior
 from hmmseg.kernels.elementary import LN2, exp, log, log_array
 from hmmseg.model import Model
 from hmmseg.model.chain import ChainMachine
 from hmmseg.model.contexts import code_offset, missing_code
-from hmmseg.regions.odds import LogOdds
+from hmmseg.regions.odds import LogOdds, rest_of
 from hmmseg.sequence.contigs import Contig
 
 __all__ = [

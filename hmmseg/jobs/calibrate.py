@@ -1,6 +1,5 @@
 """The command ``calibrate``: how sure are the regions that were called."""
 
-import json
 from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
@@ -18,7 +17,7 @@ from hmmseg.jobs.refit import Refit, refit_of, trained_on
 from hmmseg.model import Model, load_model
 from hmmseg.outputs import PROVENANCE, check_target, sha256_of, whole_folder
 from hmmseg.progress import Progress
-from hmmseg.provenance import is_current, write_provenance
+from hmmseg.provenance import earlier_document, write_provenance
 from hmmseg.regions.calling import Caller
 from hmmseg.regions.odds import LogOdds
 
@@ -128,8 +127,8 @@ def calibrate(  # noqa: PLR0913 - as many as the command has
         "q": plan.q,
         "others": plan.others,
     }
-    if reuse and is_current(output, "calibrate", parameters, plan.seed, inputs):
-        earlier: dict[str, Any] = json.loads((Path(output) / "calibration.json").read_bytes())
+    origin = ("calibrate", parameters, plan.seed, inputs)
+    if reuse and (earlier := earlier_document("calibration.json", output, *origin)) is not None:
         return earlier
     check_target(output, force)
     called.check_model(model_path, model)
@@ -141,7 +140,7 @@ def calibrate(  # noqa: PLR0913 - as many as the command has
         )  # fmt: skip
         document = write_calibration(folder, outcome, called, said)
         written = sorted(path for path in folder.iterdir() if path.name != PROVENANCE)
-        write_provenance(folder, "calibrate", parameters, plan.seed, inputs, written)
+        write_provenance(folder, *origin, written)
     return document
 
 

@@ -2,6 +2,7 @@
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from functools import cached_property
 from pathlib import Path
 from typing import Any
 
@@ -78,6 +79,12 @@ class Called:
         """Merging, shortest length, and where ends stand."""
         return Filters(*(int(self.settings[name]) for name in Filters._fields))
 
+    @cached_property
+    def _rows(self) -> Mapping[str, list[int]]:
+        """Rows of the table by their record, found once for all records."""
+        indices = self.table.groupby("record", sort=False).indices
+        return {str(name): [int(row) for row in rows] for name, rows in indices.items()}
+
     @property
     def bases(self) -> int:
         """How many were decoded."""
@@ -139,7 +146,7 @@ class Called:
         if record.circular != self.records[name].circular:
             raise self._other("another sequence", f"record {name} has another topology here")
         states = list(self.summary["regions"])
-        rows = self.table[self.table["record"] == name].head(_ENOUGH_CHECKED)
+        rows = self.table.iloc[self._rows.get(name, [])[:_ENOUGH_CHECKED]]
         columns = ("region_id", "state", "start", "length", "log_odds_bits")
         for region, state, start, size, bits in zip(*(rows[c] for c in columns), strict=True):
             places = [((start - c.start) % c.record_length, c) for c in contigs]

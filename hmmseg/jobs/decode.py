@@ -1,6 +1,5 @@
 """The command ``decode``: call regions and write posteriors."""
 
-import json
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from pathlib import Path
@@ -16,7 +15,7 @@ from hmmseg.jobs.sources import Sources
 from hmmseg.model import load_model
 from hmmseg.outputs import PROVENANCE, check_target, whole_folder, write_json
 from hmmseg.progress import Progress, warn
-from hmmseg.provenance import is_current, write_provenance
+from hmmseg.provenance import earlier_document, write_provenance
 from hmmseg.regions.calling import PATH, POSTERIOR, Caller, Calls
 from hmmseg.regions.composition import (
     WORDS,
@@ -158,15 +157,14 @@ def decode(  # noqa: PLR0913 - as many as the command has
         "threshold": threshold if decoder == POSTERIOR else None,
         **filters._asdict(),
     }
-    inputs = [*sources.files(), model_path]
-    if reuse and is_current(output, "decode", parameters, None, inputs):
-        earlier: dict[str, Any] = json.loads((Path(output) / "summary.json").read_bytes())
+    origin = ("decode", parameters, None, [*sources.files(), model_path])
+    if reuse and (earlier := earlier_document("summary.json", output, *origin)) is not None:
         return earlier
     check_target(output, force)
     with whole_folder(output, force=force) as folder:
         summary = write_result(folder, *Run(caller, folder).over(sources))
         written = sorted(path for path in folder.iterdir() if path.name != PROVENANCE)
-        write_provenance(folder, "decode", parameters, None, inputs, written)
+        write_provenance(folder, *origin, written)
     return summary
 
 

@@ -1,13 +1,12 @@
 """The command ``survey``: describe an assembly before anything is modelled."""
 
-import json
 from collections.abc import Iterator
 from pathlib import Path
 from typing import Any
 
 from hmmseg.jobs.sources import Sources
 from hmmseg.outputs import check_target, whole_folder, write_json
-from hmmseg.provenance import is_current, write_provenance
+from hmmseg.provenance import earlier_document, write_provenance
 from hmmseg.sequence.reading import Record
 from hmmseg.sequence.survey import survey as survey_records
 from hmmseg.sequence.survey import to_dict, to_tsv
@@ -39,9 +38,9 @@ def survey(sources: Sources, output: str, force: bool, reuse: bool = False) -> d
     dict
         The document ``survey.json``.
     """
-    if reuse and is_current(output, "survey", sources.parameters(), None, sources.files()):
-        document: dict[str, Any] = json.loads((Path(output) / "survey.json").read_bytes())
-        return document
+    origin = ("survey", sources.parameters(), None, sources.files())
+    if reuse and (earlier := earlier_document("survey.json", output, *origin)) is not None:
+        return earlier
     check_target(output, force)
     with whole_folder(output, force=force) as folder:
         found = survey_records(_tracked(sources, folder / GC_TRACK), sources.gap_min)
@@ -49,7 +48,7 @@ def survey(sources: Sources, output: str, force: bool, reuse: bool = False) -> d
         (folder / "survey.tsv").write_text(to_tsv(found), encoding="utf-8")
         write_json(folder / "survey.json", document)
         written = [folder / name for name in (GC_TRACK, "survey.json", "survey.tsv")]
-        write_provenance(folder, "survey", sources.parameters(), None, sources.files(), written)
+        write_provenance(folder, *origin, written)
     return document
 
 

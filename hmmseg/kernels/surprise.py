@@ -5,6 +5,7 @@ Four logarithms a base are most of the work, so they are taken by a table.
 
 import numpy as np
 
+from hmmseg.kernels.arrays import copy
 from hmmseg.kernels.compiling import kernel
 from hmmseg.kernels.elementary import log, log_array
 
@@ -79,7 +80,7 @@ def surprise(codes, transitions, emissions, started, forward, table, sums):
         started = True
         code = np.int64(codes[at])
         if code == missing:
-            forward[:] = stepped
+            copy(stepped, forward)
             continue
         # Codes of the four bases behind one context stand together.
         first = code - code % 4

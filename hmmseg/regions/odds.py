@@ -12,10 +12,16 @@ from hmmseg.model.contexts import code_dtype
 from hmmseg.sequence.alphabet import reverse_complement
 from hmmseg.sequence.contigs import Contig
 
-__all__ = ["LogOdds"]
+__all__ = ["LogOdds", "rest_of"]
 
 _MOST_BITS = 1000.0
 """Stands for infinity, so that sums stay numbers."""
+
+
+def rest_of(model: Model, state: int) -> list[int]:
+    """Return the states a region is told from: background, or all others where there is none."""
+    others = [i for i in model.background if i != state]
+    return others or [i for i in range(model.states) if i != state]
 
 
 class LogOdds:
@@ -39,8 +45,7 @@ class LogOdds:
 
     def _against_background(self, state: int) -> NDArray[np.float64]:
         model = self._model
-        others = [i for i in model.background if i != state]
-        others = others or [i for i in range(model.states) if i != state]
+        others = rest_of(model, state)
         if not others:
             return np.zeros(model.emissions.shape[1])
         shares = model.shares[others]

@@ -6,9 +6,9 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from hmmseg.evidence.findings import words_beside
 from hmmseg.kernels.elementary import LN2, log_array
 from hmmseg.model import Model
-from hmmseg.model.contexts import reverse_complement_words
 from hmmseg.report.colours import GREY, INK, colour_of
 from hmmseg.report.drawing import NARROW, WIDE, blank, in_style, legend
 
@@ -36,28 +36,11 @@ def against_background(model: Model, state: int) -> list[tuple[str, float]]:
         symmetric; at most 16, those that tell most, highest ratio first. A state that is
         background is compared with the whole sequence.
     """
-    share = model.shares
-    others = list(model.background) if model.reported[state] else []
-    others = others or list(range(model.states))
-    weights = share[others] if share[others].sum() > 0 else np.ones(len(others))
-    rest = (weights[:, None] * model.joint[others]).sum(axis=0) / weights.sum()
-    own = model.joint[state]
-    words = np.arange(own.size)
-    names = [_letters(word, model.order + 1) for word in words]
-    if model.symmetric:
-        mirror = reverse_complement_words(model.order + 1)
-        words = words[words <= mirror]
-        names = [n if mirror[i] == i else f"{n}/{names[mirror[i]]}" for i, n in enumerate(names)]
-    words = words[(own[words] > 0) & (rest[words] > 0)]
-    bits = log_array(own[words] / rest[words]) / LN2
-    telling = (own[words] - rest[words]) * bits
-    most = np.argsort(-telling, kind="stable")[:_MOST_WORDS]
+    names, own, rest = words_beside(model, state, model.shares)
+    bits = log_array(own / rest) / LN2
+    most = np.argsort(-(own - rest) * bits, kind="stable")[:_MOST_WORDS]
     ordered = most[np.argsort(-bits[most], kind="stable")]
-    return [(names[words[i]], float(bits[i])) for i in ordered]
-
-
-def _letters(word: int, length: int) -> str:
-    return "".join("ACGT"[(word >> (2 * place)) & 3] for place in reversed(range(length)))
+    return [(names[i], float(bits[i])) for i in ordered]
 
 
 @in_style

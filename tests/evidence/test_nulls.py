@@ -30,7 +30,7 @@ from hmmseg.regions.calling import Caller
 from hmmseg.regions.intervals import Filters
 from hmmseg.sequence.contigs import Contig
 from hmmseg.training.chains import fit_chain
-from tests.reference import plain_chain_bases
+from tests.reference_regions import plain_chain_bases
 from tests.strategies import model_of, random_parameters
 
 

@@ -15,7 +15,7 @@ from hmmseg.evidence.significance import (
     thresholds,
     upper_counts,
 )
-from tests.reference import plain_significance
+from tests.reference_regions import plain_significance
 
 SCORES = st.lists(st.integers(-5, 30).map(float), max_size=30)
 

@@ -22,7 +22,7 @@ from hmmseg.regions.composition import (
 )
 from hmmseg.sequence.alphabet import reverse_complement
 from hmmseg.sequence.reading import Record, record_from_text
-from tests.reference import plain_pairs
+from tests.reference_regions import plain_pairs
 
 SHOWN = 1e-9
 """Far below the four decimals that are written."""

@@ -14,7 +14,8 @@ from hmmseg.regions.ends import TAIL, EndSearch, limits_of_regions, odds_of_stay
 from hmmseg.regions.intervals import Filters, StateIntervals, over_threshold
 from hmmseg.sequence.contigs import Contig
 from hmmseg.simulate import simulate
-from tests.reference import Piece, brute_reach, plain_limits, plain_staying
+from tests.reference import Piece
+from tests.reference_regions import brute_reach, plain_limits, plain_staying
 from tests.regions.known_ends import CLEAR, MODELS, truth_within
 from tests.strategies import contig_of, model_of, random_bases, random_parameters
 

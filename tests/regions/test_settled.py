@@ -10,7 +10,7 @@ from hmmseg.regions.ends import EndSearch, settled
 from hmmseg.regions.intervals import Filters, StateIntervals
 from hmmseg.sequence.contigs import Contig
 from hmmseg.simulate import simulate
-from tests.reference import plain_settled
+from tests.reference_regions import plain_settled
 from tests.regions.known_ends import CLEAR, MODELS
 from tests.regions.test_ends import spans_of
 
