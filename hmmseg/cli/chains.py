@@ -43,22 +43,8 @@ __all__ = ["chains", "classify", "compare", "machine", "orders"]
     help="A window above this many bits is a region.  [default: 0, or chosen on --labels]",
 )
 @click.option("--labels", metavar="BED", help="Known regions, to choose the threshold on by MCC.")
-@click.option(
-    "--min-length",
-    type=click.IntRange(1),
-    default=1,
-    show_default=True,
-    metavar="L",
-    help="Drop regions shorter than this many bases.",
-)
-@click.option(
-    "--merge-gap",
-    type=click.IntRange(0),
-    default=0,
-    show_default=True,
-    metavar="G",
-    help="Merge regions at most this far apart, first of all.",
-)
+@options.min_length
+@options.merge_gap
 @options.sequence_options()
 @options.threads
 @options.force

@@ -10,8 +10,11 @@ import click
 __all__ = [
     "fasta",
     "force",
+    "merge_gap",
+    "min_length",
     "model",
     "output",
+    "seed",
     "sequence_options",
     "strands",
     "threads",
@@ -90,6 +93,16 @@ fasta = click.argument("fasta", nargs=-1, required=True, metavar="FASTA...")
 force = click.option("--force", is_flag=True, help="Replace an earlier result.")
 output = click.option("--output", required=True, metavar="DIR", help="Folder to write.")
 model = click.option("--model", required=True, metavar="MODEL.json", help="Model to use.")
+
+min_length = click.option(
+    "--min-length", type=click.IntRange(1), default=1, show_default=True, metavar="L",
+    help="Drop regions shorter than this many bases.",
+)  # fmt: skip
+
+merge_gap = click.option(
+    "--merge-gap", type=click.IntRange(0), default=0, show_default=True, metavar="G",
+    help="Merge regions of one state at most this far apart, first of all.",
+)  # fmt: skip
 
 seed = click.option(
     "--seed", type=click.IntRange(0), default=1, show_default=True, metavar="S",
