@@ -467,7 +467,9 @@ def reused_batches():
         if table.is_file() and table.stat().st_mtime >= BEGUN:
             rows += table.read_text().splitlines()[1:]
     if not rows:
-        return "No assembly was cut into batches: none was large enough, or none was new."
+        return (
+            "No assembly was cut into batches: none was large enough, or none was new."
+        )
     reused = sum(row.endswith("\tyes") for row in rows)
     return f"{reused} of {len(rows)} batches were decoded before and used again."
 
