@@ -45,6 +45,8 @@ for _command in (
     selection.recommend,
     calls.decode,
     evidence.calibrate,
+    evidence.nulls,
+    evidence.replicate,
     models.score,
     models.simulate,
     calls.diff,

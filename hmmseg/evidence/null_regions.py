@@ -2,6 +2,7 @@
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -13,7 +14,15 @@ from hmmseg.model import Model
 from hmmseg.regions.calling import Caller
 from hmmseg.sequence.contigs import Contig
 
-__all__ = ["Found", "Replicates", "Scoring", "boundary_scores", "call_nulls", "replicates_of"]
+__all__ = [
+    "Found",
+    "Replicates",
+    "Scoring",
+    "Task",
+    "boundary_scores",
+    "call_nulls",
+    "replicates_of",
+]
 
 _BITS_DECIMALS = 3
 """As in the table of regions, so that equal scores are equal."""
@@ -79,6 +88,24 @@ class Scoring:
         return classes, np.round(bits, _BITS_DECIMALS)
 
 
+class Task(NamedTuple):
+    """What is drawn and called in one go.
+
+    Attributes
+    ----------
+    replicate : int
+        Number of the replicate.
+    pieces : tuple of int
+        Numbers of its pieces: all of them if a model is trained on the replicate, else one.
+    bases : int
+        In these pieces.
+    """
+
+    replicate: int
+    pieces: tuple[int, ...]
+    bases: int
+
+
 @dataclass(frozen=True, eq=False)
 class Replicates:
     """What is drawn: replicates of the pieces of an assembly.
@@ -87,12 +114,17 @@ class Replicates:
     ----------
     pieces : sequence of Piece
         All of them.
-    chosen : list of int64[piece]
-        Of each replicate, the pieces in it.
+    tasks : sequence of Task
+        All there is to do, replicate by replicate.
     """
 
     pieces: Sequence[Piece]
-    chosen: list[NDArray[np.int64]]
+    tasks: Sequence[Task]
+
+    @property
+    def count(self) -> int:
+        """How many replicates there are."""
+        return 1 + max((task.replicate for task in self.tasks), default=-1)
 
 
 def replicates_of(
@@ -110,17 +142,24 @@ def replicates_of(
     seed
         Of that chance.
     whole
-        Draw every piece even if that makes more bases.
+        Draw every piece even if that makes more bases, all of a replicate as one task.
     """
     lengths = np.array([piece.length for piece in pieces])
     total = int(lengths.sum())
+    everything = np.arange(len(pieces))
     if whole or total <= bases:
-        everything = np.arange(len(pieces))
-        return Replicates(pieces, [everything] * max(1, -(-bases // total)))
-    random = np.random.Generator(np.random.PCG64(np.random.SeedSequence([seed, 2])))
-    order = np.argsort(random.random(len(pieces)), kind="stable")
-    enough = int(np.searchsorted(np.cumsum(lengths[order]), bases)) + 1
-    return Replicates(pieces, [np.sort(order[:enough])])
+        chosen = [everything] * max(1, -(-bases // total))
+    else:
+        random = np.random.Generator(np.random.PCG64(np.random.SeedSequence([seed, 2])))
+        order = np.argsort(random.random(len(pieces)), kind="stable")
+        enough = int(np.searchsorted(np.cumsum(lengths[order]), bases)) + 1
+        chosen = [np.sort(order[:enough])]
+    tasks = []
+    for number, some in enumerate(chosen):
+        for together in [some] if whole else some[:, None]:
+            at = tuple(together.tolist())
+            tasks.append(Task(number, at, int(lengths[together].sum())))
+    return Replicates(pieces, tasks)
 
 
 @dataclass(frozen=True, eq=False)
@@ -145,6 +184,15 @@ class Found:
         """Return the scores of one class."""
         return self.scores[self.classes == kind]
 
+    @classmethod
+    def together(cls, parts: Sequence["Found"]) -> "Found":
+        """Return what was found in several stretches, which may be none."""
+        return cls(
+            sum(one.bases for one in parts),
+            np.concatenate([np.empty(0, np.int64), *(one.classes for one in parts)]),
+            np.concatenate([np.empty(0), *(one.scores for one in parts)]),
+        )
+
 
 def call_nulls(
     null: Null,
@@ -166,7 +214,7 @@ def call_nulls(
     null
         How pieces are drawn.
     replicates
-        What is drawn.
+        What is drawn; a task for each of them, if models are trained anew.
     caller
         How regions are called; its model is replaced where it is trained anew.
     scoring
@@ -196,23 +244,13 @@ def call_nulls(
                 watch(len(contig))
         return Found(len(contig), *scoring.of(intervals.states, bits, contig.closed))
 
-    def whole(number: int) -> list[Found]:
-        contigs = [drawn(number, int(at)) for at in replicates.chosen[number]]
-        assert refit is not None
-        own = Caller(refit(contigs), caller.decoder, caller.threshold, caller.filters)
-        return [call(own, contig) for contig in contigs]
+    def done(task: Task) -> list[Found]:
+        contigs = (drawn(task.replicate, at) for at in task.pieces)
+        if refit is None:
+            return [call(caller, contig) for contig in contigs]
+        replicate = list(contigs)
+        own = Caller(refit(replicate), caller.decoder, caller.threshold, caller.filters)
+        return [call(own, contig) for contig in replicate]
 
-    def single(task: tuple[int, int]) -> list[Found]:
-        return [call(caller, drawn(*task))]
-
-    if refit is not None:
-        parts = in_threads(whole, range(len(replicates.chosen)), threads)
-    else:
-        tasks = [(n, int(at)) for n, some in enumerate(replicates.chosen) for at in some]
-        parts = in_threads(single, tasks, threads)
-    found = [one for some in parts for one in some]
-    return Found(
-        sum(one.bases for one in found),
-        np.concatenate([one.classes for one in found]),
-        np.concatenate([one.scores for one in found]),
-    )
+    parts = in_threads(done, replicates.tasks, threads)
+    return Found.together([one for some in parts for one in some])

@@ -11,13 +11,14 @@ from typing import Any
 
 from hmmseg.errors import HmmsegError, OutputError, UsageError
 from hmmseg.evidence.comparison import Settings
-from hmmseg.jobs.calibrate import NullPlan, calibrate
+from hmmseg.jobs.calibrate import calibrate
 from hmmseg.jobs.compare import compare_once
 from hmmseg.jobs.decide import decide
 from hmmseg.jobs.decisions import Decisions, read_decisions, to_yaml
 from hmmseg.jobs.decode import decode
 from hmmseg.jobs.explain import Explained
 from hmmseg.jobs.features import measure_features
+from hmmseg.jobs.null_sequence import CalledFiles, NullPlan
 from hmmseg.jobs.report import report
 from hmmseg.jobs.sources import Sources
 from hmmseg.jobs.survey import survey
@@ -229,18 +230,14 @@ class _Job:
     def calibration(self, sources: Sources, decisions: Decisions) -> dict[str, Any]:
         """Tell how sure the regions are, by the null that judges them alone."""
         plan = NullPlan(bases=decisions["null_bases"], seed=decisions["seed"], others=False)
+        model, calls, output = (
+            str(self.folder / _RESULTS[stage]) for stage in ("train", "decode", "calibrate")
+        )
+        files = CalledFiles(sources.fasta, model, calls, sources.exclude)
         found: dict[str, Any] = self.stage(
             "calibrate",
             lambda replaces: calibrate(
-                sources.fasta,
-                str(self.folder / _RESULTS["train"]),
-                str(self.folder / _RESULTS["decode"]),
-                str(self.folder / _RESULTS["calibrate"]),
-                plan,
-                exclude=sources.exclude,
-                threads=self._threads,
-                force=replaces,
-                reuse=True,
+                files, output, plan, threads=self._threads, force=replaces, reuse=True
             ),
         )
         return found

@@ -184,7 +184,7 @@ def calibration() -> Iterator[str]:
         model = a_model(2, order, symmetric)
         model = replace(model, reported=(False, True))
         assembly = Assembly.of(model, [contig])
-        null, replicates = assembly.nulls(model)[0]["drift"], replicates_of(assembly.pieces, 1, 1)
+        null, replicates = assembly.nulls(model)["drift"], replicates_of(assembly.pieces, 1, 1)
         caller, piece = Caller(model, decoder), assembly.pieces[0]
 
         def draw() -> Contig:

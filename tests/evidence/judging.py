@@ -65,7 +65,7 @@ def judged(
         }
     )
     assembly = Assembly.of(model, [contig])
-    nulls, _ = assembly.nulls(model)
+    nulls = assembly.nulls(model)
     scoring = Scoring(False, refit is not None and refit.by_chance)
     replicates = replicates_of(assembly.pieces, bases, seed, whole=refit is not None)
     found = call_nulls(nulls[null], replicates, caller, scoring, [seed, 0], refit=refit)

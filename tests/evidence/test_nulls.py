@@ -178,11 +178,18 @@ def test_replicates_hold_the_bases_asked_for() -> None:
         for length in (500, 2_000, 700)
         for piece in pieces_of(contig_of(np.zeros(length, np.uint8)), 0, 10**8)
     ]
-    assert [some.tolist() for some in replicates_of(pieces, 7_000, 1).chosen] == [[0, 1, 2]] * 3
-    (part,) = replicates_of(pieces, 1_000, 1).chosen
-    assert len(part) < 3
-    assert sum(pieces[at].length for at in part) >= 1_000
-    assert len(replicates_of(pieces, 1_000, 1, whole=True).chosen[0]) == 3
+    lengths = (500, 2_000, 700)
+    # An assembly of 3.2 kb is drawn whole, as often as it takes, a piece at a time.
+    assert replicates_of(pieces, 7_000, 1).tasks == [
+        (number, (at,), lengths[at]) for number in range(3) for at in range(3)
+    ]
+    # Of a larger one some pieces are drawn, by chance.
+    part = replicates_of(pieces, 1_000, 1)
+    assert (part.count, len(part.tasks)) in ((1, 1), (1, 2))
+    assert sum(task.bases for task in part.tasks) >= 1_000
+    # Where a model is trained on each, a replicate is one task.
+    whole = replicates_of(pieces, 4_000, 1, whole=True)
+    assert whole.tasks == [(number, (0, 1, 2), 3_200) for number in range(2)]
 
 
 @pytest.mark.parametrize("decoder", ["path", "posterior"])
@@ -214,7 +221,7 @@ def test_nulls_do_not_depend_on_threads() -> None:
     contigs = [contig_of(random.integers(0, 4, n).astype(np.uint8)) for n in (30_000, 9_000)]
     model = model_of(random_parameters(np.random.default_rng(2), 2, 0))
     assembly = Assembly.of(model, contigs)
-    nulls, _ = assembly.nulls(model)
+    nulls = assembly.nulls(model)
     for name, null in nulls.items():
         found = [
             call_nulls(

@@ -54,7 +54,7 @@ def _results(threads: int, longest: int) -> Iterator[tuple[str, str]]:
             model, _ = step(model, contigs, threads)
         yield f"{states} {order} learnt", _digest(model.transitions) + _digest(model.joint)
         assembly = Assembly.of(model, contigs)
-        for name, null in assembly.nulls(model)[0].items():
+        for name, null in assembly.nulls(model).items():
             drawn = null.drawn(assembly.pieces[0], np.random.Generator(np.random.PCG64(1)))
             yield f"{states} {order} null {name}", _digest(drawn.bases)
         for which, contig in enumerate(contigs):

@@ -8,6 +8,7 @@ import time
 from functools import cache
 from pathlib import Path
 
+from hmmseg.evidence.amount import null_bases_of
 from snakemake.exceptions import WorkflowError
 from snakemake.utils import validate
 
@@ -44,6 +45,11 @@ OF_TRAINING = (
 )
 # A byte of compressed sequence holds about four letters, and hardly ever more than so many.
 LETTERS_IN_A_BYTE = 5
+# Null sequence is drawn in so many ways.
+NULLS = 3
+# A job draws and calls as much of it as so many batches hold: without tracks to write, it takes
+# a quarter of the time that decoding takes.
+BATCHES_OF_NULLS = 4
 
 
 def culprit(problem):
@@ -277,6 +283,7 @@ LARGE = sorted(set(ASSEMBLIES) - set(SMALL))
 wildcard_constraints:
     assembly=r"[A-Za-z0-9][A-Za-z0-9._-]*",
     batch=r"[0-9a-f]{32}",
+    part=r"[1-9][0-9]*",
     states=r"[1-8]",
     order=r"[0-8]",
 
@@ -426,11 +433,43 @@ def batches_options(wildcards):
     return f"{decode_options(wildcards)} --batch-bases {config['batch_bases']}"
 
 
-def calibrate_options(wildcards):
-    """What null sequence there is to be, and which regions are kept; settings are the calls'."""
+def null_options(wildcards):
+    """What null sequence there is to be; how it is called stands with the calls."""
     kind = SETTINGS[wildcards.assembly]["null_kind"]
     null = "" if kind is None else f"--null {kind} "
-    return null + options(wildcards, "null_bases", "q", "exclude", "seed")
+    return null + options(wildcards, "null_bases", "exclude", "seed")
+
+
+def parts_of_nulls(wildcards):
+    """How many jobs draw null sequence."""
+    settings = SETTINGS[wildcards.assembly]
+    bases = settings["null_bases"] or null_bases_of(most_bases(settings["fasta"]))
+    return max(1, NULLS * bases // (BATCHES_OF_NULLS * config["batch_bases"]))
+
+
+def nulls_of(wildcards):
+    """Null sequence for other jobs to draw; none if one job does everything."""
+    large = wildcards.assembly in LARGE
+    return f"{RESULTS}/{wildcards.assembly}/nulls" if large else []
+
+
+def replicates_of(wildcards):
+    """Folders of the parts of null sequence, each named by its number."""
+    if wildcards.assembly not in LARGE:
+        return []
+    return [
+        f"{RESULTS}/{wildcards.assembly}/replicates/{part + 1}"
+        for part in range(parts_of_nulls(wildcards))
+    ]
+
+
+def calibrate_options(wildcards):
+    """Null sequence, where it was drawn before, and which regions are kept."""
+    words = f"{null_options(wildcards)} {options(wildcards, 'q')}"
+    if wildcards.assembly in LARGE:
+        folder = shlex.quote(f"{RESULTS}/{wildcards.assembly}")
+        words += f" --nulls {folder}/nulls --parts {folder}/replicates"
+    return words
 
 
 def compare_options(wildcards):

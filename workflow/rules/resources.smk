@@ -9,6 +9,8 @@ MORE = {
     "select": (5, 10),
     "compare": (8, 10),
     "calibrate": (10, 6),
+    "nulls": (10, 0.1),
+    "replicate": (2, 3),
     "batches": (6, 0.1),
     "cut": (6, 0.1),
     "decode": (10, 0.5),
@@ -24,6 +26,8 @@ def megabases(name, wildcards):
     """Size of the sequence that a job reads: a batch, an assembly, or nothing to speak of."""
     if name not in MORE:
         return 0
+    if name == "replicate":
+        return BATCHES_OF_NULLS * config["batch_bases"] / 1e6
     if name == "decode_batch":
         rows = batches_of(wildcards.assembly)
         [bases] = [row["bases"] for row in rows if row["batch"] == wildcards.batch]
