@@ -1,12 +1,16 @@
 """Sequence with regions of another GC, drawn base by base, not from a model of hmmseg."""
 
+from collections.abc import Sequence
+from pathlib import Path
+
 import numpy as np
 from numpy.typing import NDArray
 
 from hmmseg.evidence.pieces import Piece, cut
+from hmmseg.sequence.alphabet import decode
 from hmmseg.sequence.contigs import Contig
 
-__all__ = ["drawn_contigs", "drawn_pieces", "plain_pieces"]
+__all__ = ["drawn_contigs", "drawn_pieces", "plain_pieces", "write_drawn"]
 
 
 def drawn_contigs(
@@ -47,3 +51,11 @@ def plain_pieces(seed: int, bases: int, pieces: int = 100) -> list[Piece]:
     """Return pieces of independent bases with a GC of 40 % and no regions."""
     contigs, _ = drawn_contigs(seed, bases, bases, 10 * bases, (0.4, 0.4), pieces)
     return cut(contigs, bases // pieces)
+
+
+def write_drawn(folder: Path, drawn: tuple[Sequence[Contig], Sequence[NDArray[np.int64]]]) -> None:
+    """Write contigs to ``s.fa``, and the regions on them, named ``rich``, to ``truth.bed``."""
+    with (folder / "s.fa").open("w") as fasta, (folder / "truth.bed").open("w") as bed:
+        for contig, spans in zip(*drawn, strict=True):
+            fasta.write(f">{contig.record}\n{decode(contig.bases)}\n")
+            bed.writelines(f"{contig.record}\t{start}\t{end}\trich\n" for start, end in spans)

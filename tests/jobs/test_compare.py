@@ -8,20 +8,14 @@ import pytest
 
 from hmmseg.cli import main
 from hmmseg.evidence.tallies import MEASURES
-from hmmseg.sequence.alphabet import decode
-from tests.evidence.drawn import drawn_contigs
+from tests.evidence.drawn import drawn_contigs, write_drawn
 
 
 @pytest.fixture
 def here(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> Path:
     """A folder to be in, with 60 kb in six records and the regions in it."""
     monkeypatch.chdir(tmp_path)
-    contigs, truth = drawn_contigs(1, 60_000, 500, 2_000, (0.35, 0.65), 6)
-    with Path("s.fa").open("w") as fasta, Path("truth.bed").open("w") as bed:
-        for contig, spans in zip(contigs, truth, strict=True):
-            text = decode(contig.bases)
-            fasta.write(f">{contig.record}\n{text if isinstance(text, str) else text.decode()}\n")
-            bed.writelines(f"{contig.record}\t{start}\t{end}\trich\n" for start, end in spans)
+    write_drawn(tmp_path, drawn_contigs(1, 60_000, 500, 2_000, (0.35, 0.65), 6))
     return tmp_path
 
 

@@ -7,8 +7,7 @@ from pathlib import Path
 
 import pytest
 
-from hmmseg.sequence.alphabet import decode
-from tests.evidence.drawn import drawn_contigs
+from tests.evidence.drawn import drawn_contigs, write_drawn
 
 pytestmark = pytest.mark.slow
 
@@ -30,14 +29,9 @@ def compare(folder: Path, name: str, labels: list[str], settings: dict[str, str]
 
 
 @pytest.mark.parametrize("processor", PROCESSORS)
-@pytest.mark.parametrize("labels", [[], ["--labels", "t.bed"]], ids=["blind", "labelled"])
+@pytest.mark.parametrize("labels", [[], ["--labels", "truth.bed"]], ids=["blind", "labelled"])
 def test_same_bytes(processor: str, labels: list[str], tmp_path: Path) -> None:
-    contigs, truth = drawn_contigs(1, 30_000, 500, 2_000, (0.35, 0.65), 6)
-    with Path(tmp_path, "s.fa").open("w") as fasta, Path(tmp_path, "t.bed").open("w") as bed:
-        for contig, spans in zip(contigs, truth, strict=True):
-            text = decode(contig.bases)
-            fasta.write(f">{contig.record}\n{text if isinstance(text, str) else text.decode()}\n")
-            bed.writelines(f"{contig.record}\t{start}\t{end}\n" for start, end in spans)
+    write_drawn(tmp_path, drawn_contigs(1, 30_000, 500, 2_000, (0.35, 0.65), 6))
     plain = compare(tmp_path, "plain", labels, {})
     other = compare(tmp_path, processor, labels, PROCESSORS[processor])
     assert {p.name for p in plain.iterdir()} == {p.name for p in other.iterdir()}
