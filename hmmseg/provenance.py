@@ -19,9 +19,11 @@ from hmmseg.outputs import PROVENANCE, sha256_of, whole_file, write_json
 __all__ = [
     "FORMAT",
     "VERSION",
+    "difference",
     "earlier_document",
     "is_current",
     "is_intact",
+    "origin",
     "provenance_path",
     "read_provenance",
     "software",
@@ -75,7 +77,7 @@ def write_provenance(
     result = Path(folder_or_file)
     root = result if result.is_dir() else result.parent
     document = {
-        **_origin(command, parameters, seed, inputs),
+        **origin(command, parameters, seed, inputs),
         "outputs": [_fingerprint(path, _relative(path, root)) for path in outputs],
     }
     with whole_file(provenance_path(result), force=True) as temporary:
@@ -101,11 +103,40 @@ def is_current(
         found = read_provenance(result)
     except OutputError:
         return False
-    expected = _origin(command, parameters, seed, inputs)
-    # Through JSON, so that both have been written and read.
-    if json.loads(json.dumps(expected)) != {k: v for k, v in found.items() if k != "outputs"}:
+    if difference(found, origin(command, parameters, seed, inputs)) is not None:
         return False
     return is_intact(result, found)
+
+
+def difference(found: Mapping[str, Any], expected: Mapping[str, Any]) -> str | None:
+    """Name the first thing, outputs aside, in which a provenance is not what it should be.
+
+    Parameters
+    ----------
+    found : mapping
+        As `read_provenance` returns it.
+    expected : mapping
+        As `origin` returns it.
+
+    Returns
+    -------
+    str or None
+        ``command``, ``software`` or ``seed``, the name of an input file or of a parameter; None
+        if they agree.
+    """
+    # Through JSON, so that both have been written and read.
+    expected = json.loads(json.dumps(expected))
+    for key in ("format", "version", "command", "software", "seed"):
+        if found[key] != expected[key]:
+            return key
+    if found["inputs"] != expected["inputs"]:
+        others = [one["name"] for one in expected["inputs"] if one not in found["inputs"]]
+        return str(others[0]) if others else "inputs"
+    theirs, ours = found["parameters"], expected["parameters"]
+    for key in (*ours, *theirs):
+        if key not in theirs or key not in ours or theirs[key] != ours[key]:
+            return str(key)
+    return None
 
 
 def earlier_document(
@@ -147,10 +178,16 @@ def is_intact(folder_or_file: str | Path, document: Mapping[str, Any]) -> bool:
     )
 
 
-def _origin(
+def origin(
     command: str, parameters: Mapping[str, Any], seed: int | None, inputs: Sequence[str | Path]
 ) -> dict[str, Any]:
-    """Return everything but the outputs."""
+    """Return everything that a provenance says but the outputs.
+
+    Parameters
+    ----------
+    command, parameters, seed, inputs
+        As for `write_provenance`.
+    """
     return {
         "format": FORMAT,
         "version": VERSION,

@@ -11,7 +11,13 @@ import pytest
 
 import hmmseg
 from hmmseg.errors import OutputError
-from hmmseg.provenance import provenance_path, read_provenance, write_provenance
+from hmmseg.provenance import (
+    difference,
+    origin,
+    provenance_path,
+    read_provenance,
+    write_provenance,
+)
 
 
 def make_run(root: Path) -> Path:
@@ -159,3 +165,36 @@ def test_reading_what_is_no_document(tmp_path: Path, content: bytes) -> None:
 def test_reading_what_is_not_there(tmp_path: Path) -> None:
     with pytest.raises(OutputError, match=r"provenance\.json does not exist; is .* a result\?"):
         read_provenance(tmp_path)
+
+
+@pytest.mark.parametrize(
+    ("changes", "told"),
+    [
+        ({}, None),
+        ({"threads": 9, "output": "elsewhere"}, None),
+        ({"min_length": 201}, "min_length"),
+        ({"more": None}, "more"),
+    ],
+)
+def test_difference_names_a_parameter(
+    tmp_path: Path, changes: dict[str, Any], told: str | None
+) -> None:
+    found = read_provenance(make_run(tmp_path))
+    inputs = [tmp_path / "genome.fa", tmp_path / "model.json"]
+    expected = origin("decode", {**found["parameters"], **changes}, 7, inputs)
+    assert difference(found, expected) == told
+
+
+def test_difference_names_what_else_is_not_the_same(tmp_path: Path) -> None:
+    found = read_provenance(make_run(tmp_path))
+    inputs = [tmp_path / "genome.fa", tmp_path / "model.json"]
+    for command, seed, told in (("train", 7, "command"), ("decode", 8, "seed")):
+        assert difference(found, origin(command, found["parameters"], seed, inputs)) == told
+    few = origin("decode", found["parameters"], 7, inputs[:1])
+    assert difference(found, few) == "inputs"
+    inputs[1].write_bytes(b"[]")
+    assert difference(found, origin("decode", found["parameters"], 7, inputs)) == "model.json"
+    other = {**found, "software": {**found["software"], "numpy": "0"}}
+    assert difference(other, origin("decode", found["parameters"], 7, inputs)) == "software"
+    fewer = {key: value for key, value in found["parameters"].items() if key != "decoder"}
+    assert difference(found, {**found, "parameters": fewer}) == "decoder"

@@ -59,6 +59,7 @@ for _command in (
     chains.classify,
     chains.orders,
     chains.machine,
+    chains.fold,
     chains.compare,
     pages.report,
 ):

@@ -1,5 +1,7 @@
 """Commands about Markov chains, and the comparison with hidden Markov models."""
 
+from dataclasses import fields
+from functools import wraps
 from typing import Any
 
 import click
@@ -7,7 +9,7 @@ import click
 from hmmseg.cli import options
 from hmmseg.cli.calls import print_regions
 
-__all__ = ["chains", "classify", "compare", "machine", "orders"]
+__all__ = ["chains", "classify", "compare", "fold", "machine", "orders"]
 
 # Rooms are imported inside the commands, so that --help need not wait for compilers and plots.
 
@@ -184,82 +186,133 @@ def orders(
     click.echo(f"best by held-out bits\t{found['best_by_heldout']}")
 
 
+def _trial(function: options.Decorated) -> options.Decorated:
+    """Add the options of a comparison; they become ``sources``, ``truth`` and ``settings``."""
+
+    @wraps(function)
+    def with_trial(
+        sources: Any, labels: str | None, label: str | None, order: int | None,
+        split: str | None, block: int | None, **given: Any,
+    ) -> Any:  # fmt: skip
+        from hmmseg.evidence.turns import Settings
+        from hmmseg.jobs.trial import Truth
+
+        names = [field.name for field in fields(Settings) if field.name in given]
+        settings = Settings(**{name: given.pop(name) for name in names})
+        return function(sources, Truth(labels, label, order, split, block), settings, **given)
+
+    wrapped: options.Decorated = with_trial
+    for option in reversed(_TRIAL):
+        wrapped = option(wrapped)
+    return wrapped
+
+
+_TRIAL = (
+    click.option("--labels", metavar="BED", help="Known regions; without them bits are compared."),
+    _label,
+    click.option(
+        "--order",
+        type=click.IntRange(0, 8),
+        default=None,
+        metavar="N",
+        help="Order of both, with labels.  [default: the one that predicts held-out sequence best]",
+    ),
+    click.option(
+        "--split",
+        type=click.Choice(["contigs", "blocks"]),
+        default=None,
+        help="What is held out.  [default: contigs, or blocks where a contig outweighs a fold]",
+    ),
+    _folds,
+    _block,
+    options.strands,
+    click.option(
+        "--max-order",
+        type=click.IntRange(0, 8),
+        default=8,
+        show_default=True,
+        metavar="N",
+        help="Highest order of chains, without labels.",
+    ),
+    click.option(
+        "--max-hmm-order",
+        type=click.IntRange(0, 6),
+        default=3,
+        show_default=True,
+        metavar="N",
+        help="Highest order of HMMs.",
+    ),
+    click.option(
+        "--states",
+        type=click.IntRange(2, 8),
+        default=2,
+        show_default=True,
+        metavar="K",
+        help="States of HMMs, without labels.",
+    ),
+    click.option(
+        "--restarts",
+        type=click.IntRange(1),
+        default=3,
+        show_default=True,
+        metavar="R",
+        help="Fits of each HMM from different starts, without labels.",
+    ),
+    click.option(
+        "--decoder",
+        type=click.Choice(["path", "posterior"]),
+        default="path",
+        show_default=True,
+        help="How the HMM calls: best path, or posterior over 0.5.",
+    ),
+    click.option(
+        "--replicates",
+        type=click.IntRange(10),
+        default=1000,
+        show_default=True,
+        metavar="B",
+        help="Bootstrap replicates.",
+    ),
+    options.seed,
+    options.sequence_options(),
+    options.threads,
+    options.force,
+)
+
+
 @click.command()
 @options.fasta
 @options.output
-@click.option("--labels", metavar="BED", help="Known regions; without them bits are compared.")
-@_label
 @click.option(
-    "--order",
-    type=click.IntRange(0, 8),
-    default=None,
-    metavar="N",
-    help="Order of both, with labels.  [default: the one that predicts held-out sequence best]",
-)
-@click.option(
-    "--split",
-    type=click.Choice(["contigs", "blocks"]),
-    default=None,
-    help="What is held out.  [default: contigs, or blocks where a contig outweighs a fold]",
-)
-@_folds
-@_block
-@options.strands
-@click.option(
-    "--max-order",
-    type=click.IntRange(0, 8),
-    default=8,
-    show_default=True,
-    metavar="N",
-    help="Highest order of chains, without labels.",
-)
-@click.option(
-    "--max-hmm-order",
-    type=click.IntRange(0, 6),
-    default=3,
-    show_default=True,
-    metavar="N",
-    help="Highest order of HMMs.",
-)
-@click.option(
-    "--states",
-    type=click.IntRange(2, 8),
-    default=2,
-    show_default=True,
-    metavar="K",
-    help="States of HMMs, without labels.",
-)
-@click.option(
-    "--restarts",
+    "--fold",
+    "number",
     type=click.IntRange(1),
-    default=3,
-    show_default=True,
-    metavar="R",
-    help="Fits of each HMM from different starts, without labels.",
+    required=True,
+    metavar="N",
+    help="Which of the folds is held out, from 1 up.",
 )
+@_trial
+def fold(sources: Any, truth: Any, settings: Any, output: str, number: int, force: bool) -> None:
+    """Do the work of one fold of a comparison, as a job of its own.
+
+    Takes the options of compare. With a folder of this kind for each fold, named 1, 2 and so on,
+    compare --parts ends the comparison.
+    """
+    from hmmseg.jobs import fold as job
+
+    click.echo(job.fold(sources, output, truth, settings, number, force))
+
+
+@click.command()
+@options.fasta
+@options.output
 @click.option(
-    "--decoder",
-    type=click.Choice(["path", "posterior"]),
-    default="path",
-    show_default=True,
-    help="How the HMM calls: best path, or posterior over 0.5.",
+    "--parts", metavar="DIR", help="Do no fold: there is what hmmseg fold wrote, by its number."
 )
-@click.option(
-    "--replicates",
-    type=click.IntRange(10),
-    default=1000,
-    show_default=True,
-    metavar="B",
-    help="Bootstrap replicates.",
-)
-@options.seed
-@options.sequence_options()
-@options.threads
-@options.force
+@_trial
 def compare(
-    sources: Any, output: str, labels: str | None, label: str | None, order: int | None,
-    split: str | None, block: int | None, force: bool, **settings: Any,
-) -> None:  # fmt: skip
+    sources: Any, truth: Any, settings: Any, output: str, parts: str | None, force: bool
+) -> None:
     """Compare an HMM with Markov chains on sequence that neither has seen.
 
     With labels both are trained and tested in folds, and measured base by base and region by
@@ -267,11 +320,10 @@ def compare(
     on sequence drawn from the fitted HMM. Ends with a verdict, which may be that the two do not
     differ, or that the chain is better.
     """
-    from hmmseg.evidence.comparison import Settings
     from hmmseg.jobs import compare as job
     from hmmseg.jobs.comparison_files import printed
 
-    truth = job.Truth(labels, label, order, split, block)
-    found = job.compare(sources, output, truth, Settings(**settings), force)
-    for line in printed(found):
+    found = job.compare(sources, output, truth, settings, parts=parts, force=force)
+    # The folds were timed elsewhere, if at all.
+    for line in printed(found, times=parts is None):
         click.echo(line)

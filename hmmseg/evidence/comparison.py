@@ -12,86 +12,29 @@ from hmmseg.evidence.heldout import (
     HeldOut,
     chain_heldout,
     fitted_hmm,
+    hmm_bits,
     hmm_heldout,
+    in_place,
     known_bases,
 )
 from hmmseg.evidence.pieces import Piece
-from hmmseg.evidence.rivals import CLASSIFIER, HMM, Rivals, call_hmm, call_windows, trained_pair
+from hmmseg.evidence.rivals import CLASSIFIER, HMM, call_hmm, call_windows, trained_pair
 from hmmseg.evidence.tallies import MEASURES, BlockTally, Tally
 from hmmseg.evidence.tuning import Tuned
+from hmmseg.evidence.turns import Measured, Predicted, Settings, divided
 from hmmseg.evidence.verdicts import Verdict, verdict_on_bits, verdict_on_f1
 from hmmseg.kernels.elementary import LN2, log
 from hmmseg.model import Model
-from hmmseg.model.dimension import free_parameters
-from hmmseg.regions.calling import PATH
 from hmmseg.training.labelled import half_counts, labelled_model
-from hmmseg.training.restarts import Plan
 
 __all__ = [
     "Accuracy",
     "Agreement",
     "Blind",
-    "Settings",
     "accuracy",
     "best_labelled_order",
     "blind",
 ]
-
-
-Told = Callable[[int], None]
-
-
-@dataclass(frozen=True)
-class Settings:
-    """How the two are compared.
-
-    Parameters
-    ----------
-    symmetric
-        Whether both strands are treated alike.
-    folds
-        Sequence is held out in so many turns.
-    replicates
-        Bootstrap replicates.
-    seed
-        Of all random draws.
-    threads
-        Threads to use; only times depend on it.
-    max_order
-        Highest order of chains.
-    max_hmm_order
-        Highest order of HMMs.
-    states, restarts, max_iterations, tolerance
-        Of the HMMs that are fitted without labels.
-    decoder
-        Of the HMM.
-    """
-
-    symmetric: bool = True
-    folds: int = 5
-    replicates: int = 1000
-    seed: int = 1
-    threads: int = 1
-    max_order: int = 8
-    max_hmm_order: int = 3
-    states: int = 2
-    restarts: int = 3
-    max_iterations: int = 100
-    tolerance: float = 1e-6
-    decoder: str = PATH
-
-    def plan(self, order: int) -> Plan:
-        """Return how an HMM of one order is fitted."""
-        return Plan(
-            states=self.states,
-            order=order,
-            symmetric=self.symmetric,
-            restarts=self.restarts,
-            seed=self.seed,
-            max_iterations=self.max_iterations,
-            tolerance=self.tolerance,
-            pseudocount=half_counts(order),
-        )
 
 
 @dataclass(frozen=True, eq=False)
@@ -111,7 +54,7 @@ class Accuracy:
     tallies : mapping of str to Tally
         By way of calling.
     seconds_per_mb : mapping of str to float
-        By way of calling.
+        By way of calling; empty where it is not known.
     verdict : Verdict
         In words.
     """
@@ -142,31 +85,25 @@ def best_labelled_order(
     """
     totals = []
     for order in range(settings.max_hmm_order + 1):
-        models = []
+        bits = []
         for fold in range(int(folds.max()) + 1):
-            known = [pieces[i] for i in np.flatnonzero(folds != fold).tolist()]
-            models.append(
-                labelled_model(
-                    [piece.contig for piece in known],
-                    [piece.truth for piece in known],
-                    order,
-                    settings.symmetric,
-                    half_counts(order),
-                )
+            known, held = divided(pieces, folds, fold)
+            model = labelled_model(
+                [piece.contig for piece in known],
+                [piece.truth for piece in known],
+                order,
+                settings.symmetric,
+                half_counts(order),
             )
-        found = hmm_heldout(pieces, folds, models, 0, settings.threads)
-        totals.append(float(found.bits.sum()))
+            bits.append(hmm_bits(held, model, settings.threads))
+        totals.append(float(in_place(folds, bits).sum()))
     return int(np.argmin(totals))
 
 
 def accuracy(
-    pieces: Sequence[Piece],
-    folds: NDArray[np.int64],
-    order: int,
-    settings: Settings,
-    told: Told = lambda _: None,
+    pieces: Sequence[Piece], folds: NDArray[np.int64], turns: Sequence[Measured], settings: Settings
 ) -> Accuracy:
-    """Train and test both ways of calling in folds, and measure them against the labels.
+    """Measure both ways of calling against the labels, from what each turn has counted.
 
     Parameters
     ----------
@@ -174,20 +111,16 @@ def accuracy(
         The sequence with its labels.
     folds
         int64[piece]: the fold in which each piece is held out.
-    order
-        Context length of both.
+    turns
+        One for each fold, all of the same order.
     settings
         How they are compared.
-    told
-        Called with the number of bases of each piece that is done.
-
-    Raises
-    ------
-    LabelError
-        A fold's training part is of one class only.
     """
-    rivals = Rivals(pieces, folds, order, settings.symmetric, settings.threads, settings.decoder)
-    tallies = rivals.run(told)
+    places = [np.flatnonzero(folds == fold) for fold in range(len(turns))]
+    tallies = {
+        way: Tally.together([turn.tallies[way] for turn in turns], places)
+        for way in (HMM, CLASSIFIER)
+    }
     weights = resampled(len(pieces), settings.replicates, settings.seed)
     whole = {way: tally.measures() for way, tally in tallies.items()}
     drawn = {way: tally.measures(weights) for way, tally in tallies.items()}
@@ -204,13 +137,15 @@ def accuracy(
     bases = sum(len(piece.contig) for piece in pieces)
     hmm, classifier, difference = measures["f1"]
     return Accuracy(
-        order=order,
+        order=turns[0].order,
         bases=bases,
         true_regions=int(tallies[HMM].regions[:, 0].sum()),
         measures=measures,
-        tuned=rivals.tuned,
+        tuned=[turn.tuned for turn in turns],
         tallies=tallies,
-        seconds_per_mb={way: took * 1e6 / bases for way, took in rivals.seconds.items()},
+        seconds_per_mb={
+            way: sum(turn.seconds[way] for turn in turns) * 1e6 / bases for way in turns[0].seconds
+        },
         verdict=verdict_on_f1(difference, hmm.value, classifier.value),
     )
 
@@ -266,6 +201,7 @@ class Blind:
 def blind(
     pieces: Sequence[Piece],
     folds: NDArray[np.int64],
+    turns: Sequence[Predicted],
     settings: Settings,
     told: Callable[[str], None] = lambda _: None,
 ) -> Blind:
@@ -277,26 +213,19 @@ def blind(
         The sequence.
     folds
         int64[piece]: the fold in which each piece is held out.
+    turns
+        One for each fold: HMMs that have not seen it.
     settings
         How they are compared.
     told
-        Called with the name of each kind of model that is done.
+        Called with the name of each kind of chain that is done.
     """
     kinds = []
     for order in range(settings.max_order + 1):
         kinds.append(chain_heldout(pieces, folds, order, settings.symmetric))
         told(kinds[-1].name)
-    fitted = {}
-    for order in range(settings.max_hmm_order + 1):
-        plan = settings.plan(order)
-        models = []
-        for fold in range(int(folds.max()) + 1):
-            known = [pieces[i] for i in np.flatnonzero(folds != fold).tolist()]
-            models.append(fitted_hmm(known, plan, settings.threads))
-        parameters = free_parameters(models[0])
-        kinds.append(hmm_heldout(pieces, folds, models, parameters, settings.threads))
-        fitted[order] = models
-        told(kinds[-1].name)
+    for order, model in enumerate(turns[0].models):
+        kinds.append(hmm_heldout(model, in_place(folds, [turn.bits[order] for turn in turns])))
     bases = known_bases(pieces)
     weights = resampled(len(pieces), settings.replicates, settings.seed)
     rows = [(kind, _per_base(kind.bits, bases, weights)) for kind in kinds]
@@ -311,7 +240,7 @@ def blind(
         best_chain=chain,
         best_hmm=hmm,
         gain=gain,
-        agreement=_agreement(pieces, folds, fitted[hmm.order], settings),
+        agreement=_agreement(pieces, folds, [turn.models[hmm.order] for turn in turns], settings),
         model=fitted_hmm(pieces, settings.plan(hmm.order), settings.threads),
         verdict=verdict_on_bits(gain, price, chain.name, hmm.name),
     )
@@ -332,17 +261,16 @@ def _agreement(
     blocks: list[BlockTally] = []
     threads, decoder = settings.threads, settings.decoder
     for fold, model in enumerate(models):
-        known = [pieces[i] for i in np.flatnonzero(folds != fold).tolist()]
+        known, held = divided(pieces, folds, fold)
         calls = [call_hmm(model, piece.contig, threads, decoder).intervals for piece in known]
         try:
             caller, tuned = trained_pair(known, calls, model.order, settings.symmetric, threads)
         except HmmsegError:
             return None
-        for number in np.flatnonzero(folds == fold).tolist():
-            contig = pieces[number].contig
+        for contig in (piece.contig for piece in held):
             theirs = call_hmm(model, contig, threads, decoder).intervals
             blocks.append(call_windows(caller, contig, tuned.scale).against(theirs, len(contig)))
-    tally = Tally(blocks)
+    tally = Tally.of(blocks)
     both, classifier_only, hmm_only, _ = tally.bases.sum(axis=0).tolist()
     called = both + classifier_only + hmm_only
     return Agreement(

@@ -15,7 +15,7 @@ from hmmseg.inference.streams import Corpus
 from hmmseg.kernels.elementary import LN2, log
 from hmmseg.model import Model
 from hmmseg.model.contexts import code_offset, missing_code
-from hmmseg.model.dimension import chain_parameters
+from hmmseg.model.dimension import chain_parameters, free_parameters
 from hmmseg.sequence.alphabet import count_known
 from hmmseg.training.chains import chain_of_words, code_counts, fit_chain, log_probability_of_counts
 from hmmseg.training.labelled import half_counts
@@ -26,7 +26,9 @@ __all__ = [
     "OrderRow",
     "chain_heldout",
     "fitted_hmm",
+    "hmm_bits",
     "hmm_heldout",
+    "in_place",
     "known_bases",
     "order_rows",
 ]
@@ -98,37 +100,35 @@ def fitted_hmm(pieces: Sequence[Piece], plan: Plan, threads: int) -> Model:
     return fit_restarts(plan, corpus, threads).model
 
 
-def hmm_heldout(
-    pieces: Sequence[Piece],
-    folds: NDArray[np.int64],
-    models: Sequence[Model],
-    parameters: int,
-    threads: int,
-) -> HeldOut:
+def hmm_bits(pieces: Sequence[Piece], model: Model, threads: int) -> NDArray[np.float64]:
+    """Return float64[piece]: -log2 probability of pieces that the model was not fitted to."""
+    corpus = Corpus([piece.contig for piece in pieces], model.order, model.both_strands, threads)
+    return -log_likelihoods(model, corpus, threads) / LN2
+
+
+def in_place(folds: NDArray[np.int64], parts: Sequence[NDArray[np.float64]]) -> NDArray[np.float64]:
+    """Return float64[piece] from the values of each fold's pieces.
+
+    ``folds`` is int64[piece]: the fold of each.
+    """
+    values = np.zeros(len(folds))
+    for fold, part in enumerate(parts):
+        values[folds == fold] = part
+    return values
+
+
+def hmm_heldout(model: Model, bits: NDArray[np.float64]) -> HeldOut:
     """Return how models of one kind predict the pieces that each was not fitted to.
 
     Parameters
     ----------
-    pieces
-        The sequence.
-    folds
-        int64[piece]: the fold in which each is held out.
-    models
-        One for each fold, fitted to the other folds.
-    parameters
-        Free parameters of each.
-    threads
-        Threads to use; the result does not depend on it.
+    model
+        One of them.
+    bits
+        float64[piece]: -log2 probability of each piece.
     """
-    bits = np.zeros(len(pieces))
-    for fold, model in enumerate(models):
-        chosen = np.flatnonzero(folds == fold).tolist()
-        contigs = [pieces[number].contig for number in chosen]
-        corpus = Corpus(contigs, model.order, model.both_strands, threads)
-        bits[chosen] = -log_likelihoods(model, corpus, threads) / LN2
-    one = models[0]
-    name = f"HMM of {one.states} states and order {one.order}"
-    return HeldOut(name, one.states, one.order, parameters, bits)
+    name = f"HMM of {model.states} states and order {model.order}"
+    return HeldOut(name, model.states, model.order, free_parameters(model), bits)
 
 
 @dataclass(frozen=True)

@@ -5,6 +5,7 @@ costs no new look at the sequence. Scores are counted at levels of a sixteenth o
 """
 
 from collections.abc import Iterator, Sequence
+from dataclasses import dataclass
 from typing import NamedTuple
 
 import numpy as np
@@ -119,26 +120,68 @@ class BlockTally(NamedTuple):
         )
 
 
+@dataclass(frozen=True, eq=False)
 class Tally:
     """Counts of all blocks, one way of calling.
 
-    Parameters
+    Attributes
     ----------
-    blocks
-        Of each block.
+    bases : int64[block, 4]
+        As of :class:`BlockTally`, like the next two.
+    positives, negatives : int64[block, level]
+    regions : int64[block, 5]
+        True, called, hit, hit by half, false.
+    distances : int64[edge]
+        Of the edges of hit regions in all blocks, sorted.
+    owners : int64[edge]
+        The block of each.
     """
 
-    def __init__(self, blocks: Sequence[BlockTally]) -> None:
-        self.bases = np.array([one.bases for one in blocks])
-        """int64[block, 4]"""
-        self.positives = np.array([one.positives for one in blocks])
-        self.negatives = np.array([one.negatives for one in blocks])
-        self.regions = np.array([one.matching[:5] for one in blocks])
-        """int64[block, 5]: true, called, hit, hit by half, false regions"""
-        owners = np.repeat(np.arange(len(blocks)), [len(b.matching.distances) for b in blocks])
-        distances = np.concatenate([b.matching.distances for b in blocks])
+    bases: NDArray[np.int64]
+    positives: NDArray[np.int64]
+    negatives: NDArray[np.int64]
+    regions: NDArray[np.int64]
+    distances: NDArray[np.int64]
+    owners: NDArray[np.int64]
+
+    @classmethod
+    def of(cls, blocks: Sequence[BlockTally]) -> "Tally":
+        """Return the counts of blocks, in their order."""
+        matchings = [one.matching for one in blocks]
+        owners = np.repeat(np.arange(len(blocks)), [len(m.distances) for m in matchings])
+        distances = np.concatenate([m.distances for m in matchings])
         order = np.argsort(distances, kind="stable")
-        self._distances, self._owners = distances[order], owners[order]
+        return cls(
+            bases=np.array([one.bases for one in blocks]),
+            positives=np.array([one.positives for one in blocks]),
+            negatives=np.array([one.negatives for one in blocks]),
+            regions=np.array([m[:5] for m in matchings]),
+            distances=distances[order],
+            owners=owners[order],
+        )
+
+    @classmethod
+    def together(cls, parts: Sequence["Tally"], places: Sequence[NDArray[np.int64]]) -> "Tally":
+        """Return the counts of all parts in one.
+
+        Parameters
+        ----------
+        parts
+            Each of some of the blocks.
+        places
+            int64[block] for each part: the number of each of its blocks among all.
+        """
+        order = np.argsort(np.concatenate(places))
+        bases, positives, negatives, regions = (
+            np.concatenate([getattr(part, name) for part in parts])[order]
+            for name in ("bases", "positives", "negatives", "regions")
+        )
+        distances = np.concatenate([part.distances for part in parts])
+        owners = np.concatenate(
+            [place[part.owners] for part, place in zip(parts, places, strict=True)]
+        )
+        edges = np.argsort(distances, kind="stable")
+        return cls(bases, positives, negatives, regions, distances[edges], owners[edges])
 
     def measures(self, weights: NDArray[np.int64] | None = None) -> dict[str, NDArray[np.float64]]:
         """Return float64[replicate] of each measure.
@@ -190,12 +233,12 @@ class Tally:
 
     def _quantiles(self, weights: NDArray[np.int64], share: float) -> NDArray[np.float64]:
         """Return the smallest distance that at least a share of the edges does not exceed."""
-        if not len(self._distances):
+        if not len(self.distances):
             return np.full(len(weights), np.nan)
         result = np.full(len(weights), np.nan)
         for number, row in enumerate(weights):
-            reached = np.cumsum(row[self._owners])
+            reached = np.cumsum(row[self.owners])
             if reached[-1]:
                 at = int(np.searchsorted(reached, share * reached[-1], side="left"))
-                result[number] = self._distances[at]
+                result[number] = self.distances[at]
         return result

@@ -10,7 +10,7 @@ from pathlib import Path
 from typing import Any
 
 from hmmseg.errors import HmmsegError, OutputError, UsageError
-from hmmseg.evidence.comparison import Settings
+from hmmseg.evidence.turns import Settings
 from hmmseg.jobs.calibrate import calibrate
 from hmmseg.jobs.compare import compare_once
 from hmmseg.jobs.decide import decide

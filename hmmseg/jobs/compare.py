@@ -1,24 +1,20 @@
 """The command ``compare``: a hidden Markov model and chains on the same held-out sequence."""
 
 import json
-from dataclasses import asdict, dataclass, replace
+from dataclasses import replace
 from pathlib import Path
-from typing import Any
 
 import numpy as np
 
-from hmmseg.errors import LabelError, SequenceError, UsageError
-from hmmseg.evidence.comparison import (
-    Accuracy,
-    Settings,
-    accuracy,
-    best_labelled_order,
-    blind,
-)
-from hmmseg.evidence.pieces import Piece, block_length, cut, deal
+from hmmseg.errors import LabelError, SequenceError
+from hmmseg.evidence.comparison import Accuracy, Blind, accuracy, blind
+from hmmseg.evidence.pieces import cut, deal
+from hmmseg.evidence.turns import Predicted, Settings, measured
 from hmmseg.jobs.comparison_files import Comparison, write_comparison
-from hmmseg.jobs.labelled import read_labelled
+from hmmseg.jobs.fold import measured_turns, predicted_turns
+from hmmseg.jobs.fold_files import read_measured, read_predicted, whole_parts
 from hmmseg.jobs.sources import Sources
+from hmmseg.jobs.trial import Trial, Truth, set_up
 from hmmseg.model import Model
 from hmmseg.outputs import PROVENANCE, check_target, whole_folder
 from hmmseg.progress import Progress
@@ -26,40 +22,21 @@ from hmmseg.provenance import is_current, write_provenance
 from hmmseg.sequence.contigs import Contig
 from hmmseg.simulate import simulate
 
-__all__ = ["Truth", "compare", "compare_once", "simulated_accuracy"]
+__all__ = ["compare", "compare_once", "simulated_accuracy"]
 
 _TEST_RECORDS = 50
 _MOST_SIMULATED = 5_000_000
 _SHORTEST_SIMULATED = 1000
 
 
-@dataclass(frozen=True)
-class Truth:
-    """Labels, and how sequence is held out.
-
-    Parameters
-    ----------
-    labels
-        Known regions as BED; None to compare without.
-    name
-        Use only intervals of this name, or of this name with a number.
-    order
-        Context length of both ways of calling; None for the one that predicts best.
-    split
-        ``contigs`` or ``blocks``: what is held out; None for contigs where they make even folds.
-    block
-        Length of a block in bases; None for about 200 blocks.
-    """
-
-    labels: str | None = None
-    name: str | None = None
-    order: int | None = None
-    split: str | None = None
-    block: int | None = None
-
-
 def compare(
-    sources: Sources, output: str, truth: Truth, settings: Settings, force: bool
+    sources: Sources,
+    output: str,
+    truth: Truth,
+    settings: Settings,
+    *,
+    parts: str | None = None,
+    force: bool = False,
 ) -> Comparison:
     """Compare, and write the numbers, tables and figures.
 
@@ -73,6 +50,9 @@ def compare(
         Labels, and how sequence is held out.
     settings
         How the two are compared.
+    parts
+        The folder that holds the result of ``fold`` for each fold, under its number; None: all
+        folds are done here.
     force
         Replace an earlier result.
 
@@ -84,17 +64,11 @@ def compare(
         The labels do not fit the sequence, or a fold has one class only.
     SequenceError
         There is too little sequence for the folds.
+    OutputError
+        The result of a fold is missing or damaged, or was made with something else.
     """
     check_target(output, force)
-    prepared = _prepare(sources, truth, settings)
-    found = prepared.nothing_yet
-    if truth.labels is not None:
-        known = _with_labels(prepared.pieces, prepared.folds, truth, settings)
-        found = replace(found, known=known)
-    else:
-        found = _without_labels(found, prepared.pieces, prepared.folds, settings)
-    _write(sources, output, truth, settings, found, force)
-    return found
+    return _compare(set_up(sources, truth, settings), output, parts, force)
 
 
 def compare_once(sources: Sources, output: str, settings: Settings, force: bool) -> str:
@@ -110,72 +84,48 @@ def compare_once(sources: Sources, output: str, settings: Settings, force: bool)
     str
         The verdict in words.
     """
-    truth = Truth()
-    held_out = _prepare(sources, truth, settings).nothing_yet
-    parameters = _parameters(sources, truth, settings, held_out)
-    if not is_current(output, "compare", parameters, settings.seed, sources.files()):
-        compare(sources, output, truth, settings, force)
+    trial = set_up(sources, Truth(), settings)
+    if not is_current(output, "compare", trial.parameters(), settings.seed, trial.files()):
+        check_target(output, force)
+        _compare(trial, output, None, force)
     document = json.loads((Path(output) / "comparison.json").read_bytes())
     return str(document["verdict"]["words"])
 
 
-@dataclass(frozen=True, eq=False)
-class _Prepared:
-    """Sequence dealt out to folds, and a comparison that says how, without results."""
-
-    pieces: list[Piece]
-    folds: "np.ndarray[Any, Any]"
-    nothing_yet: Comparison
-
-
-def _prepare(sources: Sources, truth: Truth, settings: Settings) -> _Prepared:
-    if truth.labels is None and (truth.order is not None or truth.name is not None):
-        raise UsageError("--order and --label belong to --labels; give the labels, or leave it out")
-    if truth.labels is None:
-        contigs = [contig for _, found in sources.read_contigs() for contig in found]
-        labels = None
+def _compare(trial: Trial, output: str, parts: str | None, force: bool) -> Comparison:
+    folders = None if parts is None else whole_parts(parts, trial)
+    every = range(trial.settings.folds)
+    found = Comparison(len(trial.pieces), trial.split)
+    if trial.truth.labels is not None:
+        known = measured_turns(trial, every) if folders is None else read_measured(folders)
+        result = accuracy(trial.pieces, trial.folds, known, trial.settings)
+        found = replace(found, known=result)
     else:
-        contigs, labels = read_labelled(sources, truth.labels, truth.name)
-    block = truth.block or block_length(sum(len(contig) for contig in contigs))
-    pieces = cut(contigs, block, labels)
-    split = truth.split or _natural_split(contigs, settings.folds)
-    folds = deal(pieces, settings.folds, split == "contigs")
-    return _Prepared(pieces, folds, Comparison(len(pieces), split, block))
+        turns = predicted_turns(trial, every) if folders is None else read_predicted(folders)
+        unknown = _without_labels(trial, turns)
+        found = replace(found, unknown=unknown, simulated=_on_simulated(trial, unknown.model))
+    _write(trial, output, found, folders or [], force)
+    return found
 
 
-def _natural_split(contigs: list[Contig], folds: int) -> str:
-    """Return ``contigs`` where they are many and none outweighs a fold."""
-    lengths = [len(contig) for contig in contigs]
-    return "contigs" if max(lengths) * folds <= sum(lengths) else "blocks"
+def _without_labels(trial: Trial, turns: list[Predicted]) -> Blind:
+    with Progress(trial.settings.max_order + 1, "comparing", "chains") as progress:
+        return blind(
+            trial.pieces,
+            trial.folds,
+            turns,
+            trial.settings,
+            lambda name: progress.advance(1, name),
+        )
 
 
-def _with_labels(
-    pieces: list[Piece], folds: "np.ndarray[Any, Any]", truth: Truth, settings: Settings
-) -> Accuracy:
+def _on_simulated(trial: Trial, model: Model) -> Accuracy | None:
+    """Return how both do on drawn sequence; None if the model draws hardly more than one class."""
+    bases = sum(len(piece.contig) for piece in trial.pieces)
     try:
-        order = truth.order
-        if order is None:
-            order = best_labelled_order(pieces, folds, settings)
-        total = sum(len(piece.contig) for piece in pieces)
-        with Progress(total, "comparing", "bases") as progress:
-            return accuracy(pieces, folds, order, settings, progress.advance)
-    except LabelError as error:
-        raise LabelError(f"{truth.labels}: {error}") from None
-
-
-def _without_labels(
-    found: Comparison, pieces: list[Piece], folds: "np.ndarray[Any, Any]", settings: Settings
-) -> Comparison:
-    kinds = settings.max_order + settings.max_hmm_order + 2
-    with Progress(kinds, "comparing", "models") as progress:
-        unknown = blind(pieces, folds, settings, lambda name: progress.advance(1, name))
-    bases = sum(len(piece.contig) for piece in pieces)
-    try:
-        simulated = simulated_accuracy(unknown.model, bases, settings)
+        return simulated_accuracy(model, bases, trial.settings)
     except (LabelError, SequenceError):
-        # The model draws hardly any region, or hardly anything else.
-        simulated = None
-    return replace(found, unknown=unknown, simulated=simulated)
+        return None
 
 
 def simulated_accuracy(model: Model, bases: int, settings: Settings) -> Accuracy:
@@ -206,37 +156,16 @@ def simulated_accuracy(model: Model, bases: int, settings: Settings) -> Accuracy
     pieces = cut(contigs, length, truth)
     folds = deal(pieces, min(settings.folds, _TEST_RECORDS), whole_contigs=True)
     strands = replace(settings, symmetric=model.symmetric)
-    return accuracy(pieces, folds, model.order, strands)
+    turns = [
+        measured(pieces, folds, fold, model.order, strands) for fold in range(int(folds.max()) + 1)
+    ]
+    return accuracy(pieces, folds, turns, strands)
 
 
-def _write(
-    sources: Sources,
-    output: str,
-    truth: Truth,
-    settings: Settings,
-    found: Comparison,
-    force: bool,
-) -> None:
-    parameters = _parameters(sources, truth, settings, found)
-    inputs = [*sources.files(), *([truth.labels] if truth.labels is not None else [])]
+def _write(trial: Trial, output: str, found: Comparison, folders: list[Path], force: bool) -> None:
+    inputs = [*map(Path, trial.files()), *(folder / PROVENANCE for folder in folders)]
+    seed = trial.settings.seed
     with whole_folder(output, force=force) as folder:
-        write_comparison(folder, found, settings)
+        write_comparison(folder, found, trial.settings)
         written = sorted(path for path in folder.iterdir() if path.name != PROVENANCE)
-        write_provenance(folder, "compare", parameters, settings.seed, inputs, written)
-
-
-def _parameters(
-    sources: Sources, truth: Truth, settings: Settings, found: Comparison
-) -> dict[str, Any]:
-    """Return what stands in the provenance."""
-    chosen = asdict(settings)
-    del chosen["seed"]
-    return {
-        **sources.parameters(),
-        **chosen,
-        "labels": Path(truth.labels) if truth.labels is not None else None,
-        "label": truth.name,
-        "order": truth.order,
-        "split": found.split,
-        "block": found.block,
-    }
+        write_provenance(folder, "compare", trial.parameters(), seed, inputs, written)

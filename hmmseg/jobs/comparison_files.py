@@ -7,10 +7,12 @@ from pathlib import Path
 from typing import Any
 
 from hmmseg.evidence.bootstrap import Interval
-from hmmseg.evidence.comparison import Accuracy, Blind, Settings
+from hmmseg.evidence.comparison import Accuracy, Blind
 from hmmseg.evidence.rivals import CLASSIFIER, HMM
 from hmmseg.evidence.tallies import MEASURES
+from hmmseg.evidence.turns import Settings
 from hmmseg.evidence.verdicts import MARGIN
+from hmmseg.jobs.fold_files import tuned_to_dict
 from hmmseg.outputs import write_json
 from hmmseg.report.comparison import draw_accuracy, draw_heldout
 
@@ -38,8 +40,6 @@ class Comparison:
         Blocks of sequence.
     split : str
         What was held out.
-    block : int
-        Length of a block.
     known : Accuracy or None
         Against the labels.
     unknown : Blind or None
@@ -50,7 +50,6 @@ class Comparison:
 
     pieces: int
     split: str
-    block: int
     known: Accuracy | None = None
     unknown: Blind | None = None
     simulated: Accuracy | None = None
@@ -96,8 +95,8 @@ def write_comparison(folder: Path, found: Comparison, settings: Settings) -> Non
     write_json(folder / "comparison.json", document)
 
 
-def printed(found: Comparison) -> Iterator[str]:
-    """Yield the lines that a person sees at the end; times are here and in no file."""
+def printed(found: Comparison, times: bool = True) -> Iterator[str]:
+    """Yield the lines that a person sees at the end, with times or without; no file has them."""
     for what, table in ((found.known, "held-out sequence"), (found.simulated, "simulated")):
         if what is None:
             continue
@@ -106,7 +105,7 @@ def printed(found: Comparison) -> Iterator[str]:
         yield f"# {table}: {what.bases} bases, {what.true_regions} regions, order {what.order}"
         for line in accuracy_table(what).splitlines():
             yield line.rpartition("\t")[0]
-        for way, seconds in what.seconds_per_mb.items():
+        for way, seconds in what.seconds_per_mb.items() if times else ():
             yield f"# {way}: {seconds:.3f} s per Mb"
     if found.unknown is not None and found.simulated is None:
         yield from heldout_table(found.unknown).splitlines()
@@ -161,15 +160,7 @@ def _accuracy(found: Accuracy) -> dict[str, Any]:
         "order": found.order,
         "bases": found.bases,
         "true_regions": found.true_regions,
-        "classifier_tuned": [
-            {
-                **tuned.windows._asdict(),
-                "threshold_bits": tuned.threshold,
-                "mcc": tuned.mcc,
-                "calibration": tuned.scale._asdict(),
-            }
-            for tuned in found.tuned
-        ],
+        "classifier_tuned": [tuned_to_dict(tuned) for tuned in found.tuned],
         "measures": {
             name: {
                 key: _interval(interval)

@@ -40,6 +40,7 @@ def _calls(size: int) -> Iterator[tuple[str, list[str]]]:
         return
     cell = ["--states", "4", "--orders", "3"]
     yield "select", ["select", *_SEQUENCE, *cell, "--output", "selection"]
+    yield "fold", ["fold", *_SEQUENCE, "--fold", "1", "--output", "fold"]
     yield "compare", ["compare", *_SEQUENCE, "--output", "comparison"]
 
 

@@ -5,9 +5,11 @@ import pytest
 
 from hmmseg.errors import LabelError, SequenceError
 from hmmseg.evidence.bootstrap import Interval
-from hmmseg.evidence.comparison import Settings, accuracy, best_labelled_order, blind
+from hmmseg.evidence.comparison import best_labelled_order
+from hmmseg.evidence.heldout import in_place
 from hmmseg.evidence.pieces import cut, deal
 from hmmseg.evidence.tuning import tune
+from hmmseg.evidence.turns import Settings
 from hmmseg.evidence.verdicts import (
     CHAIN_BETTER,
     HMM_BETTER,
@@ -18,6 +20,7 @@ from hmmseg.evidence.verdicts import (
 from hmmseg.regions.windows import ChainPair
 from hmmseg.training.labelled import labelled_chains
 from tests.evidence.drawn import drawn_contigs, drawn_pieces, plain_pieces
+from tests.evidence.turned import accuracy_in_turns, blind_in_turns
 from tests.reference import Piece
 from tests.strategies import contig_of
 
@@ -58,7 +61,7 @@ def test_verdict_on_bits(gain: Interval, price: float, answer: str) -> None:
 
 def test_short_regions_want_the_hmm() -> None:
     pieces = drawn_pieces(2, 600_000, 400, 4_000, (0.40, 0.65), contigs=30)
-    found = accuracy(pieces, deal(pieces, 3, True), 0, SETTINGS)
+    found = accuracy_in_turns(pieces, deal(pieces, 3, True), 0, SETTINGS)
     hmm, classifier, difference = found.measures["f1"]
     assert hmm.value > 0.9
     assert difference.value == pytest.approx(hmm.value - classifier.value)
@@ -72,7 +75,9 @@ def test_short_regions_want_the_hmm() -> None:
 def test_threads_do_not_show() -> None:
     pieces = drawn_pieces(3, 100_000, 400, 3_000, (0.40, 0.65), contigs=6)
     one, two = (
-        accuracy(pieces, deal(pieces, 3, True), 1, Settings(replicates=50, threads=threads))
+        accuracy_in_turns(
+            pieces, deal(pieces, 3, True), 1, Settings(replicates=50, threads=threads)
+        )
         for threads in (1, 2)
     )
     assert one.measures == two.measures
@@ -81,7 +86,7 @@ def test_threads_do_not_show() -> None:
 
 def test_no_regions_need_no_hidden_state() -> None:
     pieces = plain_pieces(1, 400_000, 40)
-    found = blind(pieces, deal(pieces, 2, False), SETTINGS)
+    found = blind_in_turns(pieces, deal(pieces, 2, False), SETTINGS)
     assert found.verdict.words.startswith("No hidden state needed")
     assert [kind.name for kind, _ in found.rows][::3] == [
         "chain of order 0",
@@ -94,12 +99,18 @@ def test_no_regions_need_no_hidden_state() -> None:
 def test_clear_regions_need_one() -> None:
     """Half of the sequence at 30 % GC, half at 70 %: no chain can know where it stands."""
     pieces = drawn_pieces(4, 300_000, 3_000, 3_000, (0.3, 0.7), contigs=20)
-    found = blind(pieces, deal(pieces, 2, False), SETTINGS)
+    found = blind_in_turns(pieces, deal(pieces, 2, False), SETTINGS)
     assert found.verdict.answer == HMM_BETTER
     assert found.gain.low > 0.05
     assert found.agreement is not None
     assert found.agreement.mcc > 0.9
     assert sorted(found.model.gc) == pytest.approx([0.3, 0.7], abs=0.02)
+
+
+def test_values_of_folds_come_back_to_their_pieces() -> None:
+    folds = np.array([1, 0, 2, 1, 0])
+    parts = [np.array([10.0, 11.0]), np.array([20.0, 21.0]), np.array([30.0])]
+    assert in_place(folds, parts).tolist() == [20, 10, 30, 21, 11]
 
 
 def test_order_is_the_one_that_made_the_sequence() -> None:
@@ -121,7 +132,7 @@ def test_fold_with_one_class_only() -> None:
     truth[1:] = [np.empty((0, 2), np.int64)] * 3
     pieces = cut(contigs, 10_000, truth)
     with pytest.raises(LabelError, match="with fold 1 held out, the labels leave one class only"):
-        accuracy(pieces, np.arange(4), 0, SETTINGS)
+        accuracy_in_turns(pieces, np.arange(4), 0, SETTINGS)
 
 
 def test_cut_and_deal() -> None:

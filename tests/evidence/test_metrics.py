@@ -120,7 +120,7 @@ def test_tally_equals_measures_of_all_bases() -> None:
         blocks.append(BlockTally.of(pairs[0], pairs[1], 1000, halves))
         truths.append(truth), scores.append(bits), calls.append(called)
     truth, bits, called = (np.concatenate(x) for x in (truths, scores, calls))
-    found = {name: float(value[0]) for name, value in Tally(blocks).measures().items()}
+    found = {name: float(value[0]) for name, value in Tally.of(blocks).measures().items()}
     assert found["f1"] == pytest.approx(peer.f1_score(truth, called))
     assert found["mcc"] == pytest.approx(peer.matthews_corrcoef(truth, called))
     assert found["roc_area"] == pytest.approx(peer.roc_auc_score(truth, bits))
@@ -137,10 +137,28 @@ def test_weights_count_blocks_again() -> None:
         spans = np.array([[start, start + 50]])
         scores = iter([(0, rng.normal(size=1000))])
         blocks.append(BlockTally.of(spans, spans + start // 20, 1000, scores))
-    weighted = Tally(blocks).measures(np.array([[2, 0, 1]]))
-    repeated = Tally([blocks[0], blocks[0], blocks[2]]).measures()
+    weighted = Tally.of(blocks).measures(np.array([[2, 0, 1]]))
+    repeated = Tally.of([blocks[0], blocks[0], blocks[2]]).measures()
     for name, value in weighted.items():
         assert value == pytest.approx(repeated[name]), name
+
+
+def test_tallies_of_parts_are_those_of_the_whole() -> None:
+    """Parts hold their blocks in any places, and some have no edge."""
+    rng = np.random.default_rng(6)
+    blocks = []
+    for number in range(7):
+        spans = np.sort(rng.choice(1000, 6, replace=False)).reshape(-1, 2)
+        called = spans[: number % 4] + rng.integers(-3, 3)
+        scores = iter([(0, rng.normal(size=1000))])
+        blocks.append(BlockTally.of(spans, np.clip(called, 0, 1000), 1000, scores))
+    places = [np.array([5, 1]), np.array([0]), np.array([6, 3, 2, 4])]
+    parts = [Tally.of([blocks[number] for number in place.tolist()]) for place in places]
+    together, whole = Tally.together(parts, places), Tally.of(blocks)
+    weights = resampled(7, 20, seed=1)
+    for name, values in whole.measures(weights).items():
+        assert np.array_equal(together.measures(weights)[name], values, equal_nan=True), name
+    assert together.regions.tolist() == whole.regions.tolist()
 
 
 def test_resampling_is_fair_and_repeatable() -> None:

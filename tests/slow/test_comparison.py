@@ -2,10 +2,11 @@
 
 import pytest
 
-from hmmseg.evidence.comparison import Settings, accuracy, blind
 from hmmseg.evidence.pieces import deal
+from hmmseg.evidence.turns import Settings
 from hmmseg.evidence.verdicts import HMM_BETTER, MARGIN, NO_DIFFERENCE
 from tests.evidence.drawn import drawn_pieces, plain_pieces
+from tests.evidence.turned import accuracy_in_turns, blind_in_turns
 
 pytestmark = pytest.mark.slow
 
@@ -16,7 +17,7 @@ GC = (0.40, 0.65)
 def test_long_regions_make_no_difference() -> None:
     """Of 20 kb: the interval of the difference in F1 lies within the margin."""
     pieces = drawn_pieces(1, 5_000_000, 20_000, 30_000, GC)
-    found = accuracy(pieces, deal(pieces, 5, True), 0, Settings())
+    found = accuracy_in_turns(pieces, deal(pieces, 5, True), 0, Settings())
     difference = found.measures["f1"][2]
     print(found.verdict.words)
     assert -MARGIN < difference.low <= difference.high < MARGIN
@@ -26,7 +27,7 @@ def test_long_regions_make_no_difference() -> None:
 def test_short_regions_want_the_hmm() -> None:
     """Of 400 bases: the HMM is ahead beyond its interval."""
     pieces = drawn_pieces(2, 5_000_000, 400, 4_000, GC)
-    found = accuracy(pieces, deal(pieces, 5, True), 0, Settings())
+    found = accuracy_in_turns(pieces, deal(pieces, 5, True), 0, Settings())
     print(found.verdict.words)
     assert found.measures["f1"][2].low > 0
     assert found.verdict.answer == HMM_BETTER
@@ -38,7 +39,7 @@ def test_without_regions_no_hidden_state_is_needed() -> None:
     right = 0
     for seed in range(10):
         pieces = plain_pieces(seed, 5_000_000)
-        found = blind(pieces, deal(pieces, 2, False), settings)
+        found = blind_in_turns(pieces, deal(pieces, 2, False), settings)
         print(seed, found.verdict.words)
         right += found.verdict.words.startswith("No hidden state needed")
     assert right >= 9
