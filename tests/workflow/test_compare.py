@@ -5,35 +5,38 @@ from pathlib import Path
 
 import pytest
 
-from hmmseg.sequence.alphabet import decode
-from tests.evidence.drawn import drawn_contigs
+from tests.evidence.drawn import drawn_contigs, write_drawn
 from tests.workflow.running import Project
 
 pytestmark = pytest.mark.xdist_group("workflow")
+
+BASES = 60_000
 
 
 @pytest.fixture
 def project(tmp_path: Path) -> Project:
     """Two assemblies of the same sequence, of which one is compared."""
-    contigs, truth = drawn_contigs(1, 60_000, 500, 2_000, (0.35, 0.65), 6)
-    with Path(tmp_path, "a.fa").open("w") as fasta, Path(tmp_path, "a.bed").open("w") as bed:
-        for contig, spans in zip(contigs, truth, strict=True):
-            text = decode(contig.bases)
-            fasta.write(f">{contig.record}\n{text if isinstance(text, str) else text.decode()}\n")
-            bed.writelines(f"{contig.record}\t{start}\t{end}\n" for start, end in spans)
-    made = Project(tmp_path)
-    made.configure(
+    write_drawn(tmp_path, drawn_contigs(1, BASES, 500, 2_000, (0.35, 0.65), 6))
+    configure(Project(tmp_path))
+    return Project(tmp_path)
+
+
+def configure(project: Project, **config: int) -> None:
+    project.configure(
         [
-            {"assembly": "compared", "fasta": "a.fa", "labels": "a.bed", "compare": "run"},
-            {"assembly": "plain", "fasta": "a.fa"},
-        ]
+            {"assembly": "compared", "fasta": "s.fa", "labels": "truth.bed", "compare": "run"},
+            {"assembly": "plain", "fasta": "s.fa"},
+        ],
+        **config,
     )
-    return made
+
+
+def of_comparison(project: Project) -> list[tuple[str, str]]:
+    return [job for job in project.planned() if job[0] in ("fold", "compare")]
 
 
 def test_comparison_of_one_assembly(project: Project) -> None:
-    planned = project.planned()
-    assert [job for job in planned if job[0] == "compare"] == [("compare", "compared")]
+    assert of_comparison(project) == [("compare", "compared")]
     project.snakemake("results/compared/comparison")
     folder = project.folder / "results" / "compared" / "comparison"
     document = json.loads((folder / "comparison.json").read_text())
@@ -42,3 +45,30 @@ def test_comparison_of_one_assembly(project: Project) -> None:
     log = project.folder / "results" / "logs" / "compare" / "compared.log"
     assert document["verdict"]["words"] in log.read_text()
     project.hmmseg("verify", str(folder))
+
+
+def test_folds_of_a_large_assembly_are_jobs(project: Project) -> None:
+    """One that may hold more than one batch: the same files, but for what they were made from."""
+    project.snakemake("results/compared/comparison")
+    results = project.folder / "results" / "compared"
+    whole = (results / "comparison").rename(results / "whole")
+    configure(project, batch_bases=BASES // 2)
+    assert of_comparison(project) == [("compare", "compared")] + [("fold", "compared")] * 5
+    project.snakemake("results/compared/comparison")
+    for number in range(1, 6):
+        log = project.folder / "results" / "logs" / "fold" / "compared" / f"{number}.log"
+        assert log.read_text().startswith(f"fold {number} of 5: ")
+    assert not list(results.glob("folds/*"))
+    project.hmmseg("verify", str(results / "comparison"))
+    ours, theirs = (
+        {path.name: path.read_bytes() for path in folder.iterdir() if path.suffix}
+        for folder in (results / "comparison", whole)
+    )
+    inputs = [
+        [entry["name"] for entry in json.loads(files.pop("provenance.json"))["inputs"]]
+        for files in (ours, theirs)
+    ]
+    assert inputs[0] == inputs[1] + ["provenance.json"] * 5
+    assert len(ours) > 3
+    assert ours == theirs
+    assert of_comparison(project) == []

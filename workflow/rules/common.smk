@@ -50,6 +50,8 @@ NULLS = 3
 # A job draws and calls as much of it as so many batches hold: without tracks to write, it takes
 # a quarter of the time that decoding takes.
 BATCHES_OF_NULLS = 4
+# In so many turns a comparison holds sequence out, each a job of its own where there is much.
+FOLDS = 5
 
 
 def culprit(problem):
@@ -284,6 +286,7 @@ wildcard_constraints:
     assembly=r"[A-Za-z0-9][A-Za-z0-9._-]*",
     batch=r"[0-9a-f]{32}",
     part=r"[1-9][0-9]*",
+    fold=r"[1-9][0-9]*",
     states=r"[1-8]",
     order=r"[0-8]",
 
@@ -472,14 +475,30 @@ def calibrate_options(wildcards):
     return words
 
 
-def compare_options(wildcards):
-    """How the model is compared with chains."""
+def fold_options(wildcards):
+    """How the model is compared with chains, and how much is held out at a time."""
     settings = SETTINGS[wildcards.assembly]
     keys = ["labels", "seed", "decoder"]
     if settings["states"] > 1 and all(settings[key] is None for key in STARTS):
         keys.append("states")
-    strands = f"--{settings['strands']}"
-    return f"{strands} {options(wildcards, *keys)} {survey_options(wildcards)}"
+    how = f"--{settings['strands']} --folds {FOLDS}"
+    return f"{how} {options(wildcards, *keys)} {survey_options(wildcards)}"
+
+
+def folds_of(wildcards):
+    """Folders of the folds of a comparison, each named by its number."""
+    if wildcards.assembly not in LARGE:
+        return []
+    return [f"{RESULTS}/{wildcards.assembly}/folds/{fold + 1}" for fold in range(FOLDS)]
+
+
+def compare_options(wildcards):
+    """How the model is compared with chains, and where the folds are if they are done."""
+    words = fold_options(wildcards)
+    if wildcards.assembly in LARGE:
+        folder = shlex.quote(f"{RESULTS}/{wildcards.assembly}")
+        words += f" --parts {folder}/folds"
+    return words
 
 
 def batches_of(assembly):

@@ -1,4 +1,28 @@
-# The hidden Markov model beside Markov chains, on sequence that neither has seen.
+# The hidden Markov model beside Markov chains, on sequence that neither has seen. Of a large
+# assembly each fold is a job of its own.
+
+
+rule fold:
+    input:
+        fasta=fasta_of,
+        records=records_of,
+        exclude=exclude_of,
+        labels=labels_of,
+    output:
+        folder=temp(directory(f"{RESULTS}/{{assembly}}/folds/{{fold}}")),
+    log:
+        f"{RESULTS}/logs/fold/{{assembly}}/{{fold}}.log",
+    benchmark:
+        f"{RESULTS}/benchmarks/fold/{{assembly}}/{{fold}}.tsv"
+    threads: config["threads"]
+    resources:
+        mem_mb=memory_of("fold"),
+        runtime=minutes_of("fold"),
+    params:
+        options=fold_options,
+    shell:
+        "hmmseg fold {input.fasta:q} --fold {wildcards.fold} --output {output.folder:q}"
+        " {params.options} --threads {threads} > {log:q} 2>&1"
 
 
 rule compare:
@@ -7,6 +31,7 @@ rule compare:
         records=records_of,
         exclude=exclude_of,
         labels=labels_of,
+        folds=folds_of,
     output:
         folder=directory(f"{RESULTS}/{{assembly}}/comparison"),
     log:
