@@ -21,6 +21,10 @@ rule all:
         pages=pages(),
 
 
+onstart:
+    look_only_when_a_job_ends(workflow)
+
+
 onsuccess:
     print(reused_batches())
 

@@ -62,8 +62,12 @@ def computing(project: Project, names: list[str], frozen: bool) -> float:
             if not frozen:
                 model = f"{out}/model.json"
                 assert hmmseg(["train", fasta, "--threads", "1", "--output", model]) == 0
+            else:
+                assert hmmseg(["adopt", model, "--output", f"{out}/model.json"]) == 0
             calls = ["--threads", "1", "--output", f"{out}/calls"]
             assert hmmseg(["decode", fasta, "--model", model, *calls]) == 0
+            page = ["--output", f"{out}/report.html", "--figures", f"{out}/figures"]
+            assert hmmseg(["report", out, *page]) == 0
             spent.append(time.process_time() - begin)
     # The first has waited for imports and compiled code.
     return float(np.mean(spent[1:]))

@@ -1,5 +1,6 @@
 """Schemas, explanations and style of the workflow agree with one another."""
 
+import inspect
 import re
 import subprocess
 import sys
@@ -8,6 +9,7 @@ from typing import Any
 
 import pytest
 import yaml
+from snakemake.scheduling.job_scheduler import JobScheduler
 
 from tests.workflow.running import ROOT, Project
 
@@ -51,6 +53,13 @@ def test_snakefmt_has_nothing_to_change() -> None:
     call = [str(Path(sys.executable).with_name("snakefmt")), "--check", "Snakefile", "workflow"]
     done = subprocess.run(call, cwd=ROOT, capture_output=True, text=True, check=False)
     assert done.returncode == 0, done.stderr
+
+
+def test_what_the_snakefile_lifts_is_still_what_makes_the_scheduler_look_again() -> None:
+    # If this fails, see whether `look_only_when_a_job_ends` in common.smk is still of use.
+    source = inspect.getsource(JobScheduler.schedule)
+    assert "if self.job_rate_limiter is not None:" in source
+    assert "self._schedule_reevalutation(self.job_rate_limiter.timespan)" in source
 
 
 def test_the_linter_misses_only_conda_environments(tmp_path: Path) -> None:

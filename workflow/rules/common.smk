@@ -266,6 +266,17 @@ def one_of(names):
     return "|".join(map(re.escape, names)) or "(?!)"
 
 
+def look_only_when_a_job_ends(workflow):
+    """Keep the scheduler from looking through all jobs many times a second.
+
+    Snakemake limits how many jobs it starts in a second, and for that looks again one second after
+    each look while jobs are ready: each job that ends begins another such series, so that with
+    hundreds of ready jobs it is soon busy with nothing else. Jobs here are few enough to start
+    without a limit; on a cluster `jobs` of the profile limits them.
+    """
+    workflow.scheduler.job_rate_limiter = None
+
+
 BEGUN = time.time()
 check_config()
 COLUMNS = ("assembly", *FILES, "fix", "circular", *config["defaults"])
