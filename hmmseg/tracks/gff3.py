@@ -6,11 +6,11 @@ Stein L. (2020). Generic Feature Format Version 3 (GFF3), specification version 
 The Sequence Ontology Project, github.com/The-Sequence-Ontology/Specifications.
 """
 
+import math
 from collections.abc import Collection, Iterator, Mapping
 from pathlib import Path
 from urllib.parse import quote
 
-import numpy as np
 import pandas as pd
 
 from hmmseg.errors import OutputError
@@ -71,33 +71,33 @@ def write_regions_gff3(
 
 
 def _feature_lines(table: pd.DataFrame, record_lengths: Mapping[str, int]) -> Iterator[str]:
-    ids = set(table["region_id"])
-    for key, regions in table.groupby("record", sort=False):
-        record = str(key)
-        length = record_lengths[record]
-        if (regions["end"] > length).any():
-            if record in ids:
-                raise OutputError(
-                    f"GFF3 cannot tell the record {record} from the region of that name; "
-                    "rename the record"
-                )
-            yield _feature(record, REGION, (1, length), ".", {"ID": record, "Is_circular": "true"})
-        columns = ("start", "end", "log_odds_bits", "region_id", "state", "mean_posterior")
-        if CRITERION in regions:
-            kinds = np.where(regions[CRITERION] == "yes", ISLAND, REGION).tolist()
-        else:
-            kinds = [REGION] * len(regions)
-        for kind, start, end, odds, name, state, mean in zip(
-            kinds, *(regions[c].tolist() for c in columns), strict=True
-        ):
-            score = fixed(odds, DECIMALS["log_odds_bits"]) if np.isfinite(odds) else "."
-            mean_text = fixed(mean, DECIMALS["mean_posterior"])
-            attributes = {"ID": name, "state": state, "mean_posterior": mean_text}
-            yield _feature(record, kind, (start + 1, end), score, attributes)
+    crosses = (table["end"] > table["record"].map(record_lengths)).to_numpy(dtype=bool)
+    circles = set(table["record"][crosses])
+    if same := circles & set(table["region_id"]):
+        record = min(same, key=list(record_lengths).index)
+        raise OutputError(
+            f"GFF3 cannot tell the record {record} from the region of that name; rename the record"
+        )
+    is_island = table[CRITERION] == "yes" if CRITERION in table else [False] * len(table)
+    columns = ("record", "start", "end", "log_odds_bits", "region_id", "state", "mean_posterior")
+    before = None
+    for island, record, start, end, odds, name, state, mean in zip(
+        is_island, *(table[column].tolist() for column in columns), strict=True
+    ):
+        if record != before:
+            seqid, before = _seqid(record), record
+            if record in circles:
+                whole = (1, record_lengths[record])
+                yield _feature(seqid, REGION, whole, ".", {"ID": record, "Is_circular": "true"})
+        score = fixed(odds, DECIMALS["log_odds_bits"]) if math.isfinite(odds) else "."
+        mean_text = fixed(mean, DECIMALS["mean_posterior"])
+        attributes = {"ID": name, "state": state, "mean_posterior": mean_text}
+        kind = ISLAND if island else REGION
+        yield _feature(seqid, kind, (start + 1, end), score, attributes)
 
 
 def _feature(
-    record: str,
+    seqid: str,
     kind: str,
     interval: tuple[int, int],
     score: str,
@@ -105,8 +105,7 @@ def _feature(
 ) -> str:
     last = ";".join(f"{key}={value.translate(_ATTRIBUTE)}" for key, value in attributes.items())
     start, end = interval
-    fields = (_seqid(record), SOURCE, kind, str(start), str(end), score, ".", ".", last)
-    return "\t".join(fields)
+    return "\t".join((seqid, SOURCE, kind, str(start), str(end), score, ".", ".", last))
 
 
 def _seqid(name: str) -> str:

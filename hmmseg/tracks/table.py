@@ -6,7 +6,9 @@ of a circular record ends at ``start + length``, beyond the record's length. Fur
 may follow.
 """
 
-from collections.abc import Collection, Iterator, Mapping
+import math
+import re
+from collections.abc import Collection, Iterator, Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
@@ -53,9 +55,11 @@ DECIMALS: Mapping[str, int] = {
 
 _TEXT = ("region_id", "record", "state")
 _WHOLE = ("start", "end", "length")
+_NUMBERS = ("mean_posterior", "log_odds_bits")
 _NOT_KNOWN = "NA"
 _ROWS_AT_ONCE = 1 << 14
-_WHOLE_NUMBER = r"0|-?[1-9][0-9]{0,17}"
+_IS_POSITION = re.compile(r"-?[0-9]{1,18}").fullmatch
+_IS_WHOLE_NUMBER = re.compile(r"0|-?[1-9][0-9]{0,17}").fullmatch
 
 
 def write_regions_table(
@@ -114,8 +118,8 @@ def read_regions_table(path: str | Path) -> pd.DataFrame:
     for number, fields in enumerate(lines, start=2):
         if len(fields) != len(header):
             raise OutputError(f"{path}:{number}: {len(fields)} columns, the header {len(header)}")
-    raw = pd.DataFrame(lines, columns=header, dtype=str)
-    return pd.DataFrame({name: _typed(raw[name], path) for name in header}, columns=header)
+    columns = zip(header, zip(*lines, strict=True) if lines else [()] * len(header), strict=True)
+    return pd.DataFrame({name: _typed(cells, name, path) for name, cells in columns})
 
 
 def check_regions(
@@ -203,24 +207,28 @@ def _as_text(column: "pd.Series[Any]", decimals: int | None) -> list[str]:
         return [_NOT_KNOWN if pd.isna(value) else str(value) for value in values]
     numbers = [float(value) for value in values]
     return [
-        _NOT_KNOWN if np.isnan(x) else f"{x:.6g}" if decimals is None else fixed(x, decimals)
+        _NOT_KNOWN if math.isnan(x) else f"{x:.6g}" if decimals is None else fixed(x, decimals)
         for x in numbers
     ]
 
 
-def _typed(column: "pd.Series[str]", path: str | Path) -> "pd.Series[Any]":
-    name = str(column.name)
+def _typed(cells: Sequence[str], name: str, path: str | Path) -> "pd.Series[Any]":
+    """Return a column as what its cells say that it is."""
     if name in _TEXT:
-        return column.astype(object)
-    numbers = pd.to_numeric(column.replace(_NOT_KNOWN, "nan"), errors="coerce")
-    not_numbers = (numbers.isna() & ~column.isin([_NOT_KNOWN, "nan"])).to_numpy()
-    if name not in COLUMNS:
-        if column.str.fullmatch(_WHOLE_NUMBER).to_numpy(dtype=bool).all():
-            return column.astype(np.int64)
-        return column.astype(object) if not_numbers.any() else numbers.astype(np.float64)
+        return pd.Series(cells, dtype=object)
+    # Lists and arrays of objects: pandas' own columns of text take several times as long.
+    given = np.array(["nan" if cell == _NOT_KNOWN else cell for cell in cells], dtype=object)
+    numbers = pd.to_numeric(given, errors="coerce")
+    is_whole = _IS_POSITION if name in _WHOLE else _IS_WHOLE_NUMBER
+    if name not in _NUMBERS and all(map(is_whole, cells)):
+        return pd.Series(numbers.astype(np.int64))
+    numbers = numbers.astype(np.float64)
     if name in _WHOLE:
-        not_numbers = ~column.str.fullmatch(r"-?[0-9]{1,18}").to_numpy(dtype=bool)
-    if not_numbers.any():
-        at = int(np.argmax(not_numbers))
-        raise OutputError(f"{path}:{at + 2}: {name} is {column.iloc[at]!r}, not a number")
-    return numbers.astype(np.int64 if name in _WHOLE else np.float64)
+        bad = [at for at, cell in enumerate(cells) if not is_whole(cell)]
+    else:
+        bad = [at for at in np.flatnonzero(np.isnan(numbers)).tolist() if given[at] != "nan"]
+    if not bad:
+        return pd.Series(numbers)
+    if name not in COLUMNS:
+        return pd.Series(cells, dtype=object)
+    raise OutputError(f"{path}:{bad[0] + 2}: {name} is {cells[bad[0]]!r}, not a number")
