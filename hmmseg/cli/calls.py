@@ -137,12 +137,13 @@ def cut(sources: Any, planned: str, output: str, force: bool) -> None:
 @click.argument("planned", metavar="BATCHES")
 @click.option("--parts", required=True, metavar="DIR", help="Where the batches' results are.")
 @options.output
+@options.threads
 @options.force
-def gather(planned: str, parts: str, output: str, force: bool) -> None:
+def gather(planned: str, parts: str, output: str, threads: int, force: bool) -> None:
     """Put the calls of batches together."""
     from hmmseg.jobs import gather as job
 
-    print_regions(job.gather(planned, parts, output, force))
+    print_regions(job.gather(planned, parts, output, threads=threads, force=force))
 
 
 @click.command()

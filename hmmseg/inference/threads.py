@@ -1,13 +1,14 @@
 """Work shared out to threads, as many as were asked for and no more."""
 
 import os
-from collections.abc import Callable, Iterable
+from collections import deque
+from collections.abc import Callable, Iterable, Iterator
 from concurrent.futures import ThreadPoolExecutor
 from functools import cache
 from threading import local
 from typing import TypeVar
 
-__all__ = ["aside", "in_threads"]
+__all__ = ["ahead", "aside", "in_threads"]
 
 _Item = TypeVar("_Item")
 _Result = TypeVar("_Result")
@@ -48,6 +49,33 @@ def aside(function: Callable[[_Item], _Result], item: _Item, threads: int) -> Ca
         return lambda: result
     return _kept_pool(threads).submit(function, item).result
 
+
+def ahead(
+    function: Callable[[_Item], _Result], items: Iterable[_Item], threads: int
+) -> Iterator[_Result]:
+    """Yield what `in_threads` returns, of which no more than is soon wanted is made beforehand.
+
+    Parameters
+    ----------
+    function
+        Releases the interpreter's lock.
+    items
+        What it is called with, one after the other.
+    threads
+        Threads to use; with one a result is made when it is asked for.
+    """
+    waiting: deque[Callable[[], _Result]] = deque()
+    most = _AHEAD * threads if threads > 1 else 0
+    for item in items:
+        waiting.append(aside(function, item, threads))
+        if len(waiting) > most:
+            yield waiting.popleft()()
+    while waiting:
+        yield waiting.popleft()()
+
+
+_AHEAD = 2
+"""Results that wait for each thread."""
 
 _OF_THIS_THREAD = local()
 

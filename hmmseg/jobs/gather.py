@@ -8,6 +8,7 @@ import numpy as np
 import pandas as pd
 
 from hmmseg.errors import OutputError
+from hmmseg.inference.threads import ahead
 from hmmseg.jobs.decode import Summary, track_name, write_result
 from hmmseg.jobs.plan import Plan, read_plan
 from hmmseg.jobs.results import read_summary
@@ -16,8 +17,8 @@ from hmmseg.provenance import is_intact, read_provenance, write_provenance
 from hmmseg.regions.composition import WORDS, Counts, counts_together
 from hmmseg.regions.table import number_regions
 from hmmseg.tracks.bigwig import PosteriorTrack
-from hmmseg.tracks.collection import TrackCollection
 from hmmseg.tracks.counts import read_counts
+from hmmseg.tracks.packed import PackedTrack
 from hmmseg.tracks.table import read_regions_table
 
 __all__ = ["gather"]
@@ -26,7 +27,9 @@ _OF_ONE_BATCH = frozenset({"fasta", "exclude"})
 """Parameters in which the parts of one assembly differ."""
 
 
-def gather(planned: str, parts: str, output: str, force: bool) -> dict[str, Any]:
+def gather(
+    planned: str, parts: str, output: str, *, threads: int = 1, force: bool
+) -> dict[str, Any]:
     """Write one folder of calls from those of batches, as if the assembly had been decoded whole.
 
     Parameters
@@ -37,6 +40,8 @@ def gather(planned: str, parts: str, output: str, force: bool) -> dict[str, Any]
         The folder that holds the results of its batches, each under its key.
     output
         The folder to write.
+    threads
+        Threads to use; the result does not depend on it.
     force
         Replace an earlier result.
 
@@ -53,7 +58,7 @@ def gather(planned: str, parts: str, output: str, force: bool) -> dict[str, Any]
     check_target(output, force)
     plan = read_plan(planned)
     folders = {batch.key: Path(parts) / batch.key for batch in plan.batches}
-    model = _common_model(list(folders.values()), planned)
+    model = _common_model(list(folders.values()), planned, threads)
     summaries = [read_summary(folder) for folder in folders.values()]
     lengths = {record.name: record.length for record in plan.records}
     states = tuple(summaries[0]["regions"])
@@ -69,7 +74,7 @@ def gather(planned: str, parts: str, output: str, force: bool) -> dict[str, Any]
     table, counts = _regions(plan, list(folders.values()), Path(planned))
     with whole_folder(output, force=force) as folder:
         for state in states:
-            _join_tracks(plan, folders, track_name(state), folder / track_name(state))
+            _join_tracks(plan, folders, track_name(state), folder / track_name(state), threads)
         summary = write_result(folder, result, table, counts)
         written = sorted(path for path in folder.iterdir() if path.name != PROVENANCE)
         inputs = [one / PROVENANCE for one in (Path(planned), *folders.values())]
@@ -98,19 +103,23 @@ def _counts(folder: Path) -> Counts:
     return Counts(*read_counts(folder / "composition.tsv", WORDS))
 
 
-def _join_tracks(plan: Plan, folders: Mapping[str, Path], name: str, output: Path) -> None:
+def _join_tracks(
+    plan: Plan, folders: Mapping[str, Path], name: str, output: Path, threads: int
+) -> None:
     lengths = {record.name: record.length for record in plan.records}
-    with PosteriorTrack(output, lengths) as track, TrackCollection() as collection:
+    parts = {key: PackedTrack(folder / name) for key, folder in folders.items()}
+    with PosteriorTrack(output, lengths, threads) as track:
+        for part in parts.values():
+            track.expect(part)
         for record in plan.records:
             if record.batch:
-                for runs in collection.runs(folders[record.batch] / name, record.alias):
-                    track.add(record.name, *runs)
+                track.copy(record.name, parts[record.batch], record.alias)
 
 
-def _common_model(folders: Sequence[Path], planned: str) -> str:
+def _common_model(folders: Sequence[Path], planned: str, threads: int) -> str:
     """Return the name of the model, and raise if parts are absent, damaged or not alike."""
-    first: Mapping[str, Any] = {}
-    for folder in folders:
+
+    def origin(folder: Path) -> dict[str, Any]:
         if not folder.is_dir():
             raise OutputError(
                 f"{folder}: the result of this batch is gone; remove {planned} and give the "
@@ -121,6 +130,10 @@ def _common_model(folders: Sequence[Path], planned: str) -> str:
             raise OutputError(
                 f"{folder}: damaged; remove it and {planned}, and give the command again"
             )
+        return document
+
+    first: Mapping[str, Any] = {}
+    for folder, document in zip(folders, ahead(origin, folders, threads), strict=True):
         if document["command"] != "decode":
             raise OutputError(f"{folder}: made by {document['command']}, not by decode")
         shared = {k: v for k, v in document["parameters"].items() if k not in _OF_ONE_BATCH}

@@ -4,8 +4,12 @@ The layout is that of the supplement of Kent et al. (2010), whose tables are nam
 part. Numbers are little-endian; a *block* is a stretch of compressed data that one entry of the
 index points to; records are numbered in the order in which their data come.
 
+A block of runs is a zlib stream whose first 24 bytes, the head of the block, are stored and not
+deflated: so the number of its record can be read and changed without unpacking it.
+
 References
 ----------
+Deutsch P. (1996). RFC 1951, DEFLATE Compressed Data Format Specification, 1.3; RFC 1950, ZLIB.
 Kent W. J., Zweig A. S., Barber G., Hinrichs A. S., Karolchik D. (2010). BigWig and BigBed:
 enabling browsing of large distributed datasets. Bioinformatics 26, 2204-2207.
 """
@@ -21,6 +25,7 @@ from numpy.typing import NDArray
 __all__ = [
     "BLOCK",
     "BRANCH",
+    "ENTRY",
     "HEADER",
     "INDEX_HEADER",
     "INDEX_MAGIC",
@@ -31,7 +36,9 @@ __all__ = [
     "NODE",
     "RUN",
     "SECTION",
+    "SECTION_HEAD",
     "SECTION_OF_RUNS",
+    "STORED",
     "SUMMARY",
     "ZOOM",
     "ZOOM_HEADER",
@@ -39,8 +46,7 @@ __all__ = [
     "name_types",
     "pack_section",
     "packed_block",
-    "unpack_section",
-    "write_block",
+    "packed_section",
     "write_index",
     "write_names",
 ]
@@ -65,6 +71,12 @@ NODE = struct.Struct("<BBH")
 # Table 13: record, first and last base, step, span, kind, reserved, items; kind 1 is runs.
 SECTION = struct.Struct("<IIIIIBBH")
 SECTION_OF_RUNS = 1
+SECTION_HEAD = np.dtype(
+    [("record", "<u4"), ("place", "<u4", 4), ("kind", "u1"), ("reserved", "u1"), ("count", "<u2")]
+)
+# What comes before the head in a packed block: the two bytes of zlib (RFC 1950, 2.2), then
+# "not the last, stored" and the length of what is stored with its complement (RFC 1951, 3.2.4).
+STORED = struct.pack("<BBBHH", 0x78, 0x5E, 0, SECTION.size, 0xFFFF - SECTION.size)
 # Table 14: magic, items to a node, items, extent (as in BLOCK), end of data, items to a block.
 INDEX_HEADER = struct.Struct("<IIQIIIIQII")
 
@@ -85,6 +97,7 @@ ZOOM = np.dtype(
 _EXTENT = [("record", "<u4"), ("start", "<u4"), ("last_record", "<u4"), ("end", "<u4")]
 # Table 16: the extent of a block, its place in the file and its size there.
 BLOCK = np.dtype([*_EXTENT, ("offset", "<u8"), ("size", "<u8")])
+ENTRY = struct.Struct("<IIIIQQ")  # one BLOCK
 # Table 17: the extent of a node, and its place.
 BRANCH = np.dtype([*_EXTENT, ("offset", "<u8")])
 
@@ -100,15 +113,6 @@ def pack_section(record: int, runs: Items) -> bytes:
     return head + runs.tobytes()
 
 
-def unpack_section(content: bytes) -> tuple[int, Items]:
-    """Undo `pack_section`; ValueError if the block holds anything else than runs."""
-    record, _, _, _, _, kind, _, count = SECTION.unpack_from(content)
-    runs = np.frombuffer(content, dtype=RUN, offset=SECTION.size)
-    if kind != SECTION_OF_RUNS or count != len(runs):
-        raise ValueError("a block that is not one of runs")
-    return record, runs
-
-
 def name_types(size: int) -> tuple[np.dtype[np.void], np.dtype[np.void]]:
     """Return what leaves and branches of the tree of names hold (tables 10 and 11)."""
     leaf = np.dtype([("key", f"S{size}"), ("number", "<u4"), ("length", "<u4")])
@@ -120,13 +124,11 @@ def packed_block(content: bytes) -> bytes:
     return zlib.compress(content, _EFFORT)
 
 
-def write_block(
-    file: BinaryIO, extent: tuple[int, int, int, int], packed: bytes
-) -> tuple[int, ...]:
-    """Write a compressed block, and return the entry of the index (BLOCK) for it."""
-    entry = (*extent, file.tell(), len(packed))
-    file.write(packed)
-    return entry
+def packed_section(content: bytes) -> bytes:
+    """Return the content of a block of runs compressed, but for its head."""
+    deflating = zlib.compressobj(_EFFORT, zlib.DEFLATED, -zlib.MAX_WBITS)
+    runs = deflating.compress(memoryview(content)[SECTION.size :]) + deflating.flush()
+    return STORED + content[: SECTION.size] + runs + zlib.adler32(content).to_bytes(4, "big")
 
 
 def write_names(file: BinaryIO, record_lengths: Mapping[str, int]) -> None:

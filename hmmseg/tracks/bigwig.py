@@ -6,11 +6,10 @@ when the disk is full, and makes a file that others cannot read if there are no 
 tests read what is written here by pyBigWig and by pybigtools.
 """
 
-import struct
-import zlib
 from collections.abc import Iterator, Mapping
 from contextlib import contextmanager
 from dataclasses import dataclass
+from math import isclose
 from pathlib import Path
 from types import TracebackType
 from typing import Any, Self
@@ -20,12 +19,14 @@ import numpy.typing as npt
 
 from hmmseg.errors import OutputError
 from hmmseg.tracks.bbi import RUN
-from hmmseg.tracks.bigwig_file import RUNS_IN_BLOCK, BigWigReader, BigWigWriter, in_batches
+from hmmseg.tracks.bigwig_file import RUNS_IN_BLOCK, BigWigWriter
+from hmmseg.tracks.bigwig_reader import BigWigReader, explained_reading
+from hmmseg.tracks.blocks import NO_SUMS, sums_of
+from hmmseg.tracks.packed import PackedTrack
 
 __all__ = [
     "PosteriorTrack",
     "TrackSummary",
-    "explained_reading",
     "read_batches",
     "read_track",
     "rounded_runs",
@@ -147,6 +148,35 @@ class PosteriorTrack:
             while len(self._pending[0]) > RUNS_IN_BLOCK:
                 self._hand_over(RUNS_IN_BLOCK)
 
+    def expect(self, part: PackedTrack) -> None:
+        """Take note of what another track holds, of which every record will be copied."""
+        self._file.count_in(*part.sums)
+
+    def copy(self, record: str, part: PackedTrack, alias: str) -> None:
+        """Take over all runs of a record from another track, without unpacking them.
+
+        Parameters
+        ----------
+        record : str
+            Name of the record: one that stands later in `record_lengths` than those before.
+        part : PackedTrack
+            The other track.
+        alias : str
+            What the record is called there.
+
+        Raises
+        ------
+        OutputError
+            If the other track cannot be read or does not have the record.
+        """
+        self._turn_to(record)
+        if part.record_lengths.get(alias) != self.record_lengths[record]:
+            raise OutputError(f"{part.path}: record {alias} is not in it, or of another length")
+        with explained_reading(part.path):
+            for blocks, packed in part.blocks_of(alias):
+                with self._explained():
+                    self._file.copy_blocks(self._rank[record], blocks, packed)
+
     def close(self) -> None:
         """Close the file, open it again and compare it with what was handed over.
 
@@ -156,12 +186,16 @@ class PosteriorTrack:
             If the file does not hold it.
         """
         self._hand_over(len(self._pending[0]))
-        with self._explained():
-            self._file.finish()
-        found = summarize_track(self.path)
-        if found.record_lengths != self.record_lengths:
+        with self._explained(), explained_reading(self.path):
+            index = self._file.finish()
+            with BigWigReader(self.path) as file:
+                lengths, same_index = file.record_lengths, np.array_equal(file.blocks, index)
+        found = self._file.found
+        if lengths != self.record_lengths:
             raise OutputError(f"{self.path}: read back, its records differ from those written")
-        if (found.bases, found.total) != (self._file.bases, self._file.total):
+        # The total has been summed up in another order.
+        same_total = isclose(found.total, self._file.total, rel_tol=1e-9, abs_tol=1e-9)
+        if not (same_index and found.bases == self._file.bases and same_total):
             raise OutputError(
                 f"{self.path}: read back, it differs from what was written; is the disk sound?"
             )
@@ -254,20 +288,14 @@ def summarize_track(path: str | Path) -> TrackSummary:
     OutputError
         If the file is no readable bigWig.
     """
-    bases, total, low, high = 0, 0.0, np.inf, -np.inf
+    found = NO_SUMS
     with explained_reading(path), BigWigReader(path) as file:
         record_lengths = file.record_lengths
-        lengths = list(record_lengths.values())
-        for record, runs in file.runs():
-            widths, values = runs["end"] - runs["start"], runs["value"].astype(np.float64)
-            if not np.isfinite(values).all() or runs["end"].max() > lengths[record]:
-                raise ValueError("values or intervals out of bounds")
-            bases += int(widths.sum(dtype=np.int64))
-            total += float((widths * values).sum())
-            low, high = min(low, float(values.min())), max(high, float(values.max()))
-    if not bases:
-        low = high = np.nan
-    return TrackSummary(record_lengths, bases, total, low, high)
+        lengths = np.array(list(record_lengths.values()), dtype=np.int64)
+        for records, runs in file.batches(size=max(map(int, lengths), default=1)):
+            found = found.and_of(sums_of(records, runs, lengths))
+    low, high = (found.lowest, found.highest) if found.bases else (np.nan, np.nan)
+    return TrackSummary(record_lengths, found.bases, found.total, low, high)
 
 
 def read_track(path: str | Path) -> Iterator[tuple[str, _Integers, _Integers, _Numbers]]:
@@ -326,18 +354,9 @@ def read_batches(
             if record_lengths.get(name, length) != length:
                 raise OutputError(f"{path}: {name} has another length there; make it again")
         ranks = np.array([rank.get(name, -1) for name in file.record_lengths], dtype=np.int64)
-        wanted = ((number, runs) for number, runs in file.runs() if ranks[number] >= 0)
-        for numbers, runs in in_batches(wanted, size):
-            yield ranks[numbers], runs
-
-
-@contextmanager
-def explained_reading(path: str | Path) -> Iterator[None]:
-    """Raise OutputError for what reading a damaged bigWig file may raise."""
-    try:
-        yield
-    except (ValueError, IndexError, struct.error, zlib.error) as error:
-        raise OutputError(f"{path}: not a readable bigWig file of runs ({error})") from error
+        for numbers, runs in file.batches(size):
+            wanted = ranks[numbers] >= 0
+            yield ranks[numbers[wanted]], runs[wanted]
 
 
 def _no_runs() -> _Runs:

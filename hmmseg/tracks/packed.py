@@ -1,70 +1,59 @@
-"""Posterior tracks in many files, read record by record in any order."""
+"""Finished tracks whose packed blocks are taken over into another, record by record."""
 
-from collections import OrderedDict
 from collections.abc import Iterator
+from itertools import pairwise
 from pathlib import Path
-from types import TracebackType
-from typing import Any, Self
 
 import numpy as np
-import numpy.typing as npt
 
-from hmmseg.errors import OutputError
-from hmmseg.tracks.bigwig import explained_reading
-from hmmseg.tracks.bigwig_file import BigWigReader
+from hmmseg.tracks.bbi import Items
+from hmmseg.tracks.bigwig_reader import BigWigReader, explained_reading
+from hmmseg.tracks.blocks import Bytes, consecutive
 
-__all__ = ["TrackCollection"]
+__all__ = ["PackedTrack"]
 
-_OPEN_AT_ONCE = 100
-"""Systems let a process open some hundreds of files; a large assembly has more batches."""
-
-_Runs = tuple[npt.NDArray[np.int64], npt.NDArray[np.int64], npt.NDArray[np.float64]]
+_BLOCKS_AT_ONCE = 1024
 
 
-class TrackCollection:
-    """Hands out the runs of single records; used as a context manager, which closes the files."""
+class PackedTrack:
+    """Hands out the blocks of single records, in any order.
 
-    def __init__(self) -> None:
-        self._open: OrderedDict[Path, tuple[BigWigReader, dict[str, int]]] = OrderedDict()
+    The index is read once. The file is open only while blocks are read: a large assembly has more
+    parts than a system lets a process open.
 
-    def runs(self, path: Path, record: str) -> Iterator[_Runs]:
-        """Yield the runs of a record in a file: starts, ends, values, in pieces.
+    Parameters
+    ----------
+    path : path
+        A bigWig file written by `PosteriorTrack`.
 
-        Raises
-        ------
-        OutputError
-            The file is no readable bigWig, or does not have the record.
-        """
-        with explained_reading(path):
-            reader, numbers = self._reader(path)
-            if record not in numbers:
-                raise OutputError(f"{path}: record {record} is not in it")
-            for runs in reader.runs_of(numbers[record]):
-                starts, ends = runs["start"].astype(np.int64), runs["end"].astype(np.int64)
-                yield starts, ends, runs["value"].astype(np.float64)
+    Attributes
+    ----------
+    record_lengths : dict
+        Length of each record in bases.
+    sums : tuple of int and float
+        How many bases have a value, and the sum of these.
 
-    def _reader(self, path: Path) -> tuple[BigWigReader, dict[str, int]]:
-        if path not in self._open:
-            if len(self._open) >= _OPEN_AT_ONCE:
-                _, (oldest, _) = self._open.popitem(last=False)
-                oldest.close()
-            reader = BigWigReader(path)
-            numbers = {name: number for number, name in enumerate(reader.record_lengths)}
-            self._open[path] = reader, numbers
-        self._open.move_to_end(path)
-        return self._open[path]
+    Raises
+    ------
+    OutputError
+        The file is no readable bigWig.
+    """
 
-    def __enter__(self) -> Self:
-        """Return the collection itself."""
-        return self
+    def __init__(self, path: Path) -> None:
+        self.path = path
+        with explained_reading(path), BigWigReader(path) as file:
+            self.record_lengths, self.sums = file.record_lengths, file.sums()
+            self._blocks = file.blocks
+        numbers = np.arange(len(self.record_lengths) + 1)
+        bounds = np.searchsorted(self._blocks["record"], numbers).tolist()
+        self._bounds = dict(zip(self.record_lengths, pairwise(bounds), strict=True))
 
-    def __exit__(
-        self,
-        kind: type[BaseException] | None,
-        error: BaseException | None,
-        traceback: TracebackType | None,
-    ) -> Any:
-        """Close all files."""
-        for reader, _ in self._open.values():
-            reader.close()
-        self._open.clear()
+    def blocks_of(self, record: str) -> Iterator[tuple[Items, Bytes]]:
+        """Yield blocks of a record, BLOCK[block], and what they hold, in pieces."""
+        first, last = self._bounds[record]
+        for at in range(first, last, _BLOCKS_AT_ONCE):
+            blocks = self._blocks[at : min(at + _BLOCKS_AT_ONCE, last)].copy()
+            begin, end = consecutive(blocks)
+            with self.path.open("rb") as file:
+                file.seek(begin)
+                yield blocks, np.fromfile(file, np.uint8, end - begin)

@@ -6,7 +6,7 @@ import time
 
 import pytest
 
-from hmmseg.inference.threads import aside, in_threads
+from hmmseg.inference.threads import ahead, aside, in_threads
 
 
 @pytest.mark.parametrize("threads", [1, 2, 3])
@@ -42,6 +42,16 @@ def test_what_runs_in_a_thread_may_want_threads() -> None:
     worker.start()
     worker.join(30)
     assert found == [18 + item for item in range(4)]
+
+
+@pytest.mark.parametrize(("threads", "most"), [(1, 1), (2, 5), (3, 7)])
+def test_no_more_is_done_ahead_than_is_soon_wanted(threads: int, most: int) -> None:
+    begun: list[int] = []
+    results = ahead(lambda item: begun.append(item) or item * item, range(20), threads)
+    for item in range(20):
+        assert next(results) == item * item
+        assert len(begun) <= item + most
+    assert next(results, None) is None
 
 
 def test_a_failure_is_told_and_the_threads_go_on() -> None:

@@ -82,6 +82,15 @@ def check_whole(*chosen: str) -> None:
     assert main(["verify", "gathered"]) == 0
 
 
+@pytest.mark.parametrize("threads", ["1", "2", "3"])
+def test_any_number_of_threads_gathers_the_same_bytes(threads: str, here: Path) -> None:
+    in_batches()
+    gather = ["gather", "batches", "--parts", "parts", "--output", "again", "--threads", threads]
+    assert main(gather) == 0
+    for path in Path("gathered").iterdir():
+        assert Path("again", path.name).read_bytes() == path.read_bytes(), path.name
+
+
 @pytest.mark.parametrize(
     "chosen",
     [

@@ -109,6 +109,7 @@ rule gather:
         f"{RESULTS}/benchmarks/gather/{{assembly}}.tsv"
     wildcard_constraints:
         assembly=one_of(LARGE),
+    threads: config["threads"]
     resources:
         mem_mb=memory_of("gather"),
         runtime=minutes_of("gather"),
@@ -116,4 +117,4 @@ rule gather:
         parts=PARTS,
     shell:
         "hmmseg gather {input.batches:q} --parts {params.parts:q} --output {output.folder:q}"
-        " > {log:q} 2>&1"
+        " --threads {threads} > {log:q} 2>&1"
