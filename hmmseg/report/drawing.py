@@ -4,7 +4,7 @@ import io
 import warnings
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
-from functools import wraps
+from functools import lru_cache, wraps
 from pathlib import Path
 from typing import Any
 
@@ -115,8 +115,12 @@ def logarithmic(axes: Any, which: str) -> None:
     axis.set_minor_formatter(lambda value, _: "")
 
 
+@lru_cache(maxsize=1)
 def svg_of(drawing: Any) -> bytes:
-    """Return the SVG of a figure, or the bytes of one that was drawn before."""
+    """Return the SVG of a figure, or the bytes of one that was drawn before.
+
+    The one drawn last is kept: a page asks for its width and then for all of it.
+    """
     if isinstance(drawing, bytes):
         return drawing
     stream = io.StringIO()

@@ -7,10 +7,13 @@ from typing import Any
 
 __all__ = ["packed", "plain_json"]
 
+_EFFORT = 6
+"""Of 1 to 9. The most takes seven times as long for three per cent of the size."""
+
 
 def packed(content: bytes) -> str:
     """Return bytes compressed (zlib, RFC 1950) and in Base64, which needs no escape in HTML."""
-    return base64.b64encode(zlib.compress(content, 9)).decode("ascii")
+    return base64.b64encode(zlib.compress(content, _EFFORT)).decode("ascii")
 
 
 def plain_json(document: Any) -> str:
