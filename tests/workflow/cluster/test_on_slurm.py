@@ -9,6 +9,7 @@ import signal
 import time
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
+from dataclasses import replace
 from pathlib import Path
 
 import pytest
@@ -17,6 +18,7 @@ from tests.workflow.cluster.processes import Payload, alive, payload, wait_until
 from tests.workflow.cluster.slurm import NODES, Slurm
 from tests.workflow.conftest import DATA, ROWS
 from tests.workflow.running import ROOT, Project
+from tests.workflow.test_calibrate import drawn
 
 pytestmark = [pytest.mark.slurm, pytest.mark.xdist_group("workflow")]
 
@@ -81,6 +83,28 @@ def test_results_are_those_of_one_machine(
     assert [str(len(ours) + 1)] == steps
     assert {job["JobState"] for job in ours} == {"COMPLETED"}
     assert {job["NodeList"] for job in ours} == set(NODES)
+
+
+@pytest.mark.slow
+def test_evidence_is_that_of_one_machine(slurm: Slurm, tmp_path: Path) -> None:
+    """Selection cells, null replicates and comparison folds are jobs of Slurm, too."""
+    projects = []
+    for profile in ("default", *PROFILES):
+        (tmp_path / profile).mkdir()
+        project = replace(drawn(tmp_path / profile), profile=profile, variables=slurm.environment)
+        project.add(ROOT / "demo_data" / "model.json")
+        asked = {"calibrate": "run", "null_bases": "120000", "compare": "run"}
+        project.configure(
+            [{"assembly": "large", "fasta": "a.fa", "model": "model.json", **asked}],
+            batch_bases=30_000, select_states=[1, 2], select_orders=[0],
+        )  # fmt: skip
+        project.snakemake(*(("--jobs=6", QUICKLY[profile]) if profile in PROFILES else ()))
+        projects.append(project)
+    for project in projects[1:]:
+        assert_same(project, projects[0])
+        assert {job["JobState"] for job in jobs(slurm, project)} == {"COMPLETED"}
+        logs = {path.name for path in (project.folder / "results/logs").iterdir()}
+        assert {"select", "recommend", "nulls", "replicate", "fold", "compare"} <= logs
 
 
 @contextmanager
