@@ -6,7 +6,9 @@ min_version("9.0")
 configfile: "config/config.yaml"
 
 
+include: "workflow/rules/settings.smk"
 include: "workflow/rules/common.smk"
+include: "workflow/rules/options.smk"
 include: "workflow/rules/resources.smk"
 
 
