@@ -229,6 +229,8 @@ def read_provenance(folder_or_file: str | Path) -> dict[str, Any]:
     if set(document) != _KEYS:
         keys = ", ".join(sorted(_KEYS ^ set(document)))
         raise OutputError(f"{path}: keys are missing or not known: {keys}")
+    if not isinstance(document["parameters"], dict):
+        raise OutputError(f'{path}: "parameters" is no object')
     for key in ("inputs", "outputs"):
         if not _is_list_of_fingerprints(document[key]):
             raise OutputError(f'{path}: "{key}" is not a list of name, sha256 and bytes')

@@ -227,14 +227,6 @@ _TRIAL = (
     _block,
     options.strands,
     click.option(
-        "--max-order",
-        type=click.IntRange(0, 8),
-        default=8,
-        show_default=True,
-        metavar="N",
-        help="Highest order of chains, without labels.",
-    ),
-    click.option(
         "--max-hmm-order",
         type=click.IntRange(0, 6),
         default=3,
@@ -264,14 +256,6 @@ _TRIAL = (
         default="path",
         show_default=True,
         help="How the HMM calls: best path, or posterior over 0.5.",
-    ),
-    click.option(
-        "--replicates",
-        type=click.IntRange(10),
-        default=1000,
-        show_default=True,
-        metavar="B",
-        help="Bootstrap replicates.",
     ),
     options.seed,
     options.sequence_options(),
@@ -308,6 +292,22 @@ def fold(sources: Any, truth: Any, settings: Any, output: str, number: int, forc
 @options.output
 @click.option(
     "--parts", metavar="DIR", help="Do no fold: there is what hmmseg fold wrote, by its number."
+)
+@click.option(
+    "--max-order",
+    type=click.IntRange(0, 8),
+    default=8,
+    show_default=True,
+    metavar="N",
+    help="Highest order of chains, without labels.",
+)
+@click.option(
+    "--replicates",
+    type=click.IntRange(10),
+    default=1000,
+    show_default=True,
+    metavar="B",
+    help="Bootstrap replicates.",
 )
 @_trial
 def compare(

@@ -116,7 +116,7 @@ def nulls(files: Any, plan: Any, output: str, force: bool) -> None:
     from hmmseg.jobs import nulls as job
 
     sequence = job.nulls(files, output, plan, force)
-    bases = sum(task.bases for task in sequence.replicates.tasks)
+    bases = int(sequence.replicates.bases.sum())
     click.echo("null\treplicates\tbases")
     for name in sequence.nulls:
         click.echo(f"{name}\t{sequence.replicates.count}\t{bases}")

@@ -1,8 +1,7 @@
 """Scores of the regions that are called in null sequence, or of the boundaries between them."""
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
-from typing import NamedTuple
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -18,12 +17,12 @@ __all__ = [
     "Found",
     "Replicates",
     "Scoring",
-    "Task",
     "boundary_scores",
     "call_nulls",
     "replicates_of",
 ]
 
+_EVERY = -1
 _BITS_DECIMALS = 3
 """As in the table of regions, so that equal scores are equal."""
 
@@ -88,43 +87,48 @@ class Scoring:
         return classes, np.round(bits, _BITS_DECIMALS)
 
 
-class Task(NamedTuple):
-    """What is drawn and called in one go.
-
-    Attributes
-    ----------
-    replicate : int
-        Number of the replicate.
-    pieces : tuple of int
-        Numbers of its pieces: all of them if a model is trained on the replicate, else one.
-    bases : int
-        In these pieces.
-    """
-
-    replicate: int
-    pieces: tuple[int, ...]
-    bases: int
-
-
 @dataclass(frozen=True, eq=False)
 class Replicates:
     """What is drawn: replicates of the pieces of an assembly.
+
+    There may be millions of pieces, so what there is to do stands in arrays.
 
     Attributes
     ----------
     pieces : sequence of Piece
         All of them.
-    tasks : sequence of Task
-        All there is to do, replicate by replicate.
+    numbers : int64[task]
+        Number of the replicate.
+    places : int64[task]
+        Number of the piece that is drawn and called; -1 for all of them, because a model is
+        trained on them.
+    bases : int64[task]
+        To draw.
     """
 
     pieces: Sequence[Piece]
-    tasks: Sequence[Task]
+    numbers: NDArray[np.int64]
+    places: NDArray[np.int64]
+    bases: NDArray[np.int64]
 
     @property
     def count(self) -> int:
         """How many replicates there are."""
-        return 1 + max((task.replicate for task in self.tasks), default=-1)
+        return 1 + int(self.numbers.max(initial=-1))
+
+    def taken(self, chosen: NDArray[np.bool_]) -> "Replicates":
+        """Return the same with some of the tasks."""
+        return replace(
+            self,
+            numbers=self.numbers[chosen],
+            places=self.places[chosen],
+            bases=self.bases[chosen],
+        )
+
+    def pieces_of(self, task: int) -> Sequence[int]:
+        """Return the numbers of the pieces in a task."""
+        place = int(self.places[task])
+        return range(len(self.pieces)) if place == _EVERY else [place]
 
 
 def replicates_of(
@@ -144,22 +148,20 @@ def replicates_of(
     whole
         Draw every piece even if that makes more bases, all of a replicate as one task.
     """
-    lengths = np.array([piece.length for piece in pieces])
+    lengths = np.array([piece.length for piece in pieces], np.int64)
     total = int(lengths.sum())
-    everything = np.arange(len(pieces))
-    if whole or total <= bases:
-        chosen = [everything] * max(1, -(-bases // total))
-    else:
+    times = max(1, -(-bases // total))
+    if whole:
+        everything = np.full(times, _EVERY)
+        return Replicates(pieces, np.arange(times), everything, np.full(times, total))
+    chosen = np.arange(len(pieces))
+    if total > bases:
         random = np.random.Generator(np.random.PCG64(np.random.SeedSequence([seed, 2])))
         order = np.argsort(random.random(len(pieces)), kind="stable")
         enough = int(np.searchsorted(np.cumsum(lengths[order]), bases)) + 1
-        chosen = [np.sort(order[:enough])]
-    tasks = []
-    for number, some in enumerate(chosen):
-        for together in [some] if whole else some[:, None]:
-            at = tuple(together.tolist())
-            tasks.append(Task(number, at, int(lengths[together].sum())))
-    return Replicates(pieces, tasks)
+        chosen = np.sort(order[:enough])
+    numbers = np.repeat(np.arange(times), len(chosen))
+    return Replicates(pieces, numbers, np.tile(chosen, times), np.tile(lengths[chosen], times))
 
 
 @dataclass(frozen=True, eq=False)
@@ -244,13 +246,14 @@ def call_nulls(
                 watch(len(contig))
         return Found(len(contig), *scoring.of(intervals.states, bits, contig.closed))
 
-    def done(task: Task) -> list[Found]:
-        contigs = (drawn(task.replicate, at) for at in task.pieces)
+    def done(task: int) -> list[Found]:
+        number = int(replicates.numbers[task])
+        contigs = (drawn(number, at) for at in replicates.pieces_of(task))
         if refit is None:
             return [call(caller, contig) for contig in contigs]
         replicate = list(contigs)
         own = Caller(refit(replicate), caller.decoder, caller.threshold, caller.filters)
         return [call(own, contig) for contig in replicate]
 
-    parts = in_threads(done, replicates.tasks, threads)
+    parts = in_threads(done, range(len(replicates.numbers)), threads)
     return Found.together([one for some in parts for one in some])

@@ -77,6 +77,8 @@ def calibrate(
         sequence = null_sequence_of(files, model, called, plan)
         found = sequence.call(threads)
     else:
+        # The calls were compared with the sequence when this was prepared, and are as they were.
+        called.check_intact()
         sequence, found, parts = read_parts(files, plan, *drawn)
         inputs += parts
     outcome = _outcome(called, sequence, found, q)

@@ -13,7 +13,7 @@ from hmmseg.jobs.results import read_summary
 from hmmseg.jobs.sources import Sources
 from hmmseg.model import Model
 from hmmseg.outputs import sha256_of
-from hmmseg.provenance import read_provenance
+from hmmseg.provenance import is_intact, read_provenance
 from hmmseg.regions.calling import PATH, POSTERIOR
 from hmmseg.regions.intervals import Filters
 from hmmseg.regions.odds import LogOdds
@@ -117,6 +117,11 @@ class Called:
             gap_min=int(settings["gap_min"]),
             soft_mask=str(settings["soft_mask"]),
         )
+
+    def check_intact(self) -> None:
+        """Raise OutputError if a file is not as it was when the calls were made."""
+        if not is_intact(self.folder, self.provenance):
+            raise OutputError(f"{self.folder}: changed since these calls were made; make them anew")
 
     def check_model(self, path: str, model: Model) -> None:
         """Raise OutputError if the calls name another model, or the model reports other states."""

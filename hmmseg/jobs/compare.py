@@ -12,7 +12,7 @@ from hmmseg.evidence.pieces import cut, deal
 from hmmseg.evidence.turns import Predicted, Settings, measured
 from hmmseg.jobs.comparison_files import Comparison, write_comparison
 from hmmseg.jobs.fold import measured_turns, predicted_turns
-from hmmseg.jobs.fold_files import read_measured, read_predicted, whole_parts
+from hmmseg.jobs.fold_files import folders_of, read_measured, read_predicted
 from hmmseg.jobs.sources import Sources
 from hmmseg.jobs.trial import Trial, Truth, set_up
 from hmmseg.model import Model
@@ -93,7 +93,7 @@ def compare_once(sources: Sources, output: str, settings: Settings, force: bool)
 
 
 def _compare(trial: Trial, output: str, parts: str | None, force: bool) -> Comparison:
-    folders = None if parts is None else whole_parts(parts, trial)
+    folders = None if parts is None else folders_of(parts, trial)
     every = range(trial.settings.folds)
     found = Comparison(len(trial.pieces), trial.split)
     if trial.truth.labels is not None:

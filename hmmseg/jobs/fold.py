@@ -61,7 +61,7 @@ def fold(
         did = f"an HMM and two chains of order {turn.order} tested"
     else:
         [turn] = predicted_turns(trial, [number - 1])
-        did = f"{len(turn.models)} HMMs tried"
+        did = f"{len(turn.models)} {'HMM' if len(turn.models) == 1 else 'HMMs'} tried"
     with whole_folder(output, force=force) as folder:
         if isinstance(turn, Measured):
             written = write_measured(folder, number, turn)

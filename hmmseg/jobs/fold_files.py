@@ -8,25 +8,26 @@ from typing import Any
 
 import numpy as np
 
-from hmmseg.errors import OutputError, UsageError
+from hmmseg.errors import UsageError
 from hmmseg.evidence.calibration import Scale
 from hmmseg.evidence.rivals import CLASSIFIER, HMM
 from hmmseg.evidence.tallies import Tally
 from hmmseg.evidence.tuning import Tuned
 from hmmseg.evidence.turns import Measured, Predicted
+from hmmseg.jobs.parts import whole_parts
 from hmmseg.jobs.trial import Trial
 from hmmseg.model.document import model_from_dict, model_to_dict
 from hmmseg.outputs import write_json
-from hmmseg.provenance import difference, is_intact, origin, read_provenance
+from hmmseg.provenance import origin
 from hmmseg.regions.windows import Windows
 
 __all__ = [
     "COMMAND",
+    "folders_of",
     "parameters_of",
     "read_measured",
     "read_predicted",
     "tuned_to_dict",
-    "whole_parts",
     "write_measured",
     "write_predicted",
 ]
@@ -34,11 +35,14 @@ __all__ = [
 COMMAND = "fold"
 _FORMAT, _VERSION = "hmmseg-fold", 1
 _DOCUMENT, _COUNTS = "fold.json", "counts.npz"
+_OF_ALL_FOLDS = frozenset({"replicates", "max_order"})
+"""Settings that bear on what is made of the folds together."""
 
 
 def parameters_of(trial: Trial, number: int) -> dict[str, Any]:
     """Return what stands in the provenance of a fold, numbered from 1."""
-    return {**trial.parameters(), "fold": number}
+    everything = trial.parameters()
+    return {**{k: v for k, v in everything.items() if k not in _OF_ALL_FOLDS}, "fold": number}
 
 
 def tuned_to_dict(tuned: Tuned) -> dict[str, Any]:
@@ -110,7 +114,7 @@ def read_predicted(folders: Sequence[Path]) -> list[Predicted]:
     return turns
 
 
-def whole_parts(parts: str, trial: Trial) -> list[Path]:
+def folders_of(parts: str, trial: Trial) -> list[Path]:
     """Return the folder of each fold, all of them whole and made as is asked for now.
 
     Raises
@@ -126,30 +130,9 @@ def whole_parts(parts: str, trial: Trial) -> list[Path]:
             "--parts needs sequence in files: standard input leaves no checksum to compare"
         )
     # The sequence is read for its checksum once, not for each fold.
-    expected = origin(COMMAND, trial.parameters(), seed, files)
-    folders = []
-    for number in range(1, trial.settings.folds + 1):
-        folder = Path(parts) / str(number)
-        again = f"make it by hmmseg fold --fold {number} with the options given here"
-        if not folder.is_dir():
-            raise OutputError(f"{folder}: there is no result of this fold; {again}")
-        found = _whole(folder)
-        if found is None:
-            raise OutputError(f"{folder}: damaged; remove it and {again}")
-        expected["parameters"]["fold"] = number
-        if other := difference(found, expected):
-            raise OutputError(f"{folder}: made with another {other}; remove it and {again}")
-        folders.append(folder)
-    return folders
-
-
-def _whole(folder: Path) -> dict[str, Any] | None:
-    """Return the provenance of a result; None if that or the result is damaged."""
-    try:
-        found = read_provenance(folder)
-    except OutputError:
-        return None
-    return found if is_intact(folder, found) else None
+    expected = origin(COMMAND, parameters_of(trial, 1), seed, files)
+    again = "make it by hmmseg fold --fold {} with the options given here"
+    return whole_parts(parts, trial.settings.folds, expected, "fold", again)
 
 
 def _document(number: int, content: dict[str, Any]) -> dict[str, Any]:

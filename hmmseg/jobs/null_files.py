@@ -12,7 +12,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from hmmseg.errors import HmmsegError, OutputError
+from hmmseg.errors import OutputError
 from hmmseg.evidence.assembly import Assembly
 from hmmseg.evidence.drift import Drift
 from hmmseg.evidence.null_regions import Found
@@ -60,6 +60,8 @@ def write_null_sequence(folder: Path, sequence: NullSequence, model: str) -> Non
         "order": assembly.order,
         "drift": {key: getattr(assembly.drift, key) for key in ("mean", "spread", "spans")},
     }
+    names = {piece.record: piece.contig.record for piece in assembly.pieces}
+    document["records"] = [names.get(at) for at in range(len(assembly.drift.levels))]
     write_json(folder / _DOCUMENT, document)
     (folder / _MODEL).write_bytes(Path(model).read_bytes())
     levels = assembly.drift.levels
@@ -74,7 +76,7 @@ def write_null_sequence(folder: Path, sequence: NullSequence, model: str) -> Non
 
 
 def read_null_sequence(folder: Path) -> NullSequence:
-    """Read what `write_null_sequence` has written.
+    """Read what `write_null_sequence` has written, of a folder that has been found whole.
 
     Raises
     ------
@@ -85,13 +87,13 @@ def read_null_sequence(folder: Path) -> NullSequence:
         document = json.loads((folder / _DOCUMENT).read_bytes())
         if document["format"] != FORMAT or document["version"] != VERSION:
             raise ValueError("another document")
-        with np.load(folder / _ARRAYS) as arrays:
-            assembly = _assembly(document, arrays)
-        model = load_model(folder / _MODEL)
-    except (OSError, ValueError, KeyError, TypeError, HmmsegError):
+    except (OSError, ValueError, KeyError, TypeError):
         raise OutputError(
             f"{folder}: holds no null sequence; give a folder written by hmmseg nulls"
         ) from None
+    with np.load(folder / _ARRAYS) as arrays:
+        assembly = _assembly(document, arrays)
+    model = load_model(folder / _MODEL)
     filters = Filters(**document["filters"])
     caller = Caller(model, document["decoder"], document["threshold"], filters)
     refit = refit_of(model, str(folder / _MODEL)) if document["refit"] else None
@@ -128,27 +130,26 @@ def _packed(what: str, pieces: Sequence[Piece]) -> dict[str, NDArray[Any]]:
         for p in pieces
     ]
     return {
-        f"{what}_names": np.array([p.contig.record for p in pieces]),
         f"{what}_places": np.array(places, np.int64).reshape(-1, 5),
         f"{what}_missing": np.concatenate([p.missing for p in pieces]),
         f"{what}_runs": np.array([len(p.missing) for p in pieces], np.int64),
     }
 
 
-def _unpacked(what: str, arrays: Arrays) -> list[Piece]:
-    names, places = arrays[f"{what}_names"].tolist(), arrays[f"{what}_places"].tolist()
+def _unpacked(what: str, names: Sequence[str], arrays: Arrays) -> list[Piece]:
+    places = arrays[f"{what}_places"].tolist()
     missing = _apart(arrays[f"{what}_missing"], arrays[f"{what}_runs"])
     found = []
-    for name, place, runs in zip(names, places, missing, strict=True):
-        record, start, length, closed, whole = place
-        contig = Contig(name, start, np.empty(0, np.uint8), bool(closed), whole)
+    for (record, start, length, closed, whole), runs in zip(places, missing, strict=True):
+        contig = Contig(names[record], start, np.empty(0, np.uint8), bool(closed), whole)
         found.append(Piece(contig, length, runs, record))
     return found
 
 
 def _assembly(document: Mapping[str, Any], arrays: Arrays) -> Assembly:
     drift = Drift(_apart(arrays["levels"], arrays["windows"]), **document["drift"])
-    contigs, pieces = _unpacked("contigs", arrays), _unpacked("pieces", arrays)
+    names = document["records"]
+    contigs, pieces = (_unpacked(what, names, arrays) for what in ("contigs", "pieces"))
     bases, order = document["bases"], document["order"]
     return Assembly(contigs, pieces, bases, order, arrays["counts"], drift)
 

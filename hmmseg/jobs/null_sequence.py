@@ -1,10 +1,12 @@
 """Null sequence for a folder of calls: how much of which kind, and how it is called."""
 
-from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from functools import cached_property
 from pathlib import Path
 from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
 
 from hmmseg.errors import ModelError, UsageError
 from hmmseg.evidence.amount import null_bases_of
@@ -13,7 +15,6 @@ from hmmseg.evidence.null_regions import (
     Found,
     Replicates,
     Scoring,
-    Task,
     call_nulls,
     replicates_of,
 )
@@ -26,7 +27,7 @@ from hmmseg.progress import Progress
 from hmmseg.regions.calling import Caller
 from hmmseg.regions.odds import LogOdds
 
-__all__ = ["CalledFiles", "NullPlan", "NullSequence", "null_sequence_of", "share"]
+__all__ = ["CalledFiles", "NullPlan", "NullSequence", "null_sequence_of", "part_numbers"]
 
 _REFITTED = 5_000_000
 """Assemblies below this are trained anew on each null replicate."""
@@ -170,36 +171,38 @@ class NullSequence:
         mapping of str to Found
             By the null's name.
         """
-        everything = [(name, task) for name in self.nulls for task in self.replicates.tasks]
-        named = share(everything, part, of)
+        replicates = self.replicates
+        mine = part_numbers(replicates.bases, len(self.nulls), of) == part
         found = {}
-        with Progress(sum(task.bases for _, task in named), "calibrating", "bases") as progress:
-            for name, null in self.nulls.items():
-                tasks = [task for own, task in named if own == name]
+        with Progress(int((mine * replicates.bases).sum()), "calibrating", "bases") as progress:
+            for (name, null), chosen in zip(self.nulls.items(), mine, strict=True):
                 found[name] = call_nulls(
-                    null, replace(self.replicates, tasks=tasks), self.caller, self.scoring,
+                    null, replicates.taken(chosen), self.caller, self.scoring,
                     [self.plan.seed, NULLS.index(name)],
                     refit=self.refit, threads=threads, watch=progress.advance,
                 )  # fmt: skip
         return found
 
 
-def share(named: Sequence[tuple[str, Task]], part: int, of: int) -> list[tuple[str, Task]]:
-    """Return the tasks of one part of several, which are alike in bases as far as tasks allow.
+def part_numbers(bases: NDArray[np.int64], nulls: int, of: int) -> NDArray[np.int64]:
+    """Return the part, from 1, in which each task is done; parts are alike in bases.
 
     Parameters
     ----------
-    named
-        All tasks, each with the name of its null.
-    part, of
-        Which part, from 1, of how many.
+    bases
+        int64[task]: of each task, the same for each null.
+    nulls
+        How many nulls there are.
+    of
+        How many parts there are.
+
+    Returns
+    -------
+    int64[null, task]
     """
-    total, begin, chosen = sum(task.bases for _, task in named), 0, []
-    for name, task in named:
-        if begin * of // total == part - 1:
-            chosen.append((name, task))
-        begin += task.bases
-    return chosen
+    ends = np.cumsum(np.tile(bases, nulls))
+    begins = ends - np.tile(bases, nulls)
+    return (1 + begins * of // ends[-1]).reshape(nulls, -1)
 
 
 def null_sequence_of(

@@ -13,9 +13,16 @@ from hmmseg.jobs.null_files import (
     write_null_sequence,
 )
 from hmmseg.jobs.null_sequence import CalledFiles, NullPlan, NullSequence, null_sequence_of
+from hmmseg.jobs.parts import count_told, whole_parts
 from hmmseg.model import load_model
 from hmmseg.outputs import PROVENANCE, check_target, whole_folder
-from hmmseg.provenance import is_current, read_provenance, write_provenance
+from hmmseg.provenance import (
+    difference,
+    is_intact,
+    origin,
+    read_provenance,
+    write_provenance,
+)
 
 __all__ = ["nulls", "read_parts", "replicate"]
 
@@ -74,9 +81,14 @@ def replicate(
     Raises
     ------
     OutputError
-        The folder holds no null sequence.
+        The folder holds no null sequence, or it is damaged.
     """
     check_target(output, force)
+    source = read_provenance(planned)
+    if source["command"] != "nulls":
+        raise OutputError(f"{planned}: made by {source['command']}; give a folder written by nulls")
+    if not is_intact(planned, source):
+        raise OutputError(f"{planned}: damaged; remove it and make it again by hmmseg nulls")
     sequence = read_null_sequence(Path(planned))
     found = sequence.call(threads, part, of)
     with whole_folder(output, force=force) as folder:
@@ -111,33 +123,25 @@ def read_parts(
     OutputError
         A folder is missing, damaged, or of something else.
     """
-    origin = ("nulls", _parameters(files, plan), plan.seed, files.inputs())
-    if not is_current(planned, *origin):
-        raise OutputError(
-            f"{planned}: is no null sequence for these calls with these options; make it again "
-            "by hmmseg nulls"
-        )
-    folders = _folders(Path(parts), Path(planned))
+    again = "make it by hmmseg nulls with the options given here"
+    try:
+        found = read_provenance(planned)
+    except OutputError as error:
+        raise OutputError(f"{error}; {again}") from None
+    expected = origin("nulls", _parameters(files, plan), plan.seed, files.inputs())
+    if other := difference(found, expected):
+        raise OutputError(f"{planned}: made with another {other}; remove it and {again}")
+    if not is_intact(planned, found):
+        raise OutputError(f"{planned}: damaged; remove it and {again}")
+    of = count_told(parts, "of")
+    made = origin("replicate", {"part": 1, "of": of}, None, [Path(planned, PROVENANCE)])
+    again = f"make it by hmmseg replicate --part {{}} --of {of}"
+    folders = whole_parts(parts, of, made, "part", again)
     sequence = read_null_sequence(Path(planned))
     several = [read_found(folder, list(sequence.nulls)) for folder in folders]
-    found = {name: Found.together([one[name] for one in several]) for name in sequence.nulls}
-    return sequence, found, [folder / PROVENANCE for folder in (Path(planned), *folders)]
+    together = {name: Found.together([one[name] for one in several]) for name in sequence.nulls}
+    return sequence, together, [folder / PROVENANCE for folder in (Path(planned), *folders)]
 
 
 def _parameters(files: CalledFiles, plan: NullPlan) -> dict[str, Any]:
     return {**files.parameters(), **plan.parameters()}
-
-
-def _folders(parts: Path, planned: Path) -> list[Path]:
-    """Return the folders of all parts in their order, each named by its number."""
-    told = read_provenance(parts / "1")
-    of = told["parameters"].get("of", 1)
-    folders = [parts / str(number) for number in range(1, of + 1)]
-    for number, folder in enumerate(folders, start=1):
-        origin = ("replicate", {"part": number, "of": of}, None, [planned / PROVENANCE])
-        if not is_current(folder, *origin):
-            raise OutputError(
-                f"{folder}: is not part {number} of {of} of {planned}, or is damaged; make it "
-                f"again by hmmseg replicate --part {number} --of {of}"
-            )
-    return folders

@@ -167,8 +167,11 @@ class PosteriorTrack:
         Raises
         ------
         OutputError
-            If the other track cannot be read or does not have the record.
+            If the other track cannot be read or does not have the record, or if runs of the record
+            are there already.
         """
+        if record == self._record:
+            raise OutputError(f"{self.path}: there are runs of {record} already")
         self._turn_to(record)
         if part.record_lengths.get(alias) != self.record_lengths[record]:
             raise OutputError(f"{part.path}: record {alias} is not in it, or of another length")
@@ -228,7 +231,7 @@ class PosteriorTrack:
         self._record = record
 
     def _check(self, runs: _Runs) -> None:
-        # The library crashes on NaN and takes an end beyond the record without a word.
+        # Nobody who reads the file would see an end beyond the record.
         starts, ends, values = runs
         where = f"{self.path}: {self._record}"
         _check_finite(values, where)

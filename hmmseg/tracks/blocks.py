@@ -155,7 +155,7 @@ def renumber(packed: Bytes, sizes: NDArray[np.uint64], record: int) -> int:
     at = (ends - sizes.astype(np.int64))[:, None] + np.arange(len(STORED) + SECTION.size)
     heads = packed[at]
     if (heads[:, : len(STORED)] != np.frombuffer(STORED, np.uint8)).any():
-        raise ValueError("blocks that are packed in another way; make it again")
+        raise ValueError("blocks that are packed in another way; remove its folder, make it again")
     number = slice(len(STORED), len(STORED) + 4)
     counts = heads[:, -2].astype(np.int64) + 256 * heads[:, -1].astype(np.int64)
     new = np.frombuffer(record.to_bytes(4, "little"), np.uint8)

@@ -16,6 +16,7 @@ import time
 from collections.abc import Iterator
 from pathlib import Path
 
+from hmmseg.evidence.amount import null_bases_of
 from hmmseg.model.document import model_to_dict
 from tests.benchmarks.cases import a_model
 
@@ -36,6 +37,12 @@ def _calls(size: int) -> Iterator[tuple[str, list[str]]]:
     plan = ["--model", "plain.json", "--batch-bases", "50000000", "--output", "batches"]
     yield "batches", ["batches", _SEQUENCE[0], *plan]
     yield "cut", ["cut", _SEQUENCE[0], "--batches", "batches", "--output", "pieces"]
+    judged = [_SEQUENCE[0], "--model", "rich.json", "--calls", "rich.calls", "--no-null-refit"]
+    yield "nulls", ["nulls", *judged, "--output", "nulls"]
+    part = ["--part", "1", "--of", str(3 * null_bases_of(size * 1_000_000) // 200_000_000 + 1)]
+    yield "replicate", ["replicate", "nulls", *part, *_SEQUENCE[1:], "--output", "part"]
+    less = ["--null-bases", "20000000", *_SEQUENCE[1:]]
+    yield "calibrate", ["calibrate", *judged, *less, "--output", "calibration"]
     if size > _MOST_FOR_MANY_FITS:
         return
     cell = ["--states", "4", "--orders", "3"]

@@ -178,18 +178,20 @@ def test_replicates_hold_the_bases_asked_for() -> None:
         for length in (500, 2_000, 700)
         for piece in pieces_of(contig_of(np.zeros(length, np.uint8)), 0, 10**8)
     ]
-    lengths = (500, 2_000, 700)
     # An assembly of 3.2 kb is drawn whole, as often as it takes, a piece at a time.
-    assert replicates_of(pieces, 7_000, 1).tasks == [
-        (number, (at,), lengths[at]) for number in range(3) for at in range(3)
-    ]
+    found = replicates_of(pieces, 7_000, 1)
+    assert found.numbers.tolist() == [0, 0, 0, 1, 1, 1, 2, 2, 2]
+    assert [found.pieces_of(task) for task in range(9)] == [[0], [1], [2]] * 3
+    assert found.bases.tolist() == [500, 2_000, 700] * 3
     # Of a larger one some pieces are drawn, by chance.
     part = replicates_of(pieces, 1_000, 1)
-    assert (part.count, len(part.tasks)) in ((1, 1), (1, 2))
-    assert sum(task.bases for task in part.tasks) >= 1_000
+    assert part.count == 1
+    assert len(part.places) < 3
+    assert part.bases.sum() >= 1_000
     # Where a model is trained on each, a replicate is one task.
     whole = replicates_of(pieces, 4_000, 1, whole=True)
-    assert whole.tasks == [(number, (0, 1, 2), 3_200) for number in range(2)]
+    assert (whole.numbers.tolist(), whole.bases.tolist()) == ([0, 1], [3_200, 3_200])
+    assert list(whole.pieces_of(1)) == [0, 1, 2]
 
 
 @pytest.mark.parametrize("decoder", ["path", "posterior"])

@@ -12,7 +12,8 @@ from hmmseg.jobs import compare as job
 from tests.evidence.drawn import drawn_contigs, write_drawn
 
 FOLDS = (1, 2, 3)
-QUICK = "--replicates 50 --restarts 1 --max-order 2 --max-hmm-order 1 --folds 3".split()  # noqa: SIM905
+QUICK = "--restarts 1 --max-hmm-order 1 --folds 3".split()  # noqa: SIM905
+TOGETHER = ["--replicates", "50", "--max-order", "2"]
 LABELS = {"blind": [], "labelled": ["--labels", "truth.bed"]}
 
 
@@ -21,7 +22,7 @@ def fold(number: int, output: str, *arguments: str) -> int:
 
 
 def compare(output: str, *arguments: str, fasta: str = "s.fa") -> int:
-    return main(["compare", fasta, "--output", output, *QUICK, *arguments])
+    return main(["compare", fasta, "--output", output, *QUICK, *TOGETHER, *arguments])
 
 
 @pytest.fixture(scope="module")
@@ -140,7 +141,7 @@ def revise_labels(parts: Path) -> None:
 @pytest.mark.parametrize(
     ("name", "spoil", "options", "told"),
     [
-        ("blind", take_away, "", "2: there is no result of this fold; make it by hmmseg fold"),
+        ("blind", take_away, "", "2: is missing; make it by hmmseg fold"),
         ("blind", shorten, "", "2: damaged; remove it and make it by hmmseg fold --fold 2"),
         ("labelled", forget, "", "2: damaged; remove it and make it by hmmseg fold --fold 2"),
         ("labelled", swap, "", "2: made with another fold; remove it"),

@@ -4,13 +4,13 @@ import json
 import shutil
 from pathlib import Path
 
+import numpy as np
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
 from hmmseg.cli import main
-from hmmseg.evidence.null_regions import Task
-from hmmseg.jobs.null_sequence import share
+from hmmseg.jobs.null_sequence import part_numbers
 from tests.jobs.test_calibrate import files_of, run
 
 PROVENANCE = "provenance.json"
@@ -76,14 +76,18 @@ def test_what_is_prepared_is_the_same_each_time_and_small(made: Path, tmp_path: 
 @pytest.mark.parametrize(
     ("change", "told"),
     [
-        ("missing", "parts/2: is not part 2 of 3 of"),
-        ("none", "parts/1"),
-        ("damaged", "parts/2: is not part 2 of 3 of"),
-        ("other number", "parts/2: is not part 2 of 3 of"),
-        ("other null sequence", "parts/1: is not part 1 of 3 of"),
-        ("other seed", "nulls: is no null sequence for these calls with these options"),
-        ("other calls", "nulls: is no null sequence for these calls with these options"),
-        ("damaged null sequence", "nulls: is no null sequence for these calls"),
+        ("missing", "parts/2: is missing; make it by hmmseg replicate --part 2 --of 3"),
+        ("none", "parts/1: is missing; make it by hmmseg replicate --part 1 --of 1"),
+        ("damaged", "parts/2: damaged; remove it and make it by hmmseg replicate --part 2"),
+        ("odd", "parts/1: damaged; remove it"),
+        ("of none", "parts/1: made with another of; remove it"),
+        ("other number", "parts/2: made with another part; remove it and make it by hmmseg"),
+        ("other null sequence", "parts/1: made with another provenance.json; remove it"),
+        ("other seed", "nulls: made with another seed; remove it and make it by hmmseg nulls"),
+        ("other calls", "nulls: made with another provenance.json; remove it and make it by"),
+        ("changed calls", "calls: changed since these calls were made; make them anew"),
+        ("damaged null sequence", "nulls: damaged; remove it and make it by hmmseg nulls"),
+        ("no null sequence", "is elsewhere a result?; make it by hmmseg nulls"),
     ],
 )
 def test_parts_that_do_not_fit_are_refused(
@@ -102,6 +106,13 @@ def test_parts_that_do_not_fit_are_refused(
             shutil.rmtree(parts)
         case "damaged":
             (parts / "2" / "regions.npz").write_bytes(b"nothing")
+        case "odd" | "of none":
+            shutil.rmtree(parts / "2")
+            shutil.rmtree(parts / "3")
+            path = parts / "1" / PROVENANCE
+            document = json.loads(path.read_text())
+            document["parameters"] = {"part": 1, "of": 0} if change == "of none" else None
+            path.write_text(json.dumps(document))
         case "other number":
             shutil.rmtree(parts / "2")
             shutil.copytree(parts / "3", parts / "2")
@@ -114,6 +125,15 @@ def test_parts_that_do_not_fit_are_refused(
             words += ["--seed", "2"]
         case "other calls":
             calls = "own_calls"
+        case "changed calls":
+            shutil.copytree(made / "calls", tmp_path / "calls")
+            table = tmp_path / "calls" / "regions.tsv"
+            table.write_text(
+                table.read_text().replace("island_1", "island_0").replace("rich_1\t", "rich_0\t")
+            )
+            calls = str(tmp_path / "calls")
+        case "no null sequence":
+            words[1] = "elsewhere"
         case "damaged null sequence":
             with (tmp_path / "nulls" / "assembly.npz").open("ab") as file:
                 file.write(b"0")
@@ -136,14 +156,23 @@ def test_a_call_at_fault_is_told(
     assert main(["replicate", str(tmp_path), "--part", "3", "--of", "2", *out]) == 2
     assert "--part 3 is beyond --of 2" in capsys.readouterr().err
     assert main(["replicate", str(made / "calls"), "--part", "1", "--of", "2", *out]) == 1
-    assert "calls: holds no null sequence; give a folder written by" in capsys.readouterr().err
+    assert "calls: made by decode; give a folder written by nulls" in capsys.readouterr().err
+    drawn(made, tmp_path, 0)
+    (tmp_path / "nulls" / "assembly.npz").write_bytes(b"")
+    assert main(["replicate", str(tmp_path / "nulls"), "--part", "1", "--of", "2", *out]) == 1
+    assert "nulls: damaged; remove it and make it again by hmmseg" in capsys.readouterr().err
     assert not (tmp_path / "out").exists()
 
 
-@given(sizes=st.lists(st.integers(1, 1_000), min_size=1, max_size=40), of=st.integers(1, 50))
-def test_parts_are_alike_and_together_everything(sizes: list[int], of: int) -> None:
-    tasks = [("chain", Task(0, (at,), bases)) for at, bases in enumerate(sizes)]
-    parts = [share(tasks, part, of) for part in range(1, of + 1)]
-    assert [task for part in parts for task in part] == tasks
-    most = max(sum(task.bases for _, task in part) for part in parts)
-    assert most < sum(sizes) / of + max(sizes)
+@given(
+    sizes=st.lists(st.integers(1, 1_000), min_size=1, max_size=20),
+    nulls=st.integers(1, 3),
+    of=st.integers(1, 50),
+)
+def test_parts_are_alike_and_together_everything(sizes: list[int], nulls: int, of: int) -> None:
+    bases = np.array(sizes)
+    parts = part_numbers(bases, nulls, of).ravel()
+    assert (np.diff(parts) >= 0).all()
+    assert 1 == parts[0] <= parts[-1] <= of
+    most = np.bincount(parts, np.tile(bases, nulls)).max()
+    assert most < nulls * bases.sum() / of + bases.max()

@@ -122,11 +122,24 @@ def test_what_cannot_be_taken_over_is_told(tmp_path: Path) -> None:
     content = bytearray(path.read_bytes())
     content[first_block(part, "x") + 2] = 1  # as deflated blocks begin
     path.write_bytes(content)
-    with pytest.raises(OutputError, match="packed in another way; make it again"):
+    with pytest.raises(OutputError, match="packed in another way; remove its folder"):
         copied(other, part, "x", {"x": 3_000})
     path.write_bytes(content[:100])
     with pytest.raises(OutputError, match="not a readable bigWig"):
         PackedTrack(path)
+
+
+def test_a_record_is_either_written_or_taken_over(tmp_path: Path) -> None:
+    write_long(tmp_path / "one.bw", {"x": "c"})
+    part = PackedTrack(tmp_path / "one.bw")
+    for before in ("add", "copy"):
+        with PosteriorTrack(tmp_path / "two.bw", {"y": 3_000}) as track:
+            if before == "add":
+                track.add("y", [0], [10], [0.5])
+            else:
+                track.copy("y", part, "x")
+            with pytest.raises(OutputError, match="there are runs of y already"):
+                track.copy("y", part, "x")
 
 
 @pytest.mark.parametrize("at", [12, 40, 2_000])

@@ -1,5 +1,6 @@
 # What the rules share: functions that answer for a wildcard, by naming files.
 import csv
+import math
 import re
 import shlex
 import sys
@@ -39,9 +40,11 @@ def look_only_when_a_job_ends(workflow):
     Snakemake limits how many jobs it starts in a second, and for that looks again one second after
     each look while jobs are ready: each job that ends begins another such series, so that with
     hundreds of ready jobs it is soon busy with nothing else. Jobs here are few enough to start
-    without a limit; on a cluster `jobs` of the profile limits them.
+    without a limit; a limit that was asked for stays.
     """
-    workflow.scheduler.job_rate_limiter = None
+    limit = workflow.scheduling_settings.max_jobs_per_timespan
+    if (limit.max_jobs, limit.timespan) == (100, 1):  # as it is by default
+        workflow.scheduler.job_rate_limiter = None
 
 
 def files(wildcards, column):
@@ -110,7 +113,7 @@ def parts_of_nulls(wildcards):
     """How many jobs draw null sequence."""
     settings = SETTINGS[wildcards.assembly]
     bases = settings["null_bases"] or null_bases_of(most_bases(settings["fasta"]))
-    return max(1, NULLS * bases // (BATCHES_OF_NULLS * config["batch_bases"]))
+    return math.ceil(NULLS * bases / (BATCHES_OF_NULLS * config["batch_bases"]))
 
 
 def nulls_of(wildcards):

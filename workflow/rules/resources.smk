@@ -1,8 +1,8 @@
 # What a job asks a cluster for: the least that config/config.yaml states, more with the size of
 # its sequence, and twice as much each time that it is done again.
 
-# Megabytes for each megabase that a job reads, and minutes for each that it works on. Twice what
-# was measured or more; python -m tests.benchmarks.commands measures it again.
+# Megabytes for each megabase that a job reads, and minutes for each that it works on. About
+# twice what was measured or more; python -m tests.benchmarks.commands measures most of it again.
 MORE = {
     "survey": (6, 0.1),
     "train": (5, 2),
