@@ -358,8 +358,9 @@ def read_batches(
                 raise OutputError(f"{path}: {name} has another length there; make it again")
         ranks = np.array([rank.get(name, -1) for name in file.record_lengths], dtype=np.int64)
         for numbers, runs in file.batches(size):
-            wanted = ranks[numbers] >= 0
-            yield ranks[numbers[wanted]], runs[wanted]
+            places = ranks[numbers]
+            wanted = places >= 0
+            yield (places, runs) if wanted.all() else (places[wanted], runs[wanted])
 
 
 def _no_runs() -> _Runs:

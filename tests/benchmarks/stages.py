@@ -1,6 +1,6 @@
 """Processor seconds and bytes of each stage of the workflow for one assembly, by its size.
 
-    python -m tests.benchmarks.stages --megabases 4 8 16
+    python -m tests.benchmarks.stages --megabases 16 64 256
 
 Each command runs in one process that has loaded everything before, on one thread, on drawn
 sequence in records of 100 kb, cut into two to four batches.
@@ -72,7 +72,7 @@ def measure(megabases: int, show: bool = True) -> None:
         ],
         parts,
     )  # fmt: skip
-    together = ["gather", f"{result}/batches", "--parts", str(parts), "--output", calls]
+    together = ["gather", f"{result}/batches", "--parts", str(parts), "--output", calls, *one]
     told("gather", [together], Path(calls))
     page = result / "report.html"
     told("report", [["report", str(result), "--output", str(page)]], page)
@@ -82,7 +82,7 @@ def measure(megabases: int, show: bool = True) -> None:
 def main() -> None:
     """Measure the sizes that were asked for."""
     parser = argparse.ArgumentParser(description=__doc__)
-    parser.add_argument("--megabases", type=int, nargs="+", default=[4, 8, 16])
+    parser.add_argument("--megabases", type=int, nargs="+", default=[16, 64, 256])
     given = parser.parse_args()
     measure(1, show=False)
     print("\t".join(COLUMNS), flush=True)
