@@ -137,6 +137,7 @@ def test_a_record_is_either_written_or_taken_over(tmp_path: Path) -> None:
             if before == "add":
                 track.add("y", [0], [10], [0.5])
             else:
+                track.expect(part)
                 track.copy("y", part, "x")
             with pytest.raises(OutputError, match="there are runs of y already"):
                 track.copy("y", part, "x")
