@@ -5,10 +5,10 @@ from itertools import combinations
 import numpy as np
 
 from hmmseg.evidence.findings import expected_lengths, in_bases, shares
-from hmmseg.kernels.elementary import LN2, log_array
 from hmmseg.model import Model
 from hmmseg.model.contexts import code_offset, missing_code
 from hmmseg.model.dimension import chain_parameters
+from hmmseg.model.logarithm import LN2, logarithms
 
 __all__ = ["bits_apart", "cautions"]
 
@@ -132,5 +132,5 @@ def bits_apart(model: Model, one: int, other: int) -> float:
         used = (model.joint[p] > 0) & (own > 0)
         if (rest[used] == 0).any():
             return float("inf")
-        total += float((model.joint[p][used] * log_array(own[used] / rest[used])).sum())
+        total += float((model.joint[p][used] * logarithms(own[used] / rest[used])).sum())
     return total / (2 * LN2)

@@ -6,9 +6,9 @@ from typing import NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
-from hmmseg.kernels.elementary import LN2, log_array
 from hmmseg.model import Model
 from hmmseg.model.contexts import joint_levels, reverse_complement_words
+from hmmseg.model.logarithm import LN2, logarithms
 
 __all__ = [
     "StateFinding",
@@ -180,7 +180,7 @@ def _words(model: Model, state: int, share: NDArray[np.float64]) -> tuple[tuple[
         return ()
     names, own, rest = words_beside(model, state, share)
     ratio = own / rest
-    order = np.argsort(-own * log_array(ratio) / LN2, kind="stable")[:_MOST_WORDS]
+    order = np.argsort(-own * logarithms(ratio) / LN2, kind="stable")[:_MOST_WORDS]
     return tuple((names[i], float(ratio[i])) for i in order if ratio[i] >= _ENRICHED)
 
 

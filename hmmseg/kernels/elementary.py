@@ -9,16 +9,10 @@ import math
 import numpy as np
 
 from hmmseg.kernels.compiling import kernel
+from hmmseg.model.logarithm import LN2, LN2_HIGH, LN2_LOW, SQRT_HALF
 
 __all__ = ["LN2", "exp", "log", "log_array", "power_of_two"]
 
-LN2 = 0.6931471805599453
-
-_LN2_HIGH = 0.693147180369123816490e00
-"""The leading bits of ln 2: a multiple of it by an exponent is exact."""
-
-_LN2_LOW = 1.90821492927058770002e-10
-_SQRT_HALF = math.sqrt(0.5)
 _LARGEST_EXPONENT = 1023
 _SMALLEST_EXPONENT = -1074
 _EXP_OVERFLOW = 709.78
@@ -44,7 +38,7 @@ def log(x):
     if x == 0.0:
         return -np.inf
     mantissa, exponent = math.frexp(x)
-    if mantissa < _SQRT_HALF:
+    if mantissa < SQRT_HALF:
         mantissa *= 2.0
         exponent -= 1
     f = mantissa - 1.0
@@ -55,7 +49,7 @@ def log(x):
     for odd in (21.0, 19.0, 17.0, 15.0, 13.0, 11.0, 9.0, 7.0, 5.0, 3.0):
         tail = tail * z + 1.0 / odd
     # ln(1 + f) = f - s (f - 2 z tail): the leading term stays exact.
-    return exponent * _LN2_HIGH + (f - (s * (f - 2.0 * z * tail) - exponent * _LN2_LOW))
+    return exponent * LN2_HIGH + (f - (s * (f - 2.0 * z * tail) - exponent * LN2_LOW))
 
 
 @kernel
@@ -66,7 +60,7 @@ def exp(x):
     if x > _EXP_OVERFLOW:
         return np.inf
     n = math.floor(x / LN2 + 0.5)
-    r = (x - n * _LN2_HIGH) - n * _LN2_LOW
+    r = (x - n * LN2_HIGH) - n * LN2_LOW
     # |r| <= 0.347: fourteen terms of the Taylor series reach the last place.
     total = 1.0
     for term in (14.0, 13.0, 12.0, 11.0, 10.0, 9.0, 8.0, 7.0, 6.0, 5.0, 4.0, 3.0, 2.0, 1.0):

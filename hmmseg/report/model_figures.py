@@ -7,8 +7,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hmmseg.evidence.findings import words_beside
-from hmmseg.kernels.elementary import LN2, log_array
 from hmmseg.model import Model
+from hmmseg.model.logarithm import LN2, logarithms
 from hmmseg.report.colours import GREY, INK, colour_of
 from hmmseg.report.drawing import NARROW, WIDE, blank, in_style, legend
 
@@ -37,7 +37,7 @@ def against_background(model: Model, state: int) -> list[tuple[str, float]]:
         background is compared with the whole sequence.
     """
     names, own, rest = words_beside(model, state, model.shares)
-    bits = log_array(own / rest) / LN2
+    bits = logarithms(own / rest) / LN2
     most = np.argsort(-(own - rest) * bits, kind="stable")[:_MOST_WORDS]
     ordered = most[np.argsort(-bits[most], kind="stable")]
     return [(names[i], float(bits[i])) for i in ordered]
