@@ -219,7 +219,9 @@ def read_provenance(folder_or_file: str | Path) -> dict[str, Any]:
     try:
         document = json.loads(path.read_bytes())
     except FileNotFoundError as error:
-        raise OutputError(f"{path} does not exist; is {folder_or_file} a result?") from error
+        # Of what is not there nobody can tell whether it would be a folder or a file.
+        missing = path if Path(folder_or_file).exists() else folder_or_file
+        raise OutputError(f"{missing} does not exist; is {folder_or_file} a result?") from error
     except ValueError as error:
         raise OutputError(f"{path}: not valid JSON: {error}") from error
     if not isinstance(document, dict) or document.get("format") != FORMAT:

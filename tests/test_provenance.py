@@ -163,6 +163,9 @@ def test_reading_what_is_no_document(tmp_path: Path, content: bytes) -> None:
 
 
 def test_reading_what_is_not_there(tmp_path: Path) -> None:
+    nowhere = tmp_path / "nowhere"
+    with pytest.raises(OutputError, match=rf"^{nowhere} does not exist; is {nowhere} a result\?"):
+        read_provenance(nowhere)
     with pytest.raises(OutputError, match=r"provenance\.json does not exist; is .* a result\?"):
         read_provenance(tmp_path)
 

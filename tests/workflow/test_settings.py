@@ -5,11 +5,13 @@ import re
 import subprocess
 import sys
 from pathlib import Path
+from types import SimpleNamespace
 from typing import Any
 
 import pytest
 import yaml
 from snakemake.scheduling.job_scheduler import JobScheduler
+from snakemake.settings.types import MaxJobsPerTimespan
 
 from tests.workflow.running import ROOT, Project
 
@@ -60,6 +62,25 @@ def test_what_the_snakefile_lifts_is_still_what_makes_the_scheduler_look_again()
     source = inspect.getsource(JobScheduler.schedule)
     assert "if self.job_rate_limiter is not None:" in source
     assert "self._schedule_reevalutation(self.job_rate_limiter.timespan)" in source
+
+
+@pytest.mark.parametrize(
+    ("asked", "lifted"), [("100/1s", True), ("100/1m", False), ("1/1s", False)]
+)
+def test_only_the_limit_that_nobody_asked_for_is_lifted(asked: str, lifted: bool) -> None:
+    text = (ROOT / "workflow" / "rules" / "common.smk").read_text()
+    [function] = re.findall(
+        r"^def look_only_when_a_job_ends.*?(?=^\S)", text, re.DOTALL | re.MULTILINE
+    )
+    names: dict[str, Any] = {}
+    exec(function, names)
+    limit = MaxJobsPerTimespan.parse_choice(asked)
+    workflow = SimpleNamespace(
+        scheduling_settings=SimpleNamespace(max_jobs_per_timespan=limit),
+        scheduler=SimpleNamespace(job_rate_limiter="there"),
+    )
+    names["look_only_when_a_job_ends"](workflow)
+    assert workflow.scheduler.job_rate_limiter == (None if lifted else "there")
 
 
 def test_the_linter_misses_only_conda_environments(tmp_path: Path) -> None:
